@@ -1,0 +1,28 @@
+"""What can go wrong by the user's doing, as sentences: what, where, and what to do about it."""
+
+from __future__ import annotations
+
+
+class DriftlineError(ValueError):
+    """Base of every error a user can cause; its text is one clear sentence, fit to be shown as it is."""
+
+
+class InputError(DriftlineError):
+    """A data file or array cannot be used.
+
+    Parameters
+    ----------
+    problem : str
+        What is wrong and what to do, without the place.
+    where : str, optional
+        The place, for example ``"run.csv, line 3, column 'error'"``; it is put in front of the problem.
+    """
+
+    def __init__(self, problem: str, *, where: str | None = None) -> None:
+        super().__init__(f"{where}: {problem}" if where else problem)
+        self.problem = problem
+        self.where = where
+
+
+class ConfigurationError(DriftlineError):
+    """An option, a configuration file or an output folder cannot be used."""

@@ -1,0 +1,1 @@
+"""Sampling, evidence and credible intervals; knows densities, nothing of curves."""

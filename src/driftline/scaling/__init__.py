@@ -1,0 +1,1 @@
+"""The mathematics of a collapse: lengths, trajectories, ansätze, priors and the marginal likelihood."""
