@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field, replace
+from itertools import pairwise
 from typing import Any, Literal
 
 import numpy as np
@@ -91,6 +92,7 @@ class Curve:
         where = f"size {self.size:g}"
         if not (np.isfinite(self.size) and self.size > 0):
             raise InputError(f"a size must be a positive number, not {self.size}", where="curves")
+        object.__setattr__(self, "size", float(self.size))
         for name in ("disorder", "mean", "error"):
             object.__setattr__(self, name, _frozen(getattr(self, name), where, name))
         if not (self.disorder.shape == self.mean.shape == self.error.shape):
@@ -282,7 +284,7 @@ def _checked_covariance(covariance: FloatArray, error: FloatArray, where: str) -
 
 def _check_set(curves: tuple[Curve, ...]) -> None:
     sizes = [curve.size for curve in curves]
-    for before, after in zip(sizes, sizes[1:], strict=False):
+    for before, after in pairwise(sizes):
         if before == after:
             raise InputError(f"size {after:g} occurs twice; put all its points into one curve", where="curves")
     if len(sizes) < MIN_SIZES:
