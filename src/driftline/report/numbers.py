@@ -1,0 +1,129 @@
+"""How numbers are written for people: as many digits as the uncertainty carries, and never more."""
+
+from __future__ import annotations
+
+import math
+from decimal import ROUND_HALF_EVEN, Decimal
+
+from driftline.inference.intervals import Interval
+
+MISSING = "-"
+DIGITS = 2  # significant digits of an error, common practice in the tables of physics papers
+PLAIN = range(-4, 6)  # powers of ten written without an exponent
+
+
+def exponent(value: float) -> int:
+    """Power of ten of the leading digit of `value`."""
+    return Decimal(repr(abs(float(value)))).adjusted()
+
+
+def rounded(value: float, error: float, digits: int = DIGITS) -> str:
+    """`value` with the decimals that two significant digits of `error` ask for.
+
+    Examples
+    --------
+    >>> rounded(16.52834, 0.1234), rounded(123456.0, 1234.0)
+    ('16.53', '123500')
+    """
+    if not _usable(value):
+        return MISSING
+    if not _usable(error) or error == 0:
+        return significant(value, 6)
+    last = _last_digit(value, error, digits)
+    if not _plain(value, last):
+        shift = exponent(value) if value else exponent(error)
+        return f"{_at(value, last).scaleb(-shift):f}e{shift:+03d}"
+    return f"{_at(value, last):.{max(0, -last)}f}"
+
+
+def plus_minus(value: float, error: float) -> str:
+    """Value with its standard deviation in units of the last digits, as in 16.53(12).
+
+    Examples
+    --------
+    >>> plus_minus(16.52834, 0.1234), plus_minus(3.2e-9, 4.1e-11), plus_minus(250.0, 31.0)
+    ('16.53(12)', '3.200(41)e-09', '250(31)')
+    """
+    text = rounded(value, error)
+    if not _usable(value) or not _usable(error) or error == 0:
+        return text
+    number, _, power = text.partition("e")
+    last = _last_digit(value, error, DIGITS)
+    spread = _at(error, last)
+    if not power and last < 0 and spread >= 1:
+        in_brackets = f"{spread:.{-last}f}"  # 12.3(1.4), since 12.3(14) could be misread
+    else:
+        in_brackets = f"{spread:.0f}" if last >= 0 and not power else f"{spread.scaleb(-last):.0f}"
+    return f"{number}({in_brackets})" + (f"e{power}" if power else "")
+
+
+def bracket(interval: Interval | None, level: int = 95) -> str:
+    """Limits of the 68 or 95 % interval, as in [16.31, 16.78].
+
+    Examples
+    --------
+    >>> bracket(Interval(16.53, 16.41, 16.65, 16.31, 16.78))
+    '[16.31, 16.78]'
+    """
+    if interval is None:
+        return MISSING
+    low, high = (interval.low68, interval.high68) if level == 68 else (interval.low95, interval.high95)
+    return f"[{rounded(low, interval.sd)}, {rounded(high, interval.sd)}]"
+
+
+def short(interval: Interval | None) -> str:
+    """Median with half the 68 % interval in brackets, as in 16.53(12); a dash where there is none."""
+    return MISSING if interval is None else plus_minus(interval.median, interval.sd)
+
+
+def median(interval: Interval | None) -> str:
+    """Median alone, to the digits its interval carries."""
+    return MISSING if interval is None else rounded(interval.median, interval.sd)
+
+
+def significant(value: float | None, digits: int = 3) -> str:
+    """`value` with so many significant digits, trailing zeros dropped."""
+    return MISSING if value is None or not _usable(value) else f"{value:.{digits}g}"
+
+
+def fixed(value: float | None, decimals: int) -> str:
+    """`value` with so many decimals; a dash where there is none; an exponent from ten million on."""
+    if value is None or not _usable(value):
+        return MISSING
+    return f"{value:.{decimals}f}" if abs(value) < 1e7 else f"{value:.3g}"
+
+
+def probability(value: float | None) -> str:
+    """A probability or p-value with two decimals, and no zero or one that is not exact.
+
+    Examples
+    --------
+    >>> probability(0.5), probability(0.0004), probability(0.9996), probability(1.0)
+    ('0.50', '<0.01', '>0.99', '1.00')
+    """
+    if value is None or not _usable(value):
+        return MISSING
+    if 0 < value < 0.01:
+        return "<0.01"
+    return ">0.99" if 0.99 < value < 1 else f"{value:.2f}"
+
+
+def _usable(value: float) -> bool:
+    return math.isfinite(value)
+
+
+def _last_digit(value: float, error: float, digits: int) -> int:
+    """Power of ten of the last digit that is written: the error is rounded first, as 0.0996 becomes 0.10."""
+    last = exponent(error) - digits + 1
+    if exponent(float(_at(error, last))) > exponent(error):
+        last += 1
+    return max(last, exponent(value) - 15)  # a double carries no more
+
+
+def _at(value: float, last: int) -> Decimal:
+    return Decimal(repr(float(value))).quantize(Decimal(1).scaleb(last), rounding=ROUND_HALF_EVEN) + 0  # no minus zero
+
+
+def _plain(value: float, last: int) -> bool:
+    top = exponent(value) if value else last
+    return max(top, last) in PLAIN and last > -9

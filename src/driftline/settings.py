@@ -1,0 +1,245 @@
+"""The choices of one analysis: TOML file and command-line options become one frozen object.
+
+Nothing numerical is imported before a label is checked or curves are cut, so that the command line stays quick.
+"""
+
+from __future__ import annotations
+
+import math
+import tomllib
+from collections.abc import Callable, Iterable, Mapping
+from dataclasses import dataclass, field, fields
+from difflib import get_close_matches
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+from driftline.errors import ConfigurationError, InputError
+
+if TYPE_CHECKING:
+    from driftline.curves import Curves
+
+DEFAULT_ANSATZE = ("power-law", "power-law:corrected")
+MIN_DRAWS = 200  # the 95 % interval then still has five draws in each tail
+
+
+@dataclass(frozen=True)
+class Settings:
+    """What to compute, apart from the data.
+
+    Parameters
+    ----------
+    ansatze : tuple of str
+        Scaling ansätze to compare, by name (see ``driftline ansatze``).
+    window : (low, high) or None
+        Disorder range to use, ends included, in the user's unit; None uses everything.
+    smallest_size : float or None
+        Sizes below this one are left out.
+    seed : int
+        Seed of the one random generator; same seed, same numbers.
+    quick : bool
+        Shorter chains and fewer stability refits, for a first look.
+    jobs : int
+        Worker processes; the numbers do not depend on it.
+    labels : mapping
+        Fields of `driftline.Labels` that replace what the data file says.
+    draws : int
+        Joint posterior draws of the smoothed curves behind crossings and drift.
+
+    Raises
+    ------
+    ConfigurationError
+        If a value cannot be used.
+
+    Examples
+    --------
+    >>> Settings(window=(14, 19)).window
+    (14.0, 19.0)
+    """
+
+    ansatze: tuple[str, ...] = DEFAULT_ANSATZE
+    window: tuple[float, float] | None = None
+    smallest_size: float | None = None
+    seed: int = 0
+    quick: bool = False
+    jobs: int = 1
+    labels: Mapping[str, Any] = field(default_factory=dict)
+    draws: int = 2000
+
+    def __post_init__(self) -> None:
+        for name, check in _CHECKS.items():
+            object.__setattr__(self, name, check(getattr(self, name), name))
+
+    @classmethod
+    def resolve(cls, file: str | Path | None = None, options: Mapping[str, Any] | None = None) -> Settings:
+        """Defaults, overridden by the TOML `file`, overridden by the command line's `options`.
+
+        Parameters
+        ----------
+        file : path, optional
+            TOML file with any of the fields of `Settings` as keys; the labels as a table ``[labels]``.
+        options : mapping, optional
+            Fields by name; those that are None count as not given.
+
+        Raises
+        ------
+        ConfigurationError
+            If the file cannot be read or a key or value cannot be used; the text names the file or option.
+        """
+        chosen = {} if file is None else _read_toml(Path(file))
+        for name, value in (options or {}).items():
+            if value is not None:
+                chosen[name] = _CHECKS[name](
+                    value, f"option --{'ansatz' if name == 'ansatze' else name}".replace("_", "-")
+                )
+        return cls(**chosen)
+
+    def select(self, curves: Curves) -> Curves:
+        """The part of `curves` that window and smallest size leave.
+
+        Raises
+        ------
+        ConfigurationError
+            If too little is left to analyse.
+        """
+        if self.smallest_size is not None:
+            left = int((curves.sizes >= self.smallest_size).sum())
+            if left < 2:
+                sizes = ", ".join(f"{size:g}" for size in curves.sizes)
+                raise ConfigurationError(
+                    f"smallest size {self.smallest_size:g} leaves {left} of the sizes {sizes}, and 2 are needed; "
+                    f"choose {curves.sizes[-2]:g} or less"
+                )
+        try:
+            return curves.select(smallest_size=self.smallest_size, window=self.window)
+        except InputError as reason:
+            if self.window is None:
+                raise
+            low, high = self.window
+            raise ConfigurationError(f"window {low:g} to {high:g}: {reason}") from reason
+
+
+def suggestion(name: str, known: Iterable[str]) -> str:
+    """Sentence part that offers the known names nearest to `name`, or all of them.
+
+    Examples
+    --------
+    >>> suggestion("sead", ["seed", "jobs"])
+    'did you mean seed?'
+    """
+    names = list(known)
+    near = get_close_matches(name, names, n=3, cutoff=0.6)
+    return f"did you mean {' or '.join(near)}?" if near else f"known are: {', '.join(names)}"
+
+
+def _read_toml(path: Path) -> dict[str, Any]:
+    try:
+        content = tomllib.loads(path.read_text(encoding="utf-8"))
+    except OSError as reason:
+        raise ConfigurationError(
+            f"{path}: cannot be read ({reason.strerror}); give a TOML file to --config"
+        ) from reason
+    except UnicodeDecodeError as reason:
+        raise ConfigurationError(f"{path}: is not UTF-8 text at byte {reason.start + 1}; save it as UTF-8") from reason
+    except tomllib.TOMLDecodeError as reason:
+        raise ConfigurationError(f"{path}: is not valid TOML: {reason}") from reason
+    chosen = {}
+    for name, value in content.items():
+        if name not in _CHECKS:
+            raise ConfigurationError(f"{path}: unknown key {name!r}; {suggestion(name, _CHECKS)}")
+        chosen[name] = _CHECKS[name](value, f"{path}, {name}")
+    return chosen
+
+
+def _number(value: Any, where: str) -> float:
+    if isinstance(value, bool) or not isinstance(value, int | float) or not math.isfinite(value):
+        raise ConfigurationError(f"{where}: must be a finite number, not {value!r}")
+    return float(value)
+
+
+def _whole(value: Any, where: str, *, least: int) -> int:
+    if isinstance(value, bool) or not isinstance(value, int):
+        raise ConfigurationError(f"{where}: must be a whole number, not {value!r}")
+    if value < least:
+        raise ConfigurationError(f"{where}: must be at least {least}, not {value}")
+    return value
+
+
+def _ansatze(value: Any, where: str) -> tuple[str, ...]:
+    if isinstance(value, str) or not isinstance(value, Iterable):
+        raise ConfigurationError(f"{where}: must be a list of names, not {value!r}")
+    names = tuple(value)
+    for name in names:
+        if not isinstance(name, str):
+            raise ConfigurationError(f"{where}: must be a list of names, but holds {name!r}")
+        if names.count(name) > 1:
+            raise ConfigurationError(f"{where}: {name!r} is given twice; give each ansatz once")
+    if not names:
+        raise ConfigurationError(f"{where}: is empty; give at least one ansatz or leave the key out")
+    return names
+
+
+def _window(value: Any, where: str) -> tuple[float, float] | None:
+    if value is None:
+        return None
+    if isinstance(value, str) or not isinstance(value, Iterable) or len(pair := tuple(value)) != 2:
+        raise ConfigurationError(f"{where}: must be two numbers, low and high, not {value!r}")
+    low, high = (_number(limit, where) for limit in pair)
+    if low >= high:
+        raise ConfigurationError(f"{where}: the low end {low:g} must lie below the high end {high:g}")
+    return low, high
+
+
+def _smallest_size(value: Any, where: str) -> float | None:
+    if value is None:
+        return None
+    size = _number(value, where)
+    if size <= 0:
+        raise ConfigurationError(f"{where}: must be positive, not {size:g}")
+    return size
+
+
+def _switch(value: Any, where: str) -> bool:
+    if not isinstance(value, bool):
+        raise ConfigurationError(f"{where}: must be true or false, not {value!r}")
+    return value
+
+
+def _labels(value: Any, where: str) -> dict[str, Any]:
+    if not isinstance(value, Mapping):
+        raise ConfigurationError(f"{where}: must be a table of labels, not {value!r}")
+    if not value:
+        return {}
+    from driftline.curves import Labels  # numpy comes with it, so only where it is needed
+
+    kinds = {part.name: str(part.type) for part in fields(Labels)}
+    checked = {}
+    for name, label in value.items():
+        if name not in kinds:
+            raise ConfigurationError(f"{where}: unknown label {name!r}; {suggestion(name, kinds)}")
+        checked[name] = _label(label, f"{where}.{name}", kinds[name])
+    try:
+        Labels(**checked)
+    except InputError as reason:
+        raise ConfigurationError(f"{where}: {reason.problem}") from reason
+    return checked
+
+
+def _label(value: Any, where: str, kind: str) -> Any:
+    if "float" in kind:
+        # TOML has no null, so the word none stands for it
+        return None if value is None or value == "none" else _number(value, where)
+    if not isinstance(value, str):
+        raise ConfigurationError(f"{where}: must be text, not {value!r}")
+    return value
+
+
+_CHECKS: dict[str, Callable[[Any, str], Any]] = {
+    "ansatze": _ansatze,
+    "window": _window,
+    "smallest_size": _smallest_size,
+    "seed": lambda value, where: _whole(value, where, least=0),
+    "quick": _switch,
+    "jobs": lambda value, where: _whole(value, where, least=1),
+    "labels": _labels,
+    "draws": lambda value, where: _whole(value, where, least=MIN_DRAWS),
+}
