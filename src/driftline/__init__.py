@@ -1,1 +1,84 @@
-"""driftline."""
+"""Finite-size crossovers of disordered systems: locate, collapse, compare, judge.
+
+    import driftline as dl
+
+    curves = dl.read("curves.csv")
+    analysis = dl.analyse(curves)
+    print(dl.summary(analysis))
+    dl.write_report(analysis, "out")
+
+Names are loaded when they are first used, so that ``import driftline`` costs next to nothing.
+"""
+
+from __future__ import annotations
+
+from importlib import import_module
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from driftline.analysis import Analysis as Analysis
+    from driftline.analysis import Crossover as Crossover
+    from driftline.analysis import analyse as analyse
+    from driftline.collapse import CollapseFit as CollapseFit
+    from driftline.collapse import Comparison as Comparison
+    from driftline.collapse import compare_ansatze as compare_ansatze
+    from driftline.collapse import fit_collapse as fit_collapse
+    from driftline.crossings import Crossing as Crossing
+    from driftline.crossings import Crossings as Crossings
+    from driftline.crossings import find_crossings as find_crossings
+    from driftline.curves import Curve as Curve
+    from driftline.curves import Curves as Curves
+    from driftline.curves import Labels as Labels
+    from driftline.drift import Drift as Drift
+    from driftline.drift import fit_drift as fit_drift
+    from driftline.errors import ConfigurationError as ConfigurationError
+    from driftline.errors import DriftlineError as DriftlineError
+    from driftline.errors import InputError as InputError
+    from driftline.figures.collapse import draw_collapse as draw_collapse
+    from driftline.figures.curves import draw_curves as draw_curves
+    from driftline.figures.drift import draw_drift as draw_drift
+    from driftline.inference.intervals import Interval as Interval
+    from driftline.readers import read as read
+    from driftline.report.record import record as record
+    from driftline.report.summary import summary as summary
+    from driftline.report.writers import write_report as write_report
+    from driftline.settings import Settings as Settings
+    from driftline.verdict import Verdict as Verdict
+
+_HOMES = {
+    "analysis": ("Analysis", "Crossover", "analyse"),
+    "collapse": ("CollapseFit", "Comparison", "compare_ansatze", "fit_collapse"),
+    "crossings": ("Crossing", "Crossings", "find_crossings"),
+    "curves": ("Curve", "Curves", "Labels"),
+    "drift": ("Drift", "fit_drift"),
+    "errors": ("ConfigurationError", "DriftlineError", "InputError"),
+    "figures.collapse": ("draw_collapse",),
+    "figures.curves": ("draw_curves",),
+    "figures.drift": ("draw_drift",),
+    "inference.intervals": ("Interval",),
+    "readers": ("read",),
+    "report.record": ("record",),
+    "report.summary": ("summary",),
+    "report.writers": ("write_report",),
+    "settings": ("Settings",),
+    "verdict": ("Verdict",),
+}
+_HOME = {name: module for module, names in _HOMES.items() for name in names}
+
+__all__ = sorted([*_HOME, "__version__"])
+
+
+def __getattr__(name: str) -> Any:
+    if name == "__version__":
+        from importlib.metadata import version
+
+        return version("driftline")
+    if name not in _HOME:
+        raise AttributeError(f"module 'driftline' has no attribute {name!r}")
+    value = getattr(import_module(f"driftline.{_HOME[name]}"), name)
+    globals()[name] = value
+    return value
+
+
+def __dir__() -> list[str]:
+    return __all__

@@ -173,9 +173,20 @@ def _ansatze(value: Any, where: str) -> tuple[str, ...]:
             raise ConfigurationError(f"{where}: must be a list of names, but holds {name!r}")
         if names.count(name) > 1:
             raise ConfigurationError(f"{where}: {name!r} is given twice; give each ansatz once")
+        if name not in DEFAULT_ANSATZE:
+            _check_ansatz_name(name, where)
     if not names:
         raise ConfigurationError(f"{where}: is empty; give at least one ansatz or leave the key out")
     return names
+
+
+def _check_ansatz_name(name: str, where: str) -> None:
+    from driftline.scaling.ansatz import check_ansatz_name  # numpy comes with it, so only where it is needed
+
+    try:
+        check_ansatz_name(name)
+    except ConfigurationError as reason:
+        raise ConfigurationError(f"{where}: {reason}") from reason
 
 
 def _window(value: Any, where: str) -> tuple[float, float] | None:

@@ -121,7 +121,9 @@ def _last_digit(value: float, error: float, digits: int) -> int:
 
 
 def _at(value: float, last: int) -> Decimal:
-    return Decimal(repr(float(value))).quantize(Decimal(1).scaleb(last), rounding=ROUND_HALF_EVEN) + 0  # no minus zero
+    return +Decimal(repr(float(value))).quantize(
+        Decimal(1).scaleb(last), rounding=ROUND_HALF_EVEN
+    )  # + drops minus zero
 
 
 def _plain(value: float, last: int) -> bool:

@@ -1,0 +1,57 @@
+"""`analysis.toml`: the resolved configuration, which given to ``--config`` reproduces the result."""
+
+from __future__ import annotations
+
+import json
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+from driftline.report.base import Writer
+from driftline.settings import Settings
+
+if TYPE_CHECKING:
+    from driftline.analysis import Analysis
+
+
+def to_toml(settings: Settings) -> str:
+    """All settings as TOML, which `Settings.resolve` reads back to an equal object."""
+    lines = [
+        f"ansatze = [{', '.join(_text(name) for name in settings.ansatze)}]",
+        f"window = {_list(settings.window)}" if settings.window else "# window: all disorders",
+        f"smallest_size = {settings.smallest_size!r}" if settings.smallest_size else "# smallest_size: all sizes",
+        f"seed = {settings.seed}",
+        f"quick = {str(settings.quick).lower()}",
+        f"jobs = {settings.jobs}",
+        f"draws = {settings.draws}",
+    ]
+    if settings.labels:
+        lines += ["", "[labels]", *(f"{name} = {_value(value)}" for name, value in settings.labels.items())]
+    return "\n".join(lines) + "\n"
+
+
+class ConfigurationFile(Writer):
+    """`analysis.toml`."""
+
+    title = "analysis.toml"
+
+    def write(self, analysis: Analysis, folder: Path) -> None:
+        """Write `folder/analysis.toml`."""
+        path = analysis.curves.origin.get("path")
+        head = "# Resolved configuration; to repeat: driftline analyse DATA --config analysis.toml\n"
+        head += "" if path is None else f"# DATA was {_text(str(path))}\n"
+        (folder / "analysis.toml").write_text(head + to_toml(analysis.settings), encoding="utf-8", newline="\n")
+
+
+def _value(value: Any) -> str:
+    if value is None:
+        return '"none"'
+    return _text(value) if isinstance(value, str) else repr(value)
+
+
+def _list(values: tuple[float, ...]) -> str:
+    return f"[{', '.join(repr(value) for value in values)}]"
+
+
+def _text(text: str) -> str:
+    """A basic string: the escapes of JSON are those of TOML, except for DEL, which TOML wants escaped."""
+    return json.dumps(text, ensure_ascii=False).replace("\x7f", "\\u007f")

@@ -1,0 +1,174 @@
+"""Rows of the tables that people read, in the terminal and in the page: text, rounded to what the errors carry."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+from driftline.report import numbers
+
+if TYPE_CHECKING:
+    from driftline.analysis import Analysis
+
+CAUTION = (
+    "Finite sizes alone do not decide the thermodynamic limit: a crossover that looks settled here may still move, "
+    "or vanish, at sizes beyond these."
+)
+
+
+@dataclass(frozen=True)
+class Table:
+    """A heading, column names, and rows of text."""
+
+    heading: str
+    columns: tuple[str, ...]
+    rows: tuple[tuple[str, ...], ...]
+
+
+def symbol(text: str) -> str:
+    """A mathtext symbol as plain text.
+
+    Examples
+    --------
+    >>> symbol(r"\\\\langle r\\\\rangle"), symbol(r"S_{\\\\mathrm{half}}")
+    ('<r>', 'S_half')
+    """
+    for mathtext, plain in ((r"\langle", "<"), (r"\rangle", ">"), (r"\mathrm", ""), (r"\,", " "), (r"\overline", "")):
+        text = text.replace(mathtext, plain)
+    for character in "\\{}$":
+        text = text.replace(character, "")
+    return text.replace("< ", "<").replace(" >", ">").strip()
+
+
+def disorder(analysis: Analysis) -> str:
+    """Symbol of the disorder as plain text."""
+    return symbol(analysis.curves.labels.disorder_symbol)
+
+
+def crossover(analysis: Analysis) -> Table:
+    """Crossover disorder and exponent with both intervals and the systematic part."""
+    found = analysis.crossover
+    columns = ("quantity", "value", "68 %", "95 %", "systematic")
+    if found is None:
+        return Table("Crossover", columns, ())
+    unit = analysis.curves.labels.disorder_unit
+    rows = (
+        (
+            f"{disorder(analysis)}_c" + (f" ({unit})" if unit else ""),
+            numbers.short(found.disorder),
+            numbers.bracket(found.disorder, 68),
+            numbers.bracket(found.disorder, 95),
+            systematic(analysis),
+        ),
+        ("nu", numbers.short(found.nu), numbers.bracket(found.nu, 68), numbers.bracket(found.nu, 95), numbers.MISSING),
+    )
+    return Table(f"Crossover, from {' and '.join(found.basis)}", columns, rows)
+
+
+def systematic(analysis: Analysis) -> str:
+    """Systematic part of the crossover disorder, to the digits of the statistical one."""
+    found = analysis.crossover
+    if found is None or found.systematic is None:
+        return numbers.MISSING
+    return "+-" + numbers.rounded(found.systematic, found.disorder.sd)
+
+
+def collapse(analysis: Analysis) -> Table:
+    """One row for each ansatz, the most probable first."""
+    fits = analysis.comparison.fits
+    best = max(fit.log_evidence for fit in fits)
+    order = sorted(range(len(fits)), key=lambda index: -fits[index].log_evidence)
+    rows = tuple(
+        (
+            fits[index].ansatz.name,
+            numbers.fixed(fits[index].log_evidence - best, 1),
+            numbers.probability(analysis.comparison.probabilities[index]),
+            numbers.short(fits[index].parameters.get("W_c")),
+            numbers.short(fits[index].parameters.get("nu")),
+            numbers.fixed(fits[index].quality.chi2_per_dof, 2),
+            numbers.probability(fits[index].quality.p_value),
+        )
+        for index in order
+    )
+    columns = ("ansatz", "ln Z - best", "prob.", f"{disorder(analysis)}_c", "nu", "chi2/dof", "p")
+    return Table("Collapse", columns, rows)
+
+
+def crossings(analysis: Analysis) -> Table:
+    """One row for each pair of adjacent sizes."""
+    rows = tuple(
+        (
+            f"{each.sizes[0]:g}, {each.sizes[1]:g}",
+            numbers.probability(each.probability),
+            numbers.probability(each.separated),
+            numbers.short(each.disorder),
+            numbers.bracket(each.disorder),
+            numbers.short(each.inverse_nu),
+        )
+        for each in analysis.crossings.adjacent
+    )
+    columns = ("sizes", "prob.", "separated", disorder(analysis), "95 %", "1/nu")
+    return Table("Crossings of adjacent sizes", columns, rows)
+
+
+def drift(analysis: Analysis) -> Table:
+    """One row for each drift law, the most probable first."""
+    laws = sorted(analysis.drift.laws, key=lambda law: -law.log_evidence)
+    rows = tuple(
+        (
+            law.name,
+            law.formula,
+            "yes" if law.bounded else "no",
+            numbers.probability(law.probability),
+            numbers.short(law.limit),
+            numbers.bracket(law.limit),
+            numbers.fixed(law.chi2_per_dof, 2),
+        )
+        for law in laws
+    )
+    columns = ("law", "formula", "bounded", "prob.", "limit", "95 %", "chi2/dof")
+    return Table("Drift of the crossings with size", columns, rows)
+
+
+def drift_sentences(analysis: Analysis) -> list[str]:
+    """What the drift says beyond its table."""
+    found = analysis.drift
+    sentences = [found.note] if found.note else []
+    if found.probability_bounded is not None:
+        sentences.append(f"Bounded as L grows: probability {numbers.probability(found.probability_bounded)}.")
+    if found.rate_per_site is not None:
+        rate, limits = numbers.short(found.rate_per_site), numbers.bracket(found.rate_per_site)
+        sentences.append(f"Drift per unit of size: {rate}, 95 % {limits}.")
+    if found.deciding_size is not None:
+        sentences.append(f"The two best laws part at L = {numbers.significant(found.deciding_size)} at today's errors.")
+    return sentences
+
+
+def stability(analysis: Analysis) -> Table:
+    """One row for each refit with fewer sizes or a narrower window."""
+    rows = tuple(
+        (
+            row.ansatz,
+            f"{row.smallest_size:g}",
+            f"{row.window[0]:g} to {row.window[1]:g}",
+            numbers.short(row.disorder),
+            numbers.bracket(row.disorder),
+            numbers.probability(row.p_value),
+        )
+        for row in analysis.stability
+    )
+    name = disorder(analysis)
+    return Table("Stability", ("ansatz", "smallest size", f"{name} range", f"{name}_c", "95 %", "p"), rows)
+
+
+def data(analysis: Analysis) -> str:
+    """One sentence on what was analysed and how to repeat it."""
+    curves, labels = analysis.curves, analysis.curves.labels
+    low, high = curves.disorder_range
+    sizes = ", ".join(f"{size:g}" for size in curves.sizes)
+    unit = f" {labels.disorder_unit}" if labels.disorder_unit else ""
+    quick = ", quick" if analysis.settings.quick else ""
+    return (
+        f"{labels.observable} at sizes {sizes}: {curves.points} points, {disorder(analysis)} from {low:g} to "
+        f"{high:g}{unit}; seed {analysis.settings.seed}{quick}."
+    )
