@@ -51,7 +51,7 @@ class Gompertz(ScalingFunction):
 
     def __call__(self, x: FloatArray) -> FloatArray:
         exponent = np.minimum(np.asarray(x) / self.scale, 700.0)  # exp(700) is still finite
-        return self.low + (self.high - self.low) * np.exp(-np.log(2.0) * np.exp(exponent))
+        return np.asarray(self.low + (self.high - self.low) * np.exp(-np.log(2.0) * np.exp(exponent)))
 
 
 @dataclass(frozen=True)
@@ -63,7 +63,8 @@ class SlowTails(ScalingFunction):
     scale: float = 3.0
 
     def __call__(self, x: FloatArray) -> FloatArray:
-        return self.low + (self.high - self.low) * (0.5 - np.arctan(np.asarray(x) / self.scale) / np.pi)
+        fall = np.arctan(np.asarray(x, dtype=np.float64) / self.scale) / np.pi
+        return np.asarray(self.low + (self.high - self.low) * (0.5 - fall))
 
 
 class Truth(ABC):
