@@ -1,0 +1,241 @@
+"""The marginal likelihood of a collapse, for a whole batch of parameter vectors at once.
+
+Model (with y in units of its range, see `standardised`):
+
+    y = Phi(theta) c + noise,      c ~ N(0, P^-1),      noise ~ N(0, s^2 C)
+
+Phi holds the spline basis of F at the scaled positions and, for a corrected ansatz, w and w (2u - 1) with
+w = (L/L_min)^-omega, the constant and linear part of G.  Integrating c out (Rasmussen, Williams 2006, eq. 2.43 with
+the matrix-inversion lemma A.9, A.10):
+
+    ln p(y | theta, tau, s) = -1/2 [ Q + ln det(M/s^2 + P) - ln det P + ln det(s^2 C) + n ln 2 pi ]
+    M = Phi^T C^-1 Phi,     Q = (y^T C^-1 y - b^T (M + s^2 P)^-1 b) / s^2,     b = Phi^T C^-1 y
+
+One Cholesky factor of the matrix [[M + s^2 P, b], [b^T, y^T C^-1 y]] gives both the determinant and, as the square of its
+last diagonal element, s^2 Q: the Schur complement.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import cached_property
+
+import numpy as np
+import scipy.linalg
+
+from driftline.curves import Curves, FloatArray
+from driftline.scaling.ansatz import Ansatz
+from driftline.scaling.function import SplineFunction
+from driftline.scaling.parameters import Parameter
+from driftline.scaling.priors import LOG_2PI, LogNormal
+
+#: Standard deviation of the constant and linear part of G in units of the range of y at the smallest size.
+CORRECTION_SD = 0.3
+CORRECTION_TERMS = 2
+
+#: tau is the scale of second differences of the coefficients in units of the range of y.  A logistic step over a third
+#: of the axis has 0.05; three standard deviations reach from a straight line (0.0005) to a step between two knots (5).
+TAU_PRIOR = LogNormal.around(0.05, 1.5)
+NOISE_PRIOR = LogNormal.around(1.0, 0.3)
+NUISANCE = (
+    Parameter("tau", r"\tau", TAU_PRIOR, "roughness of the scaling function"),
+    Parameter("s", "s", NOISE_PRIOR, "factor on the measured errors"),
+)
+
+
+@dataclass(frozen=True, eq=False)
+class Posterior:
+    """Joint log density of the sampled coordinates: physical parameters, then ln tau, then ln s.
+
+    Parameters
+    ----------
+    curves : Curves
+        Measured data.
+    ansatz : Ansatz
+        Scaling form.
+    log_tau : float, optional
+        Hold the roughness at this value instead of sampling it; the coordinate is then left out.
+    function : SplineFunction
+        Basis of the scaling function.
+    """
+
+    curves: Curves
+    ansatz: Ansatz
+    log_tau: float | None = None
+    function: SplineFunction = SplineFunction()
+
+    @cached_property
+    def parameters(self) -> tuple[Parameter, ...]:
+        """All sampled parameters in order."""
+        nuisance = NUISANCE if self.log_tau is None else NUISANCE[1:]
+        return (*self.ansatz.parameters, *nuisance)
+
+    @property
+    def dimension(self) -> int:
+        """Number of sampled coordinates."""
+        return len(self.parameters)
+
+    def log_prior(self, z: FloatArray) -> FloatArray:
+        """Log prior density, shape (batch,), of coordinates `z`, shape (batch, dimension)."""
+        return np.sum([p.prior.log_density(z[:, i]) for i, p in enumerate(self.parameters)], axis=0)
+
+    def from_unit(self, u: FloatArray) -> FloatArray:
+        """Coordinates at prior quantiles `u`, shape (batch, dimension), each in (0, 1)."""
+        return np.column_stack([p.prior.quantile(u[:, i]) for i, p in enumerate(self.parameters)])
+
+    def values(self, z: FloatArray) -> FloatArray:
+        """Parameter values, shape (batch, dimension), on their own scales."""
+        return np.column_stack([p.prior.value(z[:, i]) for i, p in enumerate(self.parameters)])
+
+    def __call__(self, z: FloatArray) -> FloatArray:
+        """Log prior plus log marginal likelihood, shape (batch,); -inf outside the prior's support."""
+        z = np.atleast_2d(z)
+        total = self.log_prior(z)
+        inside = np.isfinite(total)
+        if inside.all():
+            return total + self.log_likelihood(z)
+        if inside.any():
+            total[inside] += self.log_likelihood(z[inside])
+        return total
+
+    # --- the data in the units of the model -------------------------------------------------------------------
+
+    @cached_property
+    def spread(self) -> float:
+        """Range of the measured means, the unit of y."""
+        mean = self.curves.flat()[2]
+        return float(np.ptp(mean)) or 1.0  # a constant observable has no range; any unit serves
+
+    @cached_property
+    def centre(self) -> float:
+        """Middle of the measured means, the zero of y."""
+        mean = self.curves.flat()[2]
+        return float(mean.max() + mean.min()) / 2
+
+    @cached_property
+    def _points(self) -> tuple[FloatArray, FloatArray]:
+        size, disorder, _, _ = self.curves.flat()
+        return size, disorder
+
+    @cached_property
+    def _whitener(self) -> FloatArray | tuple[FloatArray, ...]:
+        """1/error of each point or, with correlated points, the inverse Cholesky factor of each size."""
+        if not self.curves.correlated:
+            return self.spread / self.curves.flat()[3]
+        factors = (np.linalg.cholesky(curve.noise / self.spread**2) for curve in self.curves.curves)
+        return tuple(scipy.linalg.solve_triangular(f, np.eye(len(f)), lower=True) for f in factors)
+
+    def _whiten(self, matrix: FloatArray) -> None:
+        """Multiply `matrix`, shape (..., points, columns), by the inverse root of C from the left, in place."""
+        if isinstance(self._whitener, tuple):
+            start = 0
+            for factor in self._whitener:
+                part = slice(start, start + len(factor))
+                matrix[..., part, :] = factor @ matrix[..., part, :]
+                start += len(factor)
+        else:
+            matrix *= self._whitener[:, None]
+
+    @cached_property
+    def standardised(self) -> FloatArray:
+        """Means in units of their range, centred, shape (points,)."""
+        return (self.curves.flat()[2] - self.centre) / self.spread
+
+    @cached_property
+    def _constant(self) -> float:
+        """n ln 2 pi + ln det C, in the user's units of y."""
+        blocks = (np.linalg.slogdet(curve.noise)[1] for curve in self.curves.curves)
+        return self.curves.points * LOG_2PI + float(sum(blocks))
+
+    @cached_property
+    def correction_sd(self) -> float:
+        """Prior standard deviation of the two coefficients of G, in units of the range of y."""
+        return CORRECTION_SD * (float(np.ptp(self.curves.curves[0].mean)) / self.spread or 1.0)
+
+    # --- the model --------------------------------------------------------------------------------------------
+
+    def positions(self, z: FloatArray) -> FloatArray:
+        """Positions u in [0, 1] of all points on the axis of the scaling function, shape (batch, points)."""
+        size, disorder = self._points
+        x = self.ansatz.scaled(z, size, disorder, self.curves.sizes)
+        low = x.min(axis=1, keepdims=True)
+        return (x - low) / (x.max(axis=1, keepdims=True) - low)
+
+    def design(self, z: FloatArray) -> FloatArray:
+        """Phi with the data as last column, shape (batch, points, columns + 1), not yet whitened."""
+        u = self.positions(z)
+        batch, points = u.shape
+        weight = self.ansatz.correction(z, self._points[0], self.curves.sizes)
+        count = self.function.count
+        columns = count + (CORRECTION_TERMS if weight is not None else 0)
+        matrix = np.zeros((batch, points, columns + 1))
+        first, values = self.function.basis(u)
+        start = np.arange(batch * points).reshape(batch, points) * (columns + 1) + first
+        matrix.reshape(-1)[start[..., None] + np.arange(4)] = values
+        if weight is not None:
+            matrix[..., count] = weight
+            matrix[..., count + 1] = weight * (2 * u - 1)
+        matrix[..., -1] = self.standardised
+        return matrix
+
+    def _precision(self, log_tau: FloatArray, columns: int) -> FloatArray:
+        """P for each ln tau, shape (batch, columns, columns)."""
+        count = self.function.count
+        precision = np.zeros((log_tau.size, columns, columns))
+        precision[:, :count, :count] = self.function.roughness * np.exp(-2 * log_tau)[:, None, None]
+        precision[:, :count, :count] += self.function.linear_precision
+        extra = np.arange(count, columns)
+        precision[:, extra, extra] = self.correction_sd**-2
+        return precision
+
+    def _nuisance(self, z: FloatArray) -> tuple[FloatArray, FloatArray]:
+        log_tau = np.full(len(z), self.log_tau) if self.log_tau is not None else z[:, -2]
+        return log_tau, z[:, -1]
+
+    def system(self, z: FloatArray) -> FloatArray:
+        """The matrix [[M + s^2 P, b], [b^T, y^T C^-1 y]], shape (batch, columns + 1, columns + 1)."""
+        design = self.design(z)
+        self._whiten(design)
+        matrix = np.matmul(design.swapaxes(1, 2), design)
+        log_tau, log_s = self._nuisance(z)
+        columns = matrix.shape[1] - 1
+        matrix[:, :-1, :-1] += self._precision(log_tau, columns) * np.exp(2 * log_s)[:, None, None]
+        return matrix
+
+    def log_likelihood(self, z: FloatArray) -> FloatArray:
+        """Log marginal likelihood, shape (batch,), of coordinates `z`, shape (batch, dimension)."""
+        matrix = self.system(z)
+        log_tau, log_s = self._nuisance(z)
+        diagonal = np.diagonal(_cholesky(matrix), axis1=1, axis2=2)
+        columns = diagonal.shape[1] - 1
+        with np.errstate(divide="ignore", invalid="ignore"):
+            quadratic = diagonal[:, -1] ** 2 * np.exp(-2 * log_s)
+            log_det = 2 * np.sum(np.log(diagonal[:, :-1]), axis=1) - 2 * columns * log_s
+            log_det_prior = self.function.log_det_precision(log_tau)
+            log_det_prior -= 2 * (columns - self.function.count) * np.log(self.correction_sd)
+            total = -0.5 * (
+                quadratic + log_det - log_det_prior + 2 * self.curves.points * log_s + self._constant
+            )  # fmt: skip
+        return np.where(np.isfinite(total), total, -np.inf)
+
+    def coefficients(self, z: FloatArray) -> tuple[FloatArray, FloatArray]:
+        """Posterior mean and covariance of c at one coordinate vector `z`, shape (dimension,), in units of y's range."""
+        matrix = self.system(z[None])[0]
+        s2 = float(np.exp(2 * z[-1]))
+        factor = scipy.linalg.cho_factor(matrix[:-1, :-1], lower=True)
+        mean = scipy.linalg.cho_solve(factor, matrix[:-1, -1])
+        return mean, s2 * scipy.linalg.cho_solve(factor, np.eye(len(mean)))
+
+
+def _cholesky(matrix: FloatArray) -> FloatArray:
+    """Batched Cholesky factor; NaN where a matrix is not positive definite to working precision."""
+    try:
+        return np.linalg.cholesky(matrix)
+    except np.linalg.LinAlgError:
+        factors = np.full_like(matrix, np.nan)
+        for i, single in enumerate(matrix):
+            try:
+                factors[i] = np.linalg.cholesky(single)
+            except np.linalg.LinAlgError:
+                continue  # stays NaN: reported as zero likelihood
+        return factors
