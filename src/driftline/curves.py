@@ -3,20 +3,25 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping
-from dataclasses import dataclass, field, replace
+from copy import deepcopy
+from dataclasses import dataclass, field, fields, replace
 from itertools import pairwise
+from types import MappingProxyType
 from typing import Any, Literal
 
 import numpy as np
 import numpy.typing as npt
 
-from driftline.errors import InputError
+from driftline.errors import ConfigurationError, InputError
 
 FloatArray = npt.NDArray[np.float64]
 DisorderKind = Literal["quenched", "quasiperiodic", "none"]
 
 MIN_SIZES = 2
 MIN_DISORDERS = 4  # a cubic, the least a smooth crossing needs
+
+#: Largest magnitude of any number; its inverse is the smallest standard error. Their squares and ratios stay finite.
+LARGEST = 1e100
 
 
 @dataclass(frozen=True)
@@ -47,14 +52,16 @@ class Labels:
     disorder_kind: DisorderKind = "quenched"
 
     def __post_init__(self) -> None:
+        for name in ("observable", "observable_symbol", "disorder_symbol", "disorder_unit"):
+            object.__setattr__(self, name, _line_of_text(getattr(self, name), name))
         if self.disorder_kind not in ("quenched", "quasiperiodic", "none"):
             raise InputError(
                 f"disorder_kind must be quenched, quasiperiodic or none, not {self.disorder_kind!r}", where="labels"
             )
         for name in ("ergodic_value", "localised_value", "dimension"):
             value = getattr(self, name)
-            if value is not None and not np.isfinite(value):
-                raise InputError(f"{name} must be a finite number, not {value}", where="labels")
+            if value is not None:
+                object.__setattr__(self, name, _finite(value, name, where="labels"))
         if self.dimension is not None and self.dimension <= 0:
             raise InputError(f"dimension must be positive, not {self.dimension:g}", where="labels")
 
@@ -78,7 +85,12 @@ class Curve:
     Raises
     ------
     InputError
-        If shapes differ, a value is not finite, an error is not positive, or the grid is not strictly increasing.
+        If shapes differ, a value is not finite or beyond ``LARGEST``, an error is not positive, the grid is not
+        strictly increasing, the covariance is not positive definite, or a count is not a positive whole number.
+
+    Notes
+    -----
+    The arrays are copies and cannot be written to.
     """
 
     size: float
@@ -89,23 +101,25 @@ class Curve:
     samples: npt.NDArray[np.int64] | None = None
 
     def __post_init__(self) -> None:
-        where = f"size {self.size:g}"
-        if not (np.isfinite(self.size) and self.size > 0):
-            raise InputError(f"a size must be a positive number, not {self.size}", where="curves")
-        object.__setattr__(self, "size", float(self.size))
+        size = _finite(self.size, "a size", where="curves")
+        if size <= 0:
+            raise InputError(f"a size must be positive, not {size:g}", where="curves")
+        object.__setattr__(self, "size", size)
+        where = f"size {size:g}"
         for name in ("disorder", "mean", "error"):
             object.__setattr__(self, name, _frozen(getattr(self, name), where, name))
         if not (self.disorder.shape == self.mean.shape == self.error.shape):
-            raise InputError("disorder, mean and error must have the same length", where=where)
+            lengths = f"{self.disorder.size}, {self.mean.size} and {self.error.size}"
+            raise InputError(f"disorder, mean and error must have the same length, not {lengths}", where=where)
         _check_points(self.disorder, self.error, where)
         if self.covariance is not None:
             object.__setattr__(self, "covariance", _checked_covariance(self.covariance, self.error, where))
         if self.samples is not None:
-            counts = np.array(self.samples, dtype=np.int64)
-            counts.flags.writeable = False
-            if counts.shape != self.mean.shape or np.any(counts < 1):
-                raise InputError("samples must be one positive count for each disorder", where=where)
-            object.__setattr__(self, "samples", counts)
+            object.__setattr__(self, "samples", _checked_counts(self.samples, self.mean.size, where))
+
+    def __reduce__(self) -> tuple[Any, ...]:
+        # Rebuilt through the constructor, because unpickled arrays would be writable
+        return Curve, (self.size, self.disorder, self.mean, self.error, self.covariance, self.samples)
 
     def keep(self, mask: npt.NDArray[np.bool_]) -> Curve:
         """The same curve at the points where `mask`, shape (n,), is true."""
@@ -130,7 +144,8 @@ class Curves:
     labels : Labels
         Names, symbols and reference values.
     origin : mapping
-        Where the numbers came from (file, columns, hash); free-form, for `inspect` and the report.
+        Where the numbers came from (file, columns, hash); free-form, for `inspect` and the report. A copy is kept,
+        whose entries cannot be replaced.
 
     Raises
     ------
@@ -157,8 +172,11 @@ class Curves:
         ordered = tuple(sorted(curves, key=lambda curve: curve.size))
         object.__setattr__(self, "curves", ordered)
         object.__setattr__(self, "labels", labels or Labels())
-        object.__setattr__(self, "origin", dict(origin or {}))
+        object.__setattr__(self, "origin", MappingProxyType(deepcopy(dict(origin or {}))))
         _check_set(ordered)
+
+    def __reduce__(self) -> tuple[Any, ...]:
+        return Curves, (self.curves, self.labels, dict(self.origin))  # a read-only mapping cannot be pickled
 
     @property
     def sizes(self) -> FloatArray:
@@ -208,40 +226,92 @@ class Curves:
         ------
         InputError
             If what is left breaks the rules of `Curves`.
+        ConfigurationError
+            If the window does not run from a lower to a higher disorder.
         """
+        if window is not None and not window[0] < window[1]:
+            raise ConfigurationError(
+                f"a window must run from a lower to a higher disorder, not from {window[0]:g} to {window[1]:g}"
+            )
         low_size = 0.0 if smallest_size is None else smallest_size
         high_size = np.inf if largest_size is None else largest_size
-        low, high = window or (-np.inf, np.inf)
+        low, high = (-np.inf, np.inf) if window is None else window
         kept = []
         for curve in self.curves:
             if low_size <= curve.size <= high_size:
                 mask = (curve.disorder >= low) & (curve.disorder <= high)
                 if np.count_nonzero(mask) < MIN_DISORDERS:
                     raise InputError(
-                        f"only {np.count_nonzero(mask)} disorders lie between {low:g} and {high:g} and at least "
-                        f"{MIN_DISORDERS} are needed; widen the window or drop this size",
+                        f"the window from {low:g} to {high:g} holds {np.count_nonzero(mask)} of its disorder values, "
+                        f"but at least {MIN_DISORDERS} are needed; widen the window or drop this size",
                         where=f"size {curve.size:g}",
                     )
                 kept.append(curve.keep(mask))
         return Curves(kept, self.labels, self.origin)
 
     def relabel(self, **changes: Any) -> Curves:
-        """The same numbers under labels in which `changes` (fields of `Labels`) replace the old ones."""
+        """The same numbers under labels in which `changes` (fields of `Labels`) replace the old ones.
+
+        Raises
+        ------
+        ConfigurationError
+            If there is no such label.
+        InputError
+            If a value does not suit its label.
+        """
+        names = [item.name for item in fields(Labels)]
+        for name in changes:
+            if name not in names:
+                raise ConfigurationError(f"there is no label {name!r}; the labels are {', '.join(names)}")
         return Curves(self.curves, replace(self.labels, **changes), self.origin)
 
 
-def _frozen(values: npt.ArrayLike, where: str, name: str) -> FloatArray:
+def _line_of_text(value: object, name: str) -> str:
+    text = value.strip() if isinstance(value, str) else ""
+    if not isinstance(value, str) or not text.isprintable() or not (text or name == "disorder_unit"):
+        raise InputError(f"{name} must be one line of printable text, not {value!r}", where="labels")
+    return text
+
+
+def _finite(value: object, name: str, *, where: str) -> float:
     try:
-        array = np.array(values, dtype=np.float64)  # a copy: the caller's array may change later
-    except (TypeError, ValueError) as reason:
+        if isinstance(value, str | bytes | bool | np.bool_):
+            raise TypeError
+        result = float(value)  # type: ignore[arg-type]
+    except (TypeError, ValueError, OverflowError) as reason:
+        raise InputError(f"{name} must be a number, not {value!r}", where=where) from reason
+    if not abs(result) <= LARGEST:  # NaN included
+        raise InputError(f"{name} must be a finite number up to {LARGEST:g}, not {result:g}", where=where)
+    return result
+
+
+def _frozen(values: npt.ArrayLike, where: str, name: str) -> FloatArray:
+    """A read-only copy as doubles; text, logical and complex values and masked points are refused, not converted."""
+    try:
+        raw = np.asanyarray(values)
+        if raw.dtype.kind not in "iufO" or np.ma.is_masked(raw):
+            raise TypeError
+        array = np.array(raw, dtype=np.float64)
+    except (TypeError, ValueError, OverflowError) as reason:
         raise InputError(f"{name} must be an array of numbers", where=where) from reason
     if array.ndim != 1:
         raise InputError(f"{name} must have one dimension, not {array.ndim}", where=where)
-    bad = np.flatnonzero(~np.isfinite(array))
+    bad = np.flatnonzero(~(np.abs(array) <= LARGEST))  # NaN included
     if bad.size:
-        raise InputError(f"{name} is {array[bad[0]]} at point {bad[0] + 1}; give a finite number", where=where)
+        problem = f"{name} is {array[bad[0]]:g} at point {bad[0] + 1}; give a finite number up to {LARGEST:g}"
+        raise InputError(problem, where=where)
     array.flags.writeable = False
     return array
+
+
+def _checked_counts(samples: npt.ArrayLike, n: int, where: str) -> npt.NDArray[np.int64]:
+    values = _frozen(samples, where, "samples")
+    # 2**53: beyond it, double precision no longer holds every whole number
+    if values.shape != (n,) or np.any((values < 1) | (values != np.floor(values)) | (values > 2**53)):
+        raise InputError("samples must be one positive whole number for each disorder", where=where)
+    counts = values.astype(np.int64)
+    counts.flags.writeable = False
+    return counts
 
 
 def _check_points(disorder: FloatArray, error: FloatArray, where: str) -> None:
@@ -257,6 +327,9 @@ def _check_points(disorder: FloatArray, error: FloatArray, where: str) -> None:
             f"the error at disorder {disorder[bad[0]]:g} is {error[bad[0]]:g}; a standard error must be positive",
             where=where,
         )
+    if np.min(error) < 1 / LARGEST:
+        at = disorder[np.argmin(error)]
+        raise InputError(f"the error at disorder {at:g} is below {1 / LARGEST:g}; use other units", where=where)
     steps = np.diff(disorder)
     if np.any(steps == 0):
         raise InputError(f"disorder {disorder[np.flatnonzero(steps == 0)[0]]:g} occurs twice", where=where)
@@ -264,21 +337,37 @@ def _check_points(disorder: FloatArray, error: FloatArray, where: str) -> None:
         raise InputError("the disorder values must increase", where=where)
 
 
-def _checked_covariance(covariance: FloatArray, error: FloatArray, where: str) -> FloatArray:
-    matrix = np.array(covariance, dtype=np.float64)
+def _checked_covariance(covariance: npt.ArrayLike, error: FloatArray, where: str) -> FloatArray:
     n = error.size
-    if matrix.shape != (n, n) or not np.all(np.isfinite(matrix)):
-        raise InputError(f"the covariance must be a finite matrix of {n} by {n}", where=where)
+    matrix = _matrix(covariance, n, where)
     scaled = matrix / np.outer(error, error)
     # 1e-6: room for files that store single precision or rounded errors, far below any statistical meaning
     if not np.allclose(scaled, scaled.T, rtol=0, atol=1e-6):
         raise InputError("the covariance is not symmetric", where=where)
     if not np.allclose(np.diag(scaled), 1.0, rtol=0, atol=1e-6):
         raise InputError("the diagonal of the covariance is not the square of the errors", where=where)
-    if np.linalg.eigvalsh(scaled)[0] <= 0:
-        raise InputError("the covariance is not positive definite", where=where)
     matrix = (matrix + matrix.T) / 2
+    spectrum = np.linalg.eigvalsh(matrix / np.outer(error, error))
+    # Rounding of the eigenvalues is of order n times machine precision times the largest one
+    if spectrum[0] <= n * np.finfo(np.float64).eps * spectrum[-1]:
+        raise InputError(
+            "the covariance is not positive definite; estimate it from more realisations than there are disorders",
+            where=where,
+        )
     matrix.flags.writeable = False
+    return matrix
+
+
+def _matrix(values: npt.ArrayLike, n: int, where: str) -> FloatArray:
+    try:
+        raw = np.asanyarray(values)
+        if raw.dtype.kind not in "iufO" or np.ma.is_masked(raw):
+            raise TypeError
+        matrix = np.array(raw, dtype=np.float64)
+    except (TypeError, ValueError, OverflowError) as reason:
+        raise InputError("the covariance must be an array of numbers", where=where) from reason
+    if matrix.shape != (n, n) or not np.all(np.isfinite(matrix)):
+        raise InputError(f"the covariance must be a finite matrix of {n} by {n}", where=where)
     return matrix
 
 

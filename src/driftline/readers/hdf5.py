@@ -1,0 +1,256 @@
+"""The program's own HDF5: a group ``/curves/<size>`` for each size with the curve as datasets.
+
+=====================================  ======================================================================
+``/curves/<size>/disorder``            disorder strengths, shape (n,)
+``/curves/<size>/mean``, ``error``     mean over realisations and its standard error, shape (n,)
+``/curves/<size>/covariance``          covariance of the means, shape (n, n), optional
+``/curves/<size>/samples``             realisations behind each mean, shape (n,), optional
+=====================================  ======================================================================
+
+The name of a group is its size as a number. Attributes of the file carry the labels under the names of the fields of
+`driftline.curves.Labels`; the text ``none`` stands for a reference value that is not known. A file is not trusted:
+links and storage that lead out of it are refused, and shapes are checked before anything is read.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterator
+from contextlib import contextmanager
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+import numpy.typing as npt
+
+from driftline.curves import Curve
+from driftline.errors import InputError
+from driftline.readers.base import (
+    LABEL_NAMES,
+    MAX_NUMBERS,
+    NUMERIC_LABELS,
+    Contents,
+    Layout,
+    check_columns,
+    label,
+    listed,
+    located,
+    number,
+    shown,
+)
+
+if TYPE_CHECKING:
+    import h5py  # imported inside the functions that need it: nobody else should wait for it
+
+FORMAT = "driftline-curves/1"
+VECTORS = ("disorder", "mean", "error", "samples")
+MAX_SIZES = 10_000
+_SIGNATURE = b"\x89HDF\r\n\x1a\n"
+_SUFFIXES = (".h5", ".hdf5", ".hdf")
+
+
+class Hdf5Layout(Layout):
+    """The program's own HDF5 file."""
+
+    name = "hdf5"
+    description = "HDF5 with /curves/<size>/{disorder,mean,error[,covariance][,samples]} and labels as attributes"
+
+    def recognises(self, path: Path) -> bool:
+        """By the signature of HDF5, or by the name of a file that claims to be one."""
+        return _signed(path) or path.suffix.lower() in _SUFFIXES
+
+    def contents(self, path: Path, place: str) -> Contents:
+        """Read the file; see `Layout.contents`."""
+        import h5py
+
+        if not _signed(path):
+            raise InputError("the file is named as HDF5 but is not; give it the name of its format", where=place)
+        with _damage(place), h5py.File(path, "r") as file:
+            labels, notes = _labels(file, place)
+            groups = _groups(file, place)
+            _check_total(groups, place)
+            curves, rows = [], 0
+            for size, group in groups.items():
+                curve, extra = _curve(size, group, place)
+                curves.append(curve)
+                notes.extend(extra)
+                rows += curve.disorder.size
+            used = [name for name in (*VECTORS, "covariance") if any(name in group for group in groups.values())]
+        columns = {"size": "/curves/<size>", **{name: f"/curves/<size>/{name}" for name in used}}
+        return Contents(curves, labels, columns, rows, notes)
+
+
+def _signed(path: Path) -> bool:
+    """Whether the signature stands at byte 0, 512, 1024, 2048, ... (HDF5 file format specification, III.A)."""
+    if not path.is_file():
+        return False
+    size, offset = path.stat().st_size, 0
+    with path.open("rb") as stream:
+        while offset < size:
+            stream.seek(offset)
+            if stream.read(len(_SIGNATURE)) == _SIGNATURE:
+                return True
+            offset = 2 * offset or 512
+    return False
+
+
+@contextmanager
+def _damage(place: str) -> Iterator[None]:
+    """Turn what h5py raises on a broken file into one sentence; it raises many kinds, depending on what is broken."""
+    try:
+        yield
+    except InputError:
+        raise
+    except (OSError, RuntimeError, KeyError, ValueError, TypeError, AttributeError, MemoryError) as reason:
+        if isinstance(reason, BlockingIOError):
+            raise InputError("another program is writing the file; try again when it is done", where=place) from reason
+        problem = "the HDF5 file is truncated or damaged; copy or write it again"
+        raise InputError(problem, where=place) from reason
+
+
+def _labels(file: h5py.File, place: str) -> tuple[dict[str, str | float | None], list[str]]:
+    labels: dict[str, str | float | None] = {}
+    notes = []
+    for name in file.attrs:
+        where = f"{place}, attribute {shown(name)}"
+        if name == "format":
+            if (found := _attribute(file, name, where)) != FORMAT:
+                raise InputError(f"the format is {shown(str(found))}, but only {FORMAT!r} can be read", where=where)
+        elif name in LABEL_NAMES:
+            labels[name] = label(name, _attribute(file, name, where), where)
+        else:
+            notes.append(f"attribute {shown(name)} is not a label and was not used")
+    return labels, notes
+
+
+def _attribute(file: h5py.File, name: str, where: str) -> str | float:
+    kind = "a number" if name in NUMERIC_LABELS else "text"
+    handle = file.attrs.get_id(name)
+    if handle.shape != ():  # before reading: an attribute may declare any size
+        raise InputError(f"the attribute must be {kind}, not an array", where=where)
+    value = file.attrs[name]
+    if isinstance(value, bytes):
+        value = value.decode("utf-8")
+    if isinstance(value, str):
+        return value
+    if kind == "text" or not np.issubdtype(np.asarray(value).dtype, np.number) or np.iscomplexobj(value):
+        raise InputError(f"the attribute must be {kind}", where=where)
+    return float(value)
+
+
+def _groups(file: h5py.File, place: str) -> dict[float, h5py.Group]:
+    """Groups by size."""
+    top = _member(file, "curves", place, "/curves")
+    found = listed(file) or "nothing"
+    if not _is_group(top):
+        raise InputError(f"there is no group /curves; the file holds {found}", where=place)
+    if len(top) > MAX_SIZES:
+        raise InputError(f"there are {len(top)} sizes, but at most {MAX_SIZES} can be read", where=f"{place}, /curves")
+    groups: dict[float, h5py.Group] = {}
+    for name in top:
+        where = f"{place}, /curves/{listed([name])}"
+        size = _size(name, where)
+        if size in groups:
+            raise InputError(f"size {size:g} occurs twice; put its points into one group", where=where)
+        group = _member(top, name, place, f"/curves/{listed([name])}")
+        if not _is_group(group):
+            raise InputError("this must be a group with the datasets of one size", where=where)
+        groups[size] = group
+    return groups
+
+
+def _size(name: str, where: str) -> float:
+    try:
+        size = number(name, where)
+    except InputError as reason:
+        raise InputError("the name of a group must be a size, a positive number", where=where) from reason
+    if size <= 0:
+        raise InputError("the name of a group must be a size, a positive number", where=where)
+    return size
+
+
+def _is_group(item: Any) -> bool:
+    import h5py
+
+    return isinstance(item, h5py.Group)
+
+
+def _member(group: h5py.Group, name: str, place: str, shown_path: str) -> Any:
+    """The member of that name, or None; links are refused because they may lead to any other file or nowhere."""
+    import h5py
+
+    link = group.get(name, getlink=True)
+    if link is None:
+        return None
+    if not isinstance(link, h5py.HardLink):
+        problem = "this is a link to another place, which is not followed; store the data themselves"
+        raise InputError(problem, where=f"{place}, {shown_path}")
+    return group[name]
+
+
+def _check_total(groups: dict[float, h5py.Group], place: str) -> None:
+    """Check every dataset, and how many numbers they declare together, before any of them is read."""
+    total = 0
+    for group in groups.values():
+        where = f"{place}, {group.name}"
+        check_columns(list(group), where, word="dataset", needed=VECTORS[:3])
+        for name in (*VECTORS, "covariance"):
+            item = _member(group, name, place, f"{group.name}/{name}")
+            if item is not None:
+                total += _checked_dataset(item, name, f"{place}, {group.name}/{name}")
+        lengths = {group[name].shape[0] for name in VECTORS if name in group}
+        if len(lengths) > 1:
+            each = ", ".join(f"{name} {group[name].shape[0]}" for name in VECTORS if name in group)
+            raise InputError(f"the datasets have different lengths ({each})", where=where)
+    if total > MAX_NUMBERS:
+        problem = f"the file declares {total} numbers, but a summary of at most {MAX_NUMBERS} can be read"
+        raise InputError(problem, where=place)
+
+
+def _checked_dataset(item: Any, name: str, where: str) -> int:
+    """Number of values in a dataset that may be read."""
+    import h5py
+
+    if not isinstance(item, h5py.Dataset):
+        raise InputError("this must be a dataset of numbers", where=where)
+    wanted = 2 if name == "covariance" else 1
+    if item.shape is None or len(item.shape) != wanted:
+        found = "nothing" if item.shape is None else f"an array of shape {item.shape}"
+        raise InputError(f"this must be an array with {wanted} dimension{'s' * (wanted > 1)}, not {found}", where=where)
+    if item.dtype.kind not in "iuf":
+        raise InputError("this must be real numbers, not text, logical values or a compound type", where=where)
+    if item.external or item.is_virtual:
+        problem = "the values lie in another file, which is not followed; store the data themselves"
+        raise InputError(problem, where=where)
+    if math.prod(item.chunks or (1,)) > MAX_NUMBERS:
+        raise InputError(f"a chunk of more than {MAX_NUMBERS} numbers is too large to be read", where=where)
+    return math.prod(item.shape)
+
+
+def _curve(size: float, group: h5py.Group, place: str) -> tuple[Curve, list[str]]:
+    """One size, sorted by disorder, with notes."""
+    data: dict[str, npt.NDArray[Any]] = {
+        name: group[name][()] for name in (*VECTORS, "covariance") if name in group
+    }  # fmt: skip
+    where = listed([str(group.name)])
+    notes = []
+    unused = [name for name in group if name not in data]
+    if unused:
+        notes.append(f"{where}: not used: {listed(unused)}")
+    order = np.argsort(data["disorder"], kind="stable")
+    if np.any(order != np.arange(order.size)):
+        notes.append(f"{where}: the points were not in the order of disorder and have been sorted")
+        data = _sorted(data, order, f"{place}, {where}")
+    with located(place):
+        return Curve(size, **data), notes
+
+
+def _sorted(data: dict[str, npt.NDArray[Any]], order: npt.NDArray[np.intp], where: str) -> dict[str, npt.NDArray[Any]]:
+    n = order.size
+    matrix = data.pop("covariance", None)
+    result = {name: values[order] for name, values in data.items()}
+    if matrix is not None:
+        if matrix.shape != (n, n):
+            raise InputError(f"the covariance must be a finite matrix of {n} by {n}", where=where)
+        result["covariance"] = matrix[np.ix_(order, order)]
+    return result

@@ -1,0 +1,104 @@
+"""`Curves` to files, in the program's own formats; reading them back gives the same numbers to the last bit.
+
+Choose the CSV to look at the numbers or hand them on, HDF5 where the points of a size are correlated: only it holds
+covariances.
+"""
+
+from __future__ import annotations
+
+import os
+from collections.abc import Iterator
+from contextlib import contextmanager
+from dataclasses import asdict
+from pathlib import Path
+
+from driftline.curves import Curve, Curves, Labels
+from driftline.errors import ConfigurationError, InputError
+from driftline.readers.hdf5 import FORMAT, VECTORS
+
+
+def write_csv(curves: Curves, path: str | os.PathLike[str]) -> None:
+    """Write a summary CSV, with the labels as comments above the header.
+
+    Raises
+    ------
+    InputError
+        If a size brings a covariance, for which the CSV has no place.
+    ConfigurationError
+        If the file cannot be written.
+    """
+    if curves.correlated:
+        raise InputError("a summary CSV has no place for the covariance of the points; write HDF5 instead")
+    counted = any(curve.samples is not None for curve in curves.curves)
+    lines = [f"# {name}: {value}".rstrip() for name, value in _label_texts(curves.labels)]
+    lines.append("size,disorder,mean,error" + ",samples" * counted)
+    for curve in curves.curves:
+        lines.extend(_rows(curve, counted))
+    with replacing(path) as part:
+        part.write_text("\n".join(lines) + "\n", encoding="utf-8", newline="\n")
+
+
+def write_hdf5(curves: Curves, path: str | os.PathLike[str]) -> None:
+    """Write the program's own HDF5 (see `driftline.readers.hdf5`); the same curves give the same bytes.
+
+    Raises
+    ------
+    ConfigurationError
+        If the file cannot be written.
+    """
+    import h5py
+
+    with replacing(path) as part, h5py.File(part, "w") as file:
+        file.attrs["format"] = FORMAT
+        for name, value in asdict(curves.labels).items():
+            file.attrs[name] = "none" if value is None else value
+        for curve in curves.curves:
+            group = file.create_group(f"curves/{_text(curve.size)}")
+            for name in (*VECTORS, "covariance"):
+                values = getattr(curve, name)
+                if values is not None:
+                    group.create_dataset(name, data=values, track_times=False)
+
+
+@contextmanager
+def replacing(path: str | os.PathLike[str]) -> Iterator[Path]:
+    """A temporary path beside `path` that takes its place when the block ends well, and vanishes when it does not.
+
+    Raises
+    ------
+    ConfigurationError
+        If the operating system refuses.
+    """
+    target = Path(path)
+    if not target.parent.is_dir():
+        raise ConfigurationError(f"{target}: the file cannot be written (there is no such folder)")
+    part = target.with_name(f".{target.name}.{os.getpid()}.part")  # the process id keeps two runs apart
+    try:
+        yield part
+        part.replace(target)
+    except OSError as reason:
+        raise ConfigurationError(f"{target}: the file cannot be written ({reason.strerror or reason})") from reason
+    finally:
+        part.unlink(missing_ok=True)
+
+
+def _rows(curve: Curve, counted: bool) -> Iterator[str]:
+    for i in range(curve.disorder.size):
+        values = (curve.size, curve.disorder[i], curve.mean[i], curve.error[i])
+        row = ",".join(_text(float(value)) for value in values)
+        if counted:
+            row += "," + ("" if curve.samples is None else str(int(curve.samples[i])))
+        yield row
+
+
+def _label_texts(labels: Labels) -> Iterator[tuple[str, str]]:
+    for name, value in asdict(labels).items():
+        if value is None:
+            yield name, "none"
+        else:
+            yield name, _text(value) if isinstance(value, float) else value
+
+
+def _text(value: float) -> str:
+    """Shortest text that reads back as the same double, without a needless ``.0``."""
+    return repr(value).removesuffix(".0")
