@@ -22,6 +22,7 @@ from driftline.inference.intervals import Interval
 from driftline.inference.modes import find_modes
 from driftline.inference.sampling import WALKERS, run_chain
 from driftline.scaling.ansatz import Ansatz, parse_ansatz
+from driftline.scaling.defaults import DEFAULT_ANSATZE
 from driftline.scaling.likelihood import TAU_PRIOR, Posterior
 
 Progress = Callable[[str, float], None]
@@ -29,10 +30,10 @@ Progress = Callable[[str, float], None]
 #: Factor e on tau for the physical parameters; see the module's docstring.
 UNDERSMOOTHING = 1.0
 EVIDENCE_DRAWS = 6000
+QUICK_DRAWS = 2000
 POSTERIOR_DRAWS = 4000
-CHECK_DRAWS = 200
+CHECK_DRAWS = 100
 EFFECTIVE_LEAST = 400.0  # of importance sampling; intervals of 95 % then carry a Monte Carlo error below a tenth of their width
-DEFAULT_ANSATZE = ("power-law", "power-law:corrected", "power-law:linear-drift", "power-law:linear-drift:corrected")
 
 
 @dataclass(frozen=True)
@@ -213,11 +214,12 @@ def fit_collapse(
     mixture, draws = _adapted(target, rng)
     tell(f"{form.name}: sampling", 0.1)
     mixture, health = _sampled(target, mixture, draws, rng, quick, lambda f: tell(f"{form.name}: sampling", 0.1 + 0.7 * f))
-    draws = importance_sample(target, mixture, EVIDENCE_DRAWS, rng)
+    count = QUICK_DRAWS if quick else EVIDENCE_DRAWS
+    draws = importance_sample(target, mixture, count, rng)
     tell(f"{form.name}: parameters", 0.85)
     log_tau = Interval.of_draws(draws.places[:, -2], draws.weights)
     held = replace(target, log_tau=log_tau.median + UNDERSMOOTHING)
-    physical = importance_sample(held, _adapted(held, rng)[0], EVIDENCE_DRAWS, rng)
+    physical = importance_sample(held, _adapted(held, rng)[0], count, rng)
     tell(f"{form.name}: checking", 0.95)
     return _result(held, draws, physical, health, rng)
 

@@ -14,12 +14,18 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from driftline.errors import ConfigurationError, InputError
+from driftline.scaling.defaults import DEFAULT_ANSATZE
 
 if TYPE_CHECKING:
     from driftline.curves import Curves
 
-DEFAULT_ANSATZE = ("power-law", "power-law:corrected")
 MIN_DRAWS = 200  # the 95 % interval then still has five draws in each tail
+
+
+def _default_ansatze() -> tuple[str, ...]:
+    from driftline.collapse import DEFAULT_ANSATZE  # scipy comes with it, so only when an analysis is set up
+
+    return DEFAULT_ANSATZE
 
 
 @dataclass(frozen=True)
@@ -29,7 +35,8 @@ class Settings:
     Parameters
     ----------
     ansatze : tuple of str
-        Scaling ansätze to compare, by name (see ``driftline ansatze``).
+        Scaling ansätze to compare, by name (see ``driftline ansatze``); by default those of
+        `driftline.collapse.DEFAULT_ANSATZE`.
     window : (low, high) or None
         Disorder range to use, ends included, in the user's unit; None uses everything.
     smallest_size : float or None
@@ -56,7 +63,7 @@ class Settings:
     (14.0, 19.0)
     """
 
-    ansatze: tuple[str, ...] = DEFAULT_ANSATZE
+    ansatze: tuple[str, ...] = field(default_factory=_default_ansatze)
     window: tuple[float, float] | None = None
     smallest_size: float | None = None
     seed: int = 0
@@ -173,8 +180,7 @@ def _ansatze(value: Any, where: str) -> tuple[str, ...]:
             raise ConfigurationError(f"{where}: must be a list of names, but holds {name!r}")
         if names.count(name) > 1:
             raise ConfigurationError(f"{where}: {name!r} is given twice; give each ansatz once")
-        if name not in DEFAULT_ANSATZE:
-            _check_ansatz_name(name, where)
+        _check_ansatz_name(name, where)
     if not names:
         raise ConfigurationError(f"{where}: is empty; give at least one ansatz or leave the key out")
     return names

@@ -1,0 +1,169 @@
+"""The whole job as one function: curves in, one result object out."""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Callable, Iterator, Sequence
+from contextlib import contextmanager
+from dataclasses import dataclass, field
+
+import numpy as np
+
+from driftline.collapse import CollapseFit, Comparison, fit_collapse, weigh
+from driftline.crossings import Crossings, Separation, find_crossings, separation_test
+from driftline.curves import Curves
+from driftline.drift import Drift, fit_drift
+from driftline.inference.intervals import Interval
+from driftline.parallel import Task, run_tasks
+from driftline.scaling.ansatz import parse_ansatz
+from driftline.settings import Settings
+from driftline.stability import StabilityRow, cuts, refit, systematic
+from driftline.verdict import Case, Verdict, judge
+
+Progress = Callable[[str, float], None]
+
+#: Parts of the whole job, for the progress display: measured on six sizes by 21 disorders.
+SHARES = {"crossings": 0.06, "collapse": 0.84, "stability": 0.10}
+
+
+@dataclass(frozen=True)
+class Crossover:
+    """The headline numbers.
+
+    Parameters
+    ----------
+    disorder : Interval
+        Critical disorder, averaged over the `basis` by evidence.
+    systematic : float or None
+        What the stability refits add to its error.
+    nu : Interval
+        Correlation-length exponent.
+    basis : tuple of str
+        The ansätze averaged over: transition forms with the leading correction where any was fitted, since
+        corrections to scaling exist in every real system whatever the evidence says of their size.
+    """
+
+    disorder: Interval
+    systematic: float | None
+    nu: Interval
+    basis: tuple[str, ...]
+
+
+@dataclass(frozen=True, eq=False)
+class Analysis:
+    """Everything found out about one set of curves; built by `analyse`."""
+
+    curves: Curves
+    settings: Settings
+    crossings: Crossings
+    drift: Drift
+    separation: Separation
+    comparison: Comparison
+    crossover: Crossover | None
+    stability: tuple[StabilityRow, ...]
+    verdict: Verdict
+    timing: dict[str, float] = field(default_factory=dict)
+
+
+def analyse(curves: Curves, *, settings: Settings | None = None, progress: Progress | None = None) -> Analysis:
+    """Locate, collapse, compare and judge.
+
+    Parameters
+    ----------
+    curves : Curves
+        Measured curves, for example from `driftline.read`.
+    settings : Settings, optional
+        Ansätze, window, seed and so on.
+    progress : callable, optional
+        Called with (what is being done, fraction of the whole job).
+
+    Returns
+    -------
+    Analysis
+        The same numbers for the same seed, whatever the number of jobs.
+
+    Raises
+    ------
+    InputError, ConfigurationError
+        If window or smallest size leave too little, or an ansatz is unknown.
+    """
+    chosen = settings or Settings()
+    tell = progress or (lambda _text, _fraction: None)
+    timing: dict[str, float] = {}
+    used = chosen.select(curves.relabel(**chosen.labels) if chosen.labels else curves)
+    for_crossings, for_collapse, for_stability = np.random.default_rng(chosen.seed).spawn(3)
+    with _timed(timing, "crossings"):
+        tell("finding crossings", 0.0)
+        crossings = find_crossings(used, draws=chosen.draws, seed=for_crossings)
+        drift = fit_drift(crossings)
+        separation = separation_test(crossings)
+    with _timed(timing, "collapse"):
+        comparison = _compare(used, chosen, for_collapse, _within(tell, "crossings", "collapse"))
+    basis = headline_basis(comparison)
+    with _timed(timing, "stability"):
+        stability = _stability(used, basis, chosen, for_stability, _within(tell, "collapse", "stability"))
+    crossover = _crossover(basis, stability)
+    case = Case(used, crossings, drift, separation, comparison, basis, stability)
+    tell("judging", 1.0)
+    return Analysis(
+        used, chosen, crossings, drift, separation, comparison, crossover, stability, judge(case), timing
+    )  # fmt: skip
+
+
+@contextmanager
+def _timed(timing: dict[str, float], name: str) -> Iterator[None]:
+    start = time.perf_counter()
+    yield
+    timing[name] = time.perf_counter() - start
+
+
+def _within(tell: Progress, after: str, part: str) -> Progress:
+    """Progress of one part as progress of the whole."""
+    names = list(SHARES)
+    start = sum(SHARES[name] for name in names[: names.index(after) + 1])
+    return lambda text, fraction: tell(text, start + SHARES[part] * fraction)
+
+
+def _compare(curves: Curves, settings: Settings, rng: np.random.Generator, tell: Progress) -> Comparison:
+    forms = [parse_ansatz(name, curves) for name in settings.ansatze]  # all names are checked before any work
+    tasks = [
+        Task(f"collapse {form.name}", fit_collapse, (curves, form), {"seed": stream, "quick": settings.quick})
+        for form, stream in zip(forms, rng.spawn(len(forms)), strict=True)
+    ]
+    fits = run_tasks(tasks, settings.jobs, tell)
+    return Comparison(tuple(fits), weigh(fits))
+
+
+def headline_basis(comparison: Comparison) -> tuple[CollapseFit, ...]:
+    """The fits behind the headline: transition forms with correction, else plain ones, else none."""
+    transition = [fit for fit in comparison.fits if fit.ansatz.hypothesis == "transition"]
+    return tuple([fit for fit in transition if fit.ansatz.corrected] or transition)
+
+
+def _stability(
+    curves: Curves, basis: Sequence[CollapseFit], settings: Settings, rng: np.random.Generator, tell: Progress
+) -> tuple[StabilityRow, ...]:
+    pairs = [(fit, cut) for fit in basis for cut in cuts(curves, fit.parameters["W_c"].median)]
+    tasks = [
+        Task(f"stability of {fit.ansatz.name}", refit, (curves, fit.ansatz.name, cut, stream), {})
+        for (fit, cut), stream in zip(pairs, rng.spawn(len(pairs)), strict=True)
+    ]
+    return tuple(run_tasks(tasks, settings.jobs, tell))
+
+
+def _crossover(basis: Sequence[CollapseFit], stability: Sequence[StabilityRow]) -> Crossover | None:
+    """Average of the basis by evidence."""
+    if not basis:
+        return None
+    weights = np.array(weigh(basis))
+    share = np.repeat(weights / [len(fit.samples) for fit in basis], [len(fit.samples) for fit in basis])
+    disorder = np.concatenate([fit.draws("W_c") for fit in basis])
+    nu = np.concatenate([fit.draws("nu") for fit in basis])
+    extra = [(w, systematic(fit, stability)) for w, fit in zip(weights, basis, strict=True)]
+    known = [(w, value) for w, value in extra if value is not None]
+    return Crossover(
+        disorder=Interval.of_draws(disorder, share),
+        systematic=float(np.sqrt(sum(w * v**2 for w, v in known) / sum(w for w, _ in known))) if known else None,
+        nu=Interval.of_draws(nu, share),
+        basis=tuple(fit.ansatz.name for fit in basis),
+    )

@@ -1,0 +1,311 @@
+"""When a warning is raised: one small rule for each code, with the numbers behind it and what to do.
+
+Adding a warning is one function under `@rule` here.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, field
+
+import numpy as np
+
+from driftline.collapse import CollapseFit, Comparison
+from driftline.crossings import Crossings, Separation
+from driftline.curves import Curves
+from driftline.drift import Drift
+from driftline.stability import StabilityRow
+
+#: A pair of sizes counts as crossing from this probability on.
+CROSSES = 0.5
+#: Posterior probability from which a family counts as established (design decision, to be calibrated).
+ESTABLISHED = 0.95
+POOR_P = 0.01
+UNSTABLE_Z = 2.58  # two-sided 1 %
+OUTSIDE_SHARE = 0.05
+ENOUGH_SIZES = 4  # three sizes give two neighbouring crossings: a line through them leaves nothing to check it with
+
+
+@dataclass(frozen=True)
+class Caution:
+    """One warning: what was found, with its numbers, and what to do about it."""
+
+    code: str
+    message: str
+    action: str
+    numbers: dict[str, float] = field(default_factory=dict)
+
+
+@dataclass(frozen=True, eq=False)
+class Case:
+    """All that is known when the verdict is made."""
+
+    curves: Curves
+    crossings: Crossings
+    drift: Drift
+    separation: Separation
+    comparison: Comparison
+    basis: tuple[CollapseFit, ...]
+    stability: tuple[StabilityRow, ...]
+
+    @property
+    def headline(self) -> CollapseFit | None:
+        """The fit of the basis with the highest evidence."""
+        return max(self.basis, key=lambda fit: fit.log_evidence, default=None)
+
+
+Rule = Callable[[Case], Caution | None]
+RULES: list[Rule] = []
+
+
+def rule(function: Rule) -> Rule:
+    """Add a rule to the registry; rules are tried in the order of this file."""
+    RULES.append(function)
+    return function
+
+
+def cautions(case: Case) -> tuple[Caution, ...]:
+    """All warnings that apply, in the order of the rules."""
+    return tuple(caution for caution in (check(case) for check in RULES) if caution is not None)
+
+
+@rule
+def few_sizes(case: Case) -> Caution | None:
+    """Too few sizes to tell a drift from its curvature."""
+    count = case.curves.sizes.size
+    if count >= ENOUGH_SIZES:
+        return None
+    return Caution(
+        "FEW_SIZES",
+        f"only {count} sizes, so at most {count - 1} crossings of neighbouring sizes",
+        f"add sizes; {ENOUGH_SIZES} are the least from which a drift and its law can be told apart",
+        {"sizes": count},
+    )
+
+
+@rule
+def no_crossing(case: Case) -> Caution | None:
+    """No neighbouring sizes cross inside the common window."""
+    best = max(case.crossings.adjacent, key=lambda pair: pair.probability)
+    if best.probability >= CROSSES:
+        return None
+    low, high = case.crossings.window
+    return Caution(
+        "NO_CROSSING",
+        f"no curves of neighbouring sizes cross between {low:g} and {high:g}; the likeliest pair, {best.sizes[0]:g} and "
+        f"{best.sizes[1]:g}, does so with probability {best.probability:.2g}",
+        "widen the disorder range if the curves approach each other at its end, else treat the data as a crossover "
+        "without a critical point",
+        {"highest_probability": best.probability},
+    )
+
+
+@rule
+def crossing_at_reference(case: Case) -> Caution | None:
+    """One side of the crossing is flat in size and sits on a reference value."""
+    test = case.separation
+    if test.separated or not test.flat_at_reference:
+        return None
+    return Caution(
+        "CROSSING_AT_REFERENCE",
+        f"{_flat_side(test)} the curves of all sizes lie on a reference value within their errors, so the crossing there "
+        f"is not a crossing of resolved curves (size dependence {_sigmas(test)})",
+        "reduce the errors on that side, or add larger sizes, until the curves separate; coinciding curves do not show a "
+        "transition",
+        {"z_below": test.z_below, "z_above": test.z_above},
+    )
+
+
+@rule
+def one_sided(case: Case) -> Caution | None:
+    """Size dependence of opposite sign is not resolved on both sides."""
+    test = case.separation
+    if test.separated or test.flat_at_reference:
+        return None
+    return Caution(
+        "ONE_SIDED",
+        f"size dependence of opposite sign is not resolved on both sides of a crossing ({_sigmas(test)})",
+        "take more realisations or larger sizes where the curves coincide; a transition needs three standard "
+        "deviations on both sides",
+        {"z_below": test.z_below, "z_above": test.z_above},
+    )
+
+
+def _flat_side(test: Separation) -> str:
+    return {"below": "below the crossing", "above": "above the crossing"}.get(test.flat_side or "", "on one side")
+
+
+def _sigmas(test: Separation) -> str:
+    return f"{test.z_below:+.1f} standard deviations below and {test.z_above:+.1f} above"
+
+
+@rule
+def drift_unbounded(case: Case) -> Caution | None:
+    """Crossings move away with size under every law that is likely."""
+    p = case.drift.probability_bounded
+    if p is None or p > 1 - ESTABLISHED:
+        return None
+    rate = case.drift.rate_per_site
+    speed = f" by {rate.median:.3g} per site" if rate else ""
+    return Caution(
+        "DRIFT_UNBOUNDED",
+        f"the crossings move with size{speed} and laws without a limit hold {1 - p:.3f} of the probability",
+        "do not quote a critical disorder; report the drift, and extend the sizes to see whether it bends",
+        {"probability_bounded": p},
+    )
+
+
+@rule
+def drift_unresolved(case: Case) -> Caution | None:
+    """The crossings alone do not tell a limit from unbounded growth."""
+    p = case.drift.probability_bounded
+    if p is None or not 1 - ESTABLISHED < p < ESTABLISHED:
+        return None
+    size = case.drift.deciding_size
+    where = f"the two best laws differ by three errors from size {size:.0f} on" if size else "no size tells them apart soon"
+    return Caution(
+        "DRIFT_UNRESOLVED",
+        f"the crossings alone give laws with a limit a probability of {p:.2f}",
+        f"{where}; smaller errors at the crossings of the largest sizes help first",
+        {"probability_bounded": p, **({"deciding_size": size} if size else {})},
+    )
+
+
+@rule
+def poor_fit(case: Case) -> Caution | None:
+    """The form behind the headline does not describe the data."""
+    fit = case.headline
+    if fit is None or fit.quality.p_value >= POOR_P:
+        return None
+    size, disorder = fit.quality.max_residual_at
+    return Caution(
+        "POOR_FIT",
+        f"{fit.ansatz.name} misses the data: p = {fit.quality.p_value:.2g}, chi2/dof = {fit.quality.chi2_per_dof:.2f}, worst "
+        f"point {fit.quality.max_residual:+.1f} errors at size {size:g}, disorder {disorder:g}",
+        "narrow the disorder window, drop the smallest size, or check the errors (they may be too small)",
+        {"p_value": fit.quality.p_value, "chi2_per_dof": fit.quality.chi2_per_dof},
+    )
+
+
+@rule
+def size_unstable(case: Case) -> Caution | None:
+    """W_c moves when the smallest size is dropped."""
+    row = _worst(case, sizes=True)
+    if row is None:
+        return None
+    full = case.comparison[row.ansatz].parameters["W_c"]
+    return Caution(
+        "SIZE_UNSTABLE",
+        f"without sizes below {row.smallest_size:g}, W_c of {row.ansatz} moves by {row.shift(full):+.3g}, "
+        f"{abs(row.significance(full)):.1f} times the expected scatter",
+        "the smallest sizes are outside the scaling regime; leave them out (--smallest-size) and add larger ones",
+        {"shift": row.shift(full), "significance": row.significance(full)},
+    )
+
+
+@rule
+def window_unstable(case: Case) -> Caution | None:
+    """W_c moves when the disorder window is narrowed."""
+    row = _worst(case, sizes=False)
+    if row is None:
+        return None
+    full = case.comparison[row.ansatz].parameters["W_c"]
+    return Caution(
+        "WINDOW_UNSTABLE",
+        f"with disorders from {row.window[0]:.4g} to {row.window[1]:.4g} only, W_c of {row.ansatz} moves by "
+        f"{row.shift(full):+.3g}, {abs(row.significance(full)):.1f} times the expected scatter",
+        "fit a window around the crossing (--window), where the scaling form holds",
+        {"shift": row.shift(full), "significance": row.significance(full)},
+    )
+
+
+def _worst(case: Case, *, sizes: bool) -> StabilityRow | None:
+    """The most significant unstable refit of the asked kind, if any."""
+    smallest = case.curves.sizes[0]
+    rows = [row for row in case.stability if (row.smallest_size > smallest) == sizes]
+
+    def strength(row: StabilityRow) -> float:
+        return abs(row.significance(case.comparison[row.ansatz].parameters["W_c"]))
+
+    worst = max(rows, key=strength, default=None)
+    return worst if worst is not None and strength(worst) > UNSTABLE_Z else None
+
+
+@rule
+def outside_range(case: Case) -> Caution | None:
+    """The critical disorder may lie where nothing was measured."""
+    fit = case.headline
+    if fit is None:
+        return None
+    low, high = case.curves.disorder_range
+    draws = fit.draws("W_c")
+    share = float(np.mean((draws < low) | (draws > high)))
+    if share <= OUTSIDE_SHARE:
+        return None
+    interval = fit.parameters["W_c"]
+    return Caution(
+        "OUTSIDE_RANGE",
+        f"W_c from {interval.low95:.4g} to {interval.high95:.4g} (95 %) reaches beyond the measured disorders {low:g} to "
+        f"{high:g} with probability {share:.2f}",
+        "measure beyond that end before quoting a critical disorder",
+        {"probability_outside": share},
+    )
+
+
+@rule
+def prior_limited(case: Case) -> Caution | None:
+    """W_c or nu of the headline is set by its prior."""
+    fit = case.headline
+    named = [name for name in ("W_c", "nu") if fit is not None and name in fit.prior_limited]
+    if fit is None or not named:
+        return None
+    return Caution(
+        "PRIOR_LIMITED",
+        f"{' and '.join(named)} of {fit.ansatz.name} is known hardly better than before the data",
+        "do not quote it; more sizes or smaller errors are needed",
+        {name: fit.parameters[name].sd for name in named},
+    )
+
+
+@rule
+def exponent_bound(case: Case) -> Caution | None:
+    """nu lies below the bound for this kind of disorder."""
+    fit, bound = case.headline, exponent_limit(case.curves)
+    if fit is None or bound is None:
+        return None
+    limit, source = bound
+    share = float(np.mean(fit.draws("nu") < limit))
+    if share < ESTABLISHED:
+        return None
+    return Caution(
+        "EXPONENT_BOUND",
+        f"nu = {fit.parameters['nu'].median:.2f} lies below the bound {limit:.3g} for {case.curves.labels.disorder_kind} disorder in "
+        f"d = {case.curves.labels.dimension:g} ({source}) with probability {share:.3f}",
+        "read the exponent as pre-asymptotic: these sizes do not show the critical behaviour of the infinite system",
+        {"nu": fit.parameters["nu"].median, "bound": limit, "probability": share},
+    )
+
+
+def exponent_limit(curves: Curves) -> tuple[float, str] | None:
+    """Lower bound on nu with its source; None where none is known."""
+    d = curves.labels.dimension
+    if d is None or curves.labels.disorder_kind == "none":
+        return None
+    if curves.labels.disorder_kind == "quenched":
+        return 2 / d, "Chayes et al. 1986"
+    return 1 / d, "Luck 1993"
+
+
+@rule
+def sampler_not_converged(case: Case) -> Caution | None:
+    """A sampler did not reach the length it needs."""
+    bad: Sequence[CollapseFit] = [fit for fit in case.comparison.fits if not fit.sampler.converged]
+    if not bad:
+        return None
+    named = "; ".join(f"{fit.ansatz.name}: {fit.sampler.note}" for fit in bad)
+    return Caution(
+        "SAMPLER_NOT_CONVERGED",
+        f"the numbers of these fits are not reliable: {named}",
+        "run again with another seed; if it stays, the posterior is badly shaped: narrow the window or leave the ansatz out",
+        {fit.ansatz.name: fit.sampler.effective_samples for fit in bad},
+    )

@@ -1,0 +1,96 @@
+"""Does the answer survive when the smallest sizes or the outer disorders are left out?
+
+A fit to a part of the data differs from the fit to all of it by chance as well: if the form is right, the
+difference has variance sigma_part^2 - sigma_all^2 (Hausman, Econometrica 46, 1251 (1978)).  What exceeds that is systematic.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from driftline.collapse import CollapseFit, fit_collapse
+from driftline.curves import MIN_DISORDERS, Curves
+from driftline.errors import InputError
+from driftline.inference.intervals import Interval
+
+#: Part of the common disorder range that the narrowed window keeps, around the crossover.
+NARROWED = 0.7
+#: A drop of the smallest size must leave this many sizes, or the correction has nothing to stand on.
+SIZES_LEFT = 3
+#: Expected scatter is taken as at least this part of the full fit's error: nearly equal errors must not make a
+#: negligible shift look significant.
+LEAST_SCATTER = 0.3
+
+
+@dataclass(frozen=True)
+class Cut:
+    """A part of the data: sizes from `smallest_size`, disorders inside `window`."""
+
+    smallest_size: float
+    window: tuple[float, float]
+
+
+@dataclass(frozen=True)
+class StabilityRow:
+    """The critical disorder from a part of the data."""
+
+    ansatz: str
+    smallest_size: float
+    window: tuple[float, float]
+    disorder: Interval
+    p_value: float
+
+    def shift(self, full: Interval) -> float:
+        """Change of the median against the full fit, in the unit of the disorder."""
+        return self.disorder.median - full.median
+
+    def scatter(self, full: Interval) -> float:
+        """Standard deviation of that change expected by chance alone."""
+        variance = max(self.disorder.sd**2 - full.sd**2, (LEAST_SCATTER * full.sd) ** 2)
+        return float(np.sqrt(variance))
+
+    def significance(self, full: Interval) -> float:
+        """Change over its expected scatter."""
+        return self.shift(full) / self.scatter(full)
+
+
+def cuts(curves: Curves, centre: float) -> tuple[Cut, ...]:
+    """The parts to refit: the smallest size dropped; the window narrowed around `centre`."""
+    low, high = curves.disorder_range
+    found = []
+    if curves.sizes.size > SIZES_LEFT:
+        found.append(Cut(float(curves.sizes[1]), (low, high)))
+    middle = min(max(centre, low), high)
+    half = NARROWED * (high - low) / 2
+    start = min(max(middle - half, low), high - 2 * half)
+    narrow = Cut(float(curves.sizes[0]), (start, start + 2 * half))
+    if _possible(curves, narrow):
+        found.append(narrow)
+    return tuple(found)
+
+
+def _possible(curves: Curves, cut: Cut) -> bool:
+    try:
+        part = curves.select(smallest_size=cut.smallest_size, window=cut.window)
+    except InputError:
+        return False
+    return all(curve.disorder.size > MIN_DISORDERS for curve in part.curves)
+
+
+def refit(curves: Curves, ansatz: str, cut: Cut, seed: int | np.random.Generator) -> StabilityRow:
+    """Fit `ansatz` to one part of the data, by importance sampling alone."""
+    part = curves.select(smallest_size=cut.smallest_size, window=cut.window)
+    fit = fit_collapse(part, ansatz, seed=seed, quick=True)
+    return StabilityRow(ansatz, cut.smallest_size, cut.window, fit.parameters["W_c"], fit.quality.p_value)
+
+
+def systematic(full: CollapseFit, rows: Sequence[StabilityRow]) -> float | None:
+    """Largest part of a shift that chance does not explain, in the unit of the disorder; None without refits."""
+    interval = full.parameters["W_c"]
+    excess = [
+        max(row.shift(interval) ** 2 - row.scatter(interval) ** 2, 0.0) for row in rows if row.ansatz == full.ansatz.name
+    ]
+    return float(np.sqrt(max(excess))) if excess else None

@@ -1,0 +1,109 @@
+"""The decision: is there evidence of a transition, of a drift, or of neither?
+
+`transition-supported` needs every one of the conditions in `transition_conditions`; a single failure makes it `undecided`, with
+the failure as its reason.  Evidence between scaling forms alone is never enough.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+
+from driftline.cautions import CROSSES, ESTABLISHED, Case, Caution, cautions
+
+__all__ = ["Case", "Caution", "Verdict", "judge"]
+
+NO_EVIDENCE = "Warning: no evidence of a transition in these data."
+FINITE_SIZES = "Finite sizes alone do not decide the thermodynamic limit."
+LEAST_SIZES = 3  # two sizes have one crossing, which cannot be seen to drift or to stay
+
+
+@dataclass(frozen=True)
+class Verdict:
+    """What the data show.
+
+    Parameters
+    ----------
+    code : str
+        ``transition-supported``, ``drifting``, ``undecided`` or ``insufficient-data``.
+    statement : str
+        Sentences for people; opens with the warning sentence unless a transition is supported.
+    reasons : tuple of str
+        Why it is not more than it is.
+    probability_transition, probability_drift : float or None
+        Posterior probabilities of the two hypotheses among the forms fitted.
+    warnings : tuple of Caution
+    false_alarm : dict
+        Measured false-alarm rates; filled by a calibration.
+    """
+
+    code: str
+    statement: str
+    reasons: tuple[str, ...]
+    probability_transition: float | None
+    probability_drift: float | None
+    warnings: tuple[Caution, ...] = ()
+    false_alarm: dict[str, float] = field(default_factory=dict)
+
+
+def judge(case: Case) -> Verdict:
+    """The verdict on one case."""
+    transition = probability_of_transition(case)
+    drift = None if transition is None else 1 - transition
+    warnings = cautions(case)
+    failed = tuple(reason for holds, reason in transition_conditions(case, transition, warnings) if not holds)
+    if case.curves.sizes.size < LEAST_SIZES:
+        code, shown = "insufficient-data", "Two sizes have a single crossing, which cannot be seen to drift or to stay."
+    elif not failed:
+        code, shown = "transition-supported", _transition_statement(case)
+    elif drift is not None and drift >= ESTABLISHED and (case.drift.probability_bounded or 0.0) < 0.5:
+        code, shown = "drifting", _drift_statement(case, drift)
+    else:
+        code, shown = "undecided", "The data neither support a critical disorder nor establish a drift."
+    opening = "" if code == "transition-supported" else f"{NO_EVIDENCE} "
+    return Verdict(code, f"{opening}{shown} {FINITE_SIZES}", failed, transition, drift, warnings)
+
+
+def probability_of_transition(case: Case) -> float | None:
+    """From the evidences of the collapse if rival hypotheses were fitted, else from the laws of the drift."""
+    collapse = case.comparison.probability("transition")
+    return collapse if collapse is not None else case.drift.probability_bounded
+
+
+def transition_conditions(
+    case: Case, probability: float | None, warnings: tuple[Caution, ...]
+) -> list[tuple[bool, str]]:
+    """Each condition of `transition-supported` with the reason to give if it does not hold."""
+    codes = {caution.code: caution for caution in warnings}
+    crossing = sum(pair.probability >= CROSSES for pair in case.crossings.adjacent)
+    pairs = len(case.crossings.adjacent)
+    conditions = [
+        (
+            probability is not None and probability >= ESTABLISHED,
+            "no rival form was fitted, so nothing was compared" if probability is None else
+            f"forms with a critical disorder hold {probability:.2f} of the probability and {ESTABLISHED} are asked for",
+        ),
+        (crossing == pairs, f"{crossing} of {pairs} pairs of neighbouring sizes cross inside the common window"),
+        (case.headline is not None, "no form with a critical disorder was fitted"),
+    ]  # fmt: skip
+    blocking = (
+        "ONE_SIDED", "CROSSING_AT_REFERENCE", "DRIFT_UNBOUNDED", "POOR_FIT", "SIZE_UNSTABLE", "OUTSIDE_RANGE",
+        "PRIOR_LIMITED", "SAMPLER_NOT_CONVERGED",
+    )  # fmt: skip
+    conditions += [(False, f"{code}: {codes[code].message}") for code in blocking if code in codes]
+    return conditions
+
+
+def _transition_statement(case: Case) -> str:
+    fit = case.headline
+    assert fit is not None  # a condition of this verdict
+    wc = fit.parameters["W_c"]
+    return (
+        f"The data support a transition: curves separate on both sides of {case.curves.labels.disorder_symbol} between "
+        f"{wc.low95:.4g} and {wc.high95:.4g} (95 %) and forms with a critical disorder describe them best."
+    )
+
+
+def _drift_statement(case: Case, drift: float) -> str:
+    rate = case.drift.rate_per_site
+    speed = f" by {rate.median:.3g} per site (95 %: {rate.low95:.3g} to {rate.high95:.3g})" if rate else ""
+    return f"The crossover moves with size{speed}; drifting forms hold {drift:.3f} of the probability."
