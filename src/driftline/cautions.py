@@ -92,8 +92,8 @@ def no_crossing(case: Case) -> Caution | None:
     low, high = case.crossings.window
     return Caution(
         "NO_CROSSING",
-        f"no curves of neighbouring sizes cross between {low:g} and {high:g}; the likeliest pair, {best.sizes[0]:g} and "
-        f"{best.sizes[1]:g}, does so with probability {best.probability:.2g}",
+        f"no curves of neighbouring sizes cross between {low:g} and {high:g}; the likeliest pair, "
+        f"{best.sizes[0]:g} and {best.sizes[1]:g}, does so with probability {best.probability:.2g}",
         "widen the disorder range if the curves approach each other at its end, else treat the data as a crossover "
         "without a critical point",
         {"highest_probability": best.probability},
@@ -108,10 +108,10 @@ def crossing_at_reference(case: Case) -> Caution | None:
         return None
     return Caution(
         "CROSSING_AT_REFERENCE",
-        f"{_flat_side(test)} the curves of all sizes lie on a reference value within their errors, so the crossing there "
-        f"is not a crossing of resolved curves (size dependence {_sigmas(test)})",
-        "reduce the errors on that side, or add larger sizes, until the curves separate; coinciding curves do not show a "
-        "transition",
+        f"{_flat_side(test)} the curves of all sizes lie on a reference value within their errors, so the crossing "
+        f"there is not a crossing of resolved curves (size dependence {_sigmas(test)})",
+        "reduce the errors on that side, or add larger sizes, until the curves separate; coinciding curves do not "
+        "show a transition",
         {"z_below": test.z_below, "z_above": test.z_above},
     )
 
@@ -162,7 +162,9 @@ def drift_unresolved(case: Case) -> Caution | None:
     if p is None or not 1 - ESTABLISHED < p < ESTABLISHED:
         return None
     size = case.drift.deciding_size
-    where = f"the two best laws differ by three errors from size {size:.0f} on" if size else "no size tells them apart soon"
+    where = (
+        f"the two best laws differ by three errors from size {size:.0f} on" if size else "no size tells them apart soon"
+    )
     return Caution(
         "DRIFT_UNRESOLVED",
         f"the crossings alone give laws with a limit a probability of {p:.2f}",
@@ -180,8 +182,8 @@ def poor_fit(case: Case) -> Caution | None:
     size, disorder = fit.quality.max_residual_at
     return Caution(
         "POOR_FIT",
-        f"{fit.ansatz.name} misses the data: p = {fit.quality.p_value:.2g}, chi2/dof = {fit.quality.chi2_per_dof:.2f}, worst "
-        f"point {fit.quality.max_residual:+.1f} errors at size {size:g}, disorder {disorder:g}",
+        f"{fit.ansatz.name} misses the data: p = {fit.quality.p_value:.2g}, chi2/dof = {fit.quality.chi2_per_dof:.2f}, "
+        f"worst point {fit.quality.max_residual:+.1f} errors at size {size:g}, disorder {disorder:g}",
         "narrow the disorder window, drop the smallest size, or check the errors (they may be too small)",
         {"p_value": fit.quality.p_value, "chi2_per_dof": fit.quality.chi2_per_dof},
     )
@@ -245,8 +247,8 @@ def outside_range(case: Case) -> Caution | None:
     interval = fit.parameters["W_c"]
     return Caution(
         "OUTSIDE_RANGE",
-        f"W_c from {interval.low95:.4g} to {interval.high95:.4g} (95 %) reaches beyond the measured disorders {low:g} to "
-        f"{high:g} with probability {share:.2f}",
+        f"W_c from {interval.low95:.4g} to {interval.high95:.4g} (95 %) reaches beyond the measured disorders {low:g} "
+        f"to {high:g} with probability {share:.2f}",
         "measure beyond that end before quoting a critical disorder",
         {"probability_outside": share},
     )
@@ -279,8 +281,9 @@ def exponent_bound(case: Case) -> Caution | None:
         return None
     return Caution(
         "EXPONENT_BOUND",
-        f"nu = {fit.parameters['nu'].median:.2f} lies below the bound {limit:.3g} for {case.curves.labels.disorder_kind} disorder in "
-        f"d = {case.curves.labels.dimension:g} ({source}) with probability {share:.3f}",
+        f"nu = {fit.parameters['nu'].median:.2f} lies below the bound {limit:.3g} for "
+        f"{case.curves.labels.disorder_kind} disorder in d = {case.curves.labels.dimension:g} ({source}) "
+        f"with probability {share:.3f}",
         "read the exponent as pre-asymptotic: these sizes do not show the critical behaviour of the infinite system",
         {"nu": fit.parameters["nu"].median, "bound": limit, "probability": share},
     )
@@ -306,6 +309,7 @@ def sampler_not_converged(case: Case) -> Caution | None:
     return Caution(
         "SAMPLER_NOT_CONVERGED",
         f"the numbers of these fits are not reliable: {named}",
-        "run again with another seed; if it stays, the posterior is badly shaped: narrow the window or leave the ansatz out",
+        "run again with another seed; if it stays, the posterior is badly shaped: narrow the window or leave this "
+        "ansatz out",
         {fit.ansatz.name: fit.sampler.effective_samples for fit in bad},
     )

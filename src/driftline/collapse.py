@@ -1,7 +1,7 @@
 """Bayesian scaling collapse: one ansatz fitted to all curves, with its evidence, posterior and quality of fit.
 
-Two posteriors are used, for the reason given in the calibration of the prototype: at the roughness tau of highest evidence
-the spline is slightly too smooth and biases the exponent by a fraction of its error.  The evidence is that of the
+Two posteriors are used.  At the roughness tau of highest evidence the spline is slightly too smooth and biases the
+exponent by a fraction of its error (the coverage test measures it).  The evidence is that of the
 full model with tau sampled; the physical parameters are inferred with tau held at e times its posterior median
 (undersmoothing; Hall, Ann. Stat. 20, 675 (1992), gives the argument for confidence bands).
 """
@@ -33,7 +33,7 @@ EVIDENCE_DRAWS = 6000
 QUICK_DRAWS = 2000
 POSTERIOR_DRAWS = 4000
 CHECK_DRAWS = 100
-EFFECTIVE_LEAST = 400.0  # of importance sampling; intervals of 95 % then carry a Monte Carlo error below a tenth of their width
+EFFECTIVE_LEAST = 400.0  # of importance sampling: ends of 95 % intervals are then known to a tenth of their width
 
 
 @dataclass(frozen=True)
@@ -201,7 +201,8 @@ def fit_collapse(
     >>> rng = np.random.default_rng(1)
     >>> grid = np.linspace(1.0, 5.0, 13)
     >>> curves = Curves([
-    ...     Curve(L, grid, np.tanh((3 - grid) * L / 16) + rng.normal(0, 0.01, 13), np.full(13, 0.01)) for L in (8, 12, 16)
+    ...     Curve(L, grid, np.tanh((3 - grid) * L / 16) + rng.normal(0, 0.01, 13), np.full(13, 0.01))
+    ...     for L in (8, 12, 16)
     ... ])
     >>> fit_collapse(curves, "power-law", quick=True).parameters["W_c"].contains(3.0)
     True
@@ -213,7 +214,8 @@ def fit_collapse(
     tell(f"{form.name}: searching", 0.0)
     mixture, draws = _adapted(target, rng)
     tell(f"{form.name}: sampling", 0.1)
-    mixture, health = _sampled(target, mixture, draws, rng, quick, lambda f: tell(f"{form.name}: sampling", 0.1 + 0.7 * f))
+    part = _range(tell, f"{form.name}: sampling", 0.1, 0.8)
+    mixture, health = _sampled(target, mixture, draws, rng, quick, part)
     count = QUICK_DRAWS if quick else EVIDENCE_DRAWS
     draws = importance_sample(target, mixture, count, rng)
     tell(f"{form.name}: parameters", 0.85)
@@ -222,6 +224,10 @@ def fit_collapse(
     physical = importance_sample(held, _adapted(held, rng)[0], count, rng)
     tell(f"{form.name}: checking", 0.95)
     return _result(held, draws, physical, health, rng)
+
+
+def _range(tell: Progress, text: str, start: float, end: float) -> Callable[[float], None]:
+    return lambda fraction: tell(text, start + (end - start) * fraction)
 
 
 def _adapted(target: Posterior, rng: np.random.Generator) -> tuple[Mixture, WeightedDraws]:

@@ -22,12 +22,6 @@ if TYPE_CHECKING:
 MIN_DRAWS = 200  # the 95 % interval then still has five draws in each tail
 
 
-def _default_ansatze() -> tuple[str, ...]:
-    from driftline.collapse import DEFAULT_ANSATZE  # scipy comes with it, so only when an analysis is set up
-
-    return DEFAULT_ANSATZE
-
-
 @dataclass(frozen=True)
 class Settings:
     """What to compute, apart from the data.
@@ -63,7 +57,7 @@ class Settings:
     (14.0, 19.0)
     """
 
-    ansatze: tuple[str, ...] = field(default_factory=_default_ansatze)
+    ansatze: tuple[str, ...] = DEFAULT_ANSATZE
     window: tuple[float, float] | None = None
     smallest_size: float | None = None
     seed: int = 0

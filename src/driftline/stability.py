@@ -1,7 +1,8 @@
 """Does the answer survive when the smallest sizes or the outer disorders are left out?
 
 A fit to a part of the data differs from the fit to all of it by chance as well: if the form is right, the
-difference has variance sigma_part^2 - sigma_all^2 (Hausman, Econometrica 46, 1251 (1978)).  What exceeds that is systematic.
+difference has variance sigma_part^2 - sigma_all^2 (Hausman, Econometrica 46, 1251 (1978)).  What exceeds that is
+systematic.
 """
 
 from __future__ import annotations
@@ -90,7 +91,6 @@ def refit(curves: Curves, ansatz: str, cut: Cut, seed: int | np.random.Generator
 def systematic(full: CollapseFit, rows: Sequence[StabilityRow]) -> float | None:
     """Largest part of a shift that chance does not explain, in the unit of the disorder; None without refits."""
     interval = full.parameters["W_c"]
-    excess = [
-        max(row.shift(interval) ** 2 - row.scatter(interval) ** 2, 0.0) for row in rows if row.ansatz == full.ansatz.name
-    ]
+    own = [row for row in rows if row.ansatz == full.ansatz.name]
+    excess = [max(row.shift(interval) ** 2 - row.scatter(interval) ** 2, 0.0) for row in own]
     return float(np.sqrt(max(excess))) if excess else None

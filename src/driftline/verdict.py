@@ -1,7 +1,7 @@
 """The decision: is there evidence of a transition, of a drift, or of neither?
 
-`transition-supported` needs every one of the conditions in `transition_conditions`; a single failure makes it `undecided`, with
-the failure as its reason.  Evidence between scaling forms alone is never enough.
+`transition-supported` needs every one of the conditions in `transition_conditions`; a single failure makes it
+`undecided`, with the failure as its reason.  Evidence between scaling forms alone is never enough.
 """
 
 from __future__ import annotations

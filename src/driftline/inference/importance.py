@@ -45,7 +45,8 @@ class Mixture:
     def guarded(self) -> Mixture:
         """The same with a broad copy of every component for the tails."""
         weights = np.concatenate([(1 - BROAD_WEIGHT) * self.weights, BROAD_WEIGHT * self.weights])
-        return Mixture(weights, np.tile(self.centres, (2, 1)), np.concatenate([self.factors, BROAD_SCALE * self.factors]))
+        factors = np.concatenate([self.factors, BROAD_SCALE * self.factors])
+        return Mixture(weights, np.tile(self.centres, (2, 1)), factors)
 
     def draw(self, count: int, rng: np.random.Generator) -> FloatArray:
         """`count` draws, shape (count, d); components get their shares as evenly as whole numbers allow."""
@@ -53,7 +54,8 @@ class Mixture:
         component = np.searchsorted(places, (np.arange(count) + rng.random()) / count)
         normal = rng.standard_normal((count, self.centres.shape[1]))
         radius = np.sqrt(DEGREES / rng.chisquare(DEGREES, count))
-        return self.centres[component] + np.einsum("nij,nj->ni", self.factors[component], normal) * radius[:, None]
+        offsets = np.einsum("nij,nj->ni", self.factors[component], normal) * radius[:, None]
+        return np.asarray(self.centres[component] + offsets)
 
     def log_density(self, z: FloatArray) -> FloatArray:
         """Log density, shape (n,)."""
@@ -65,7 +67,7 @@ class Mixture:
             distance = np.sum(standard**2, axis=0)
             terms.append(np.log(weight) - log_det - 0.5 * (DEGREES + d) * np.log1p(distance / DEGREES))
         constant = gammaln((DEGREES + d) / 2) - gammaln(DEGREES / 2) - 0.5 * d * np.log(DEGREES * np.pi)
-        return logsumexp(np.array(terms), axis=0) + constant
+        return np.asarray(logsumexp(np.array(terms), axis=0) + constant)
 
 
 @dataclass(frozen=True, eq=False)
@@ -100,7 +102,7 @@ class WeightedDraws:
         """`count` equally weighted draws by systematic resampling, in random order."""
         reached = np.cumsum(self.weights)
         index = np.searchsorted(reached / reached[-1], (np.arange(count) + rng.random()) / count)
-        return self.places[rng.permutation(index)]
+        return np.asarray(self.places[rng.permutation(index)])
 
 
 def importance_sample(target: LogDensity, mixture: Mixture, count: int, rng: np.random.Generator) -> WeightedDraws:
@@ -129,7 +131,7 @@ def adapt(target: LogDensity, mixture: Mixture, rng: np.random.Generator) -> tup
 def _tempered(draws: WeightedDraws) -> FloatArray:
     """Weights to fit to, flattened while a few draws carry all of it, lest the mixture collapse on them."""
     for power in (1.0, 0.7, 0.5, 0.3, 0.2, 0.1):
-        weights = np.exp(power * (draws.log_weights - draws.log_weights.max()))
+        weights: FloatArray = np.exp(power * (draws.log_weights - draws.log_weights.max()))
         weights /= weights.sum()
         if 1 / np.sum(weights**2) > 20 * draws.places.shape[1]:
             break
@@ -171,4 +173,4 @@ def _memberships(mixture: Mixture, z: FloatArray) -> FloatArray:
         standard = np.linalg.solve(factor, (z - centre).T)
         columns.append(np.log(weight) - np.sum(np.log(np.diag(factor))) - 0.5 * np.sum(standard**2, axis=0))
     logs = np.array(columns).T
-    return np.exp(logs - logsumexp(logs, axis=1, keepdims=True))
+    return np.asarray(np.exp(logs - logsumexp(logs, axis=1, keepdims=True)))

@@ -35,7 +35,7 @@ class Mode:
     @property
     def log_mass(self) -> float:
         """Laplace's approximation of the log of the integral."""
-        sign, log_det = np.linalg.slogdet(2 * np.pi * self.covariance)
+        log_det = np.linalg.slogdet(2 * np.pi * self.covariance)[1]
         return float(self.log_density + 0.5 * log_det)
 
 
@@ -103,7 +103,8 @@ def _climb(log_density: LogDensity, places: FloatArray, values: FloatArray, widt
             break
     _, hessian = _derivatives(log_density, places, values, STENCIL * scale)
     return [
-        Mode(place, float(value), _covariance(matrix, width)) for place, value, matrix in zip(places, values, hessian, strict=True)
+        Mode(place, float(value), _covariance(matrix, width))
+        for place, value, matrix in zip(places, values, hessian, strict=True)
     ]
 
 
@@ -142,7 +143,8 @@ def _newton_steps(gradient: FloatArray, hessian: FloatArray, width: FloatArray) 
     eigenvalues, vectors = _positive(hessian, width)
     along = np.einsum("mji,mj->mi", vectors, gradient * width)
     damped = along[:, None] / (eigenvalues[:, None] * (1 + DAMPINGS[:, None]))
-    return np.einsum("mij,mkj->mki", vectors, damped) * width
+    steps: FloatArray = np.einsum("mij,mkj->mki", vectors, damped) * width
+    return steps
 
 
 def _covariance(hessian: FloatArray, width: FloatArray) -> FloatArray:

@@ -1,4 +1,4 @@
-"""A chain of the posterior by emcee's affine-invariant ensemble (Goodman, Weare 2010) with differential-evolution moves."""
+"""A chain of the posterior: emcee's ensemble (Goodman, Weare 2010) with differential-evolution moves."""
 
 from __future__ import annotations
 
@@ -12,7 +12,7 @@ from driftline.curves import FloatArray
 from driftline.inference.modes import LogDensity
 
 WALKERS = 64
-LENGTHS_WANTED = 50.0  # chain length in autocorrelation times (the rule of the emcee authors, Foreman-Mackey et al. 2013)
+LENGTHS_WANTED = 50.0  # chain length in autocorrelation times, the rule of Foreman-Mackey et al. (2013)
 EFFECTIVE_WANTED = 1000.0
 BLOCK = 250
 MOST_STEPS = 6000

@@ -82,7 +82,7 @@ class Ansatz:
         """Weight (L/L_min)^-omega of the irrelevant term, shape (batch, points); None without correction."""
         if not self.corrected:
             return None
-        return np.exp(-self.values(z)["omega"] * np.log(size / sizes[0]))
+        return np.asarray(np.exp(-self.values(z)["omega"] * np.log(size / sizes[0])))
 
 
 def _omega() -> Parameter:

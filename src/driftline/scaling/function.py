@@ -63,7 +63,7 @@ class SplineFunction:
         """N S^-1 N^T of the constant and linear part, with N made so that c = N (a, b) has a line from a-b to a+b."""
         line = np.column_stack([np.ones(self.count), np.linspace(-1, 1, self.count)])
         dual = line / np.sum(line**2, axis=0)  # columns are orthogonal
-        return dual @ dual.T / LINEAR_SD**2
+        return np.asarray(dual @ dual.T / LINEAR_SD**2)
 
     @cached_property
     def log_det(self) -> float:

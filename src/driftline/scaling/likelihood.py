@@ -11,13 +11,13 @@ the matrix-inversion lemma A.9, A.10):
     ln p(y | theta, tau, s) = -1/2 [ Q + ln det(M/s^2 + P) - ln det P + ln det(s^2 C) + n ln 2 pi ]
     M = Phi^T C^-1 Phi,     Q = (y^T C^-1 y - b^T (M + s^2 P)^-1 b) / s^2,     b = Phi^T C^-1 y
 
-One Cholesky factor of the matrix [[M + s^2 P, b], [b^T, y^T C^-1 y]] gives both the determinant and, as the square of its
-last diagonal element, s^2 Q: the Schur complement.
+One Cholesky factor of the matrix [[M + s^2 P, b], [b^T, y^T C^-1 y]] gives both the determinant and, as the square of
+its last diagonal element, s^2 Q: the Schur complement.
 """
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from functools import cached_property
 
 import numpy as np
@@ -62,7 +62,7 @@ class Posterior:
     curves: Curves
     ansatz: Ansatz
     log_tau: float | None = None
-    function: SplineFunction = SplineFunction()
+    function: SplineFunction = field(default_factory=SplineFunction)
 
     @cached_property
     def parameters(self) -> tuple[Parameter, ...]:
@@ -77,7 +77,8 @@ class Posterior:
 
     def log_prior(self, z: FloatArray) -> FloatArray:
         """Log prior density, shape (batch,), of coordinates `z`, shape (batch, dimension)."""
-        return np.sum([p.prior.log_density(z[:, i]) for i, p in enumerate(self.parameters)], axis=0)
+        densities = [p.prior.log_density(z[:, i]) for i, p in enumerate(self.parameters)]
+        return np.asarray(np.sum(densities, axis=0))
 
     def from_unit(self, u: FloatArray) -> FloatArray:
         """Coordinates at prior quantiles `u`, shape (batch, dimension), each in (0, 1)."""
@@ -159,7 +160,8 @@ class Posterior:
         size, disorder = self._points
         x = self.ansatz.scaled(z, size, disorder, self.curves.sizes)
         low = x.min(axis=1, keepdims=True)
-        return (x - low) / (x.max(axis=1, keepdims=True) - low)
+        u: FloatArray = (x - low) / (x.max(axis=1, keepdims=True) - low)
+        return u
 
     def design(self, z: FloatArray) -> FloatArray:
         """Phi with the data as last column, shape (batch, points, columns + 1), not yet whitened."""
@@ -196,7 +198,7 @@ class Posterior:
         """The matrix [[M + s^2 P, b], [b^T, y^T C^-1 y]], shape (batch, columns + 1, columns + 1)."""
         design = self.design(z)
         self._whiten(design)
-        matrix = np.matmul(design.swapaxes(1, 2), design)
+        matrix: FloatArray = np.matmul(design.swapaxes(1, 2), design)
         log_tau, log_s = self._nuisance(z)
         columns = matrix.shape[1] - 1
         matrix[:, :-1, :-1] += self._precision(log_tau, columns) * np.exp(2 * log_s)[:, None, None]
@@ -219,7 +221,7 @@ class Posterior:
         return np.where(np.isfinite(total), total, -np.inf)
 
     def coefficients(self, z: FloatArray) -> tuple[FloatArray, FloatArray]:
-        """Posterior mean and covariance of c at one coordinate vector `z`, shape (dimension,), in units of y's range."""
+        """Posterior mean and covariance of c, in units of the range of y, at one vector `z`, shape (dimension,)."""
         matrix = self.system(z[None])[0]
         s2 = float(np.exp(2 * z[-1]))
         factor = scipy.linalg.cho_factor(matrix[:-1, :-1], lower=True)
@@ -230,7 +232,7 @@ class Posterior:
 def _cholesky(matrix: FloatArray) -> FloatArray:
     """Batched Cholesky factor; NaN where a matrix is not positive definite to working precision."""
     try:
-        return np.linalg.cholesky(matrix)
+        return np.asarray(np.linalg.cholesky(matrix), dtype=np.float64)
     except np.linalg.LinAlgError:
         factors = np.full_like(matrix, np.nan)
         for i, single in enumerate(matrix):

@@ -78,7 +78,7 @@ class Normal(Prior):
     sd: float
 
     def log_density(self, z: FloatArray) -> FloatArray:
-        return -0.5 * (((z - self.mean) / self.sd) ** 2 + LOG_2PI) - np.log(self.sd)
+        return np.asarray(-0.5 * (((z - self.mean) / self.sd) ** 2 + LOG_2PI) - np.log(self.sd))
 
     def quantile(self, u: FloatArray) -> FloatArray:
         return self.mean + self.sd * np.asarray(ndtri(u))

@@ -85,7 +85,7 @@ class Drifting(Trajectory):
     def critical(self, size: FloatArray, sizes: FloatArray, values: Mapping[str, FloatArray]) -> FloatArray:
         first, last = self.shape(sizes[[0, -1]])
         middle = self.shape(np.array([(sizes[0] + sizes[-1]) / 2]))[0]
-        return values["W_c"] + values["D"] * (self.shape(size) - middle) / (last - first)
+        return np.asarray(values["W_c"] + values["D"] * (self.shape(size) - middle) / (last - first))
 
 
 def _identity(size: FloatArray) -> FloatArray:
