@@ -89,7 +89,8 @@ def inspect(path: Path) -> None:
 
     From which columns the numbers come, and what looks wrong; computes and writes nothing.
     """
-    from driftline.readers import inspect_text, read
+    from driftline.readers import read
+    from driftline.readers.inspection import inspect_text
 
     click.echo(inspect_text(read(path)), nl=False)
 

@@ -30,7 +30,7 @@ class Settings:
     ----------
     ansatze : tuple of str
         Scaling ansätze to compare, by name (see ``driftline ansatze``); by default those of
-        `driftline.collapse.DEFAULT_ANSATZE`.
+        `driftline.scaling.defaults`.
     window : (low, high) or None
         Disorder range to use, ends included, in the user's unit; None uses everything.
     smallest_size : float or None

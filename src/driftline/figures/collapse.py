@@ -1,0 +1,133 @@
+"""The collapsed points on the scaling function, and what is left over below."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+import numpy as np
+from matplotlib.axes import Axes
+from matplotlib.figure import Figure
+
+from driftline.curves import Labels
+from driftline.figures import style
+from driftline.figures.base import Drawing
+from driftline.report import numbers
+
+if TYPE_CHECKING:
+    from driftline.analysis import Analysis
+    from driftline.collapse import CollapseFit
+
+
+def draw_collapse(fit: CollapseFit, *, ax: tuple[Axes, Axes] | None = None) -> tuple[Axes, Axes]:
+    """Draw the collapse at the posterior median (above) and the standardised residuals (below).
+
+    Parameters
+    ----------
+    fit : CollapseFit
+    ax : pair of matplotlib axes, optional
+        Where to draw; by default a new figure of single-column width.
+
+    Returns
+    -------
+    pair of matplotlib axes
+        Collapse and residuals.
+    """
+    with style.house_style():
+        own = ax is None
+        if ax is None:
+            figure = style.new_figure(style.SINGLE, 3.7)
+            upper, lower = figure.subplots(2, 1, sharex=True, height_ratios=(3, 1))
+        else:
+            upper, lower = ax
+        _function(upper, fit)
+        _points(upper, lower, fit)
+        _limits(upper, lower, fit)
+        upper.set_ylabel(_ordinate(fit))
+        lower.set_xlabel(_abscissa(fit))
+        lower.set_ylabel("residual")
+        upper.tick_params(labelbottom=False)
+        if own:
+            style.finish(style.figure_of(upper))
+    return upper, lower
+
+
+class CollapseDrawing(Drawing):
+    """`figures/collapse`: the collapse that the headline rests on, or else the most probable one."""
+
+    name = "collapse"
+    width = style.SINGLE
+
+    def caption(self, analysis: Analysis) -> str:
+        """What is to be seen."""
+        fit = headline_fit(analysis)
+        values = ", ".join(
+            f"{name} = {numbers.short(fit.parameters[name])}" for name in ("W_c", "nu") if name in fit.parameters
+        )
+        return (
+            f"Collapse under {fit.ansatz.name} at the posterior median ({values}) with one standard error, and the "
+            "scaling function with its 68 % band; below, residuals in units of the error."
+        )
+
+    def draw(self, analysis: Analysis) -> Figure:
+        """The finished figure."""
+        figure = draw_collapse(headline_fit(analysis))[0].figure
+        assert isinstance(figure, Figure)
+        return figure
+
+
+def headline_fit(analysis: Analysis) -> CollapseFit:
+    """The most probable fit among those that the crossover rests on, or among all where it rests on none."""
+    basis = analysis.crossover.basis if analysis.crossover is not None else ()
+    fits = [fit for fit in analysis.comparison.fits if fit.ansatz.name in basis] or analysis.comparison.fits
+    return max(fits, key=lambda fit: fit.log_evidence)
+
+
+def _function(upper: Axes, fit: CollapseFit) -> None:
+    x, mean, sd = fit.function_x, fit.function_mean, fit.function_sd
+    upper.fill_between(x, mean - sd, mean + sd, color=style.FAINT, alpha=0.5, linewidth=0, zorder=1)
+    upper.plot(x, mean, color=style.SOFT, linewidth=0.9, zorder=2)
+
+
+def _points(upper: Axes, lower: Axes, fit: CollapseFit) -> None:
+    points = fit.points
+    sizes = np.unique(points.size)
+    marker = style.marker_size(points.error, *style.spread(points.y, points.error), height=2.1)
+    handles = []
+    for size, look in zip(sizes, style.size_looks(sizes), strict=True):
+        mine = points.size == size
+        kind = style.point_style(look, marker)
+        handles.append(upper.errorbar(points.x[mine], points.y[mine], points.error[mine], zorder=3, **kind))
+        lower.plot(
+            points.x[mine], points.residual[mine],
+            **{name: kind[name] for name in kind if name not in ("elinewidth", "capsize", "capthick", "markersize")},
+            markersize=2.8, zorder=3,
+        )  # fmt: skip
+    for level, width in ((0.0, 0.8), (-2.0, 0.5), (2.0, 0.5)):
+        lower.axhline(level, color=style.FAINT, linewidth=width, linestyle="-" if level == 0 else (0, (3, 2)), zorder=1)
+    style.legend_above(upper, style.Entries(handles, [f"{size:g}" for size in sizes], "$L$ ="))
+
+
+def _limits(upper: Axes, lower: Axes, fit: CollapseFit) -> None:
+    points = fit.points
+    style.pad_limits(upper.set_xlim, *style.spread(points.x), share=0.05)
+    style.pad_limits(upper.set_ylim, *style.spread(points.y, points.error), share=0.06)
+    reach = 1.15 * max(2.5, float(np.max(np.abs(points.residual))))
+    lower.set_ylim(-reach, reach)
+
+
+def _ordinate(fit: CollapseFit) -> str:
+    """The observable, marked as corrected where the correction term has been taken off the points."""
+    label = style.observable_label(fit.curves.labels)
+    return f"{label} (corrected)" if "omega" in fit.parameters else label
+
+
+def _abscissa(fit: CollapseFit) -> str:
+    return scaled_label(getattr(fit.ansatz.length, "axis", ""), fit.curves.labels)
+
+
+def scaled_label(axis: str, labels: Labels) -> str:
+    """Label of the scaled variable: the mathtext of its formula with the disorder's own symbol, or plain x."""
+    if not axis:
+        return "scaled distance $x$"
+    bare = style.math(labels.disorder_symbol).strip("$")
+    return style.math(axis.replace("W", bare))
