@@ -4,7 +4,7 @@ F(u) = sum_k c_k B_k(u) on u in [0, 1] with equally spaced knots.  The second di
 independent Gaussians of scale tau; the constant and linear part, which the differences do not see, are broad Gaussians.
 Both parts act on orthogonal spaces, so the prior precision is
 
-    P(tau) = D^T D / tau^2 + N S^-1 N^T,      ln det P = ln det(D D^T) + ln det(N^T N S^-1 N^T N) - 2 (K - 2) ln tau .
+    P(tau) = D^T D / tau^2 + R R^T,      ln det P = ln det(D D^T) + ln det of the other part - 2 (K - 2) ln tau
 """
 
 from __future__ import annotations
@@ -59,11 +59,26 @@ class SplineFunction:
         return differences.T @ differences
 
     @cached_property
-    def linear_precision(self) -> FloatArray:
-        """N S^-1 N^T of the constant and linear part, with N made so that c = N (a, b) has a line from a-b to a+b."""
+    def roughness_band(self) -> FloatArray:
+        """Lower band of `roughness`, shape (count, 4): element (k, d) belongs to functions k and k + d."""
+        band = np.zeros((self.count, 4))
+        for d in range(3):
+            band[: self.count - d, d] = np.diagonal(self.roughness, -d)
+        return band
+
+    @cached_property
+    def line(self) -> FloatArray:
+        """Root of the precision of the constant and linear part, shape (count, 2).
+
+        A line from a - b to a + b has coefficients N (a, b); a and b have standard deviation `LINEAR_SD`.
+        """
         line = np.column_stack([np.ones(self.count), np.linspace(-1, 1, self.count)])
-        dual = line / np.sum(line**2, axis=0)  # columns are orthogonal
-        return np.asarray(dual @ dual.T / LINEAR_SD**2)
+        return np.asarray(line / np.sum(line**2, axis=0) / LINEAR_SD)  # the columns are orthogonal
+
+    @cached_property
+    def linear_precision(self) -> FloatArray:
+        """Precision of the constant and linear part, shape (count, count)."""
+        return np.asarray(self.line @ self.line.T)
 
     @cached_property
     def log_det(self) -> float:

@@ -26,6 +26,7 @@ import scipy.linalg
 from driftline.curves import Curves, FloatArray
 from driftline.scaling.ansatz import Ansatz
 from driftline.scaling.function import SplineFunction
+from driftline.scaling.kernel import solve_batch
 from driftline.scaling.parameters import Parameter
 from driftline.scaling.priors import LOG_2PI, LogNormal
 
@@ -206,19 +207,26 @@ class Posterior:
 
     def log_likelihood(self, z: FloatArray) -> FloatArray:
         """Log marginal likelihood, shape (batch,), of coordinates `z`, shape (batch, dimension)."""
-        matrix = self.system(z)
         log_tau, log_s = self._nuisance(z)
-        diagonal = np.diagonal(_cholesky(matrix), axis1=1, axis2=2)
-        columns = diagonal.shape[1] - 1
-        with np.errstate(divide="ignore", invalid="ignore"):
-            quadratic = diagonal[:, -1] ** 2 * np.exp(-2 * log_s)
-            log_det = 2 * np.sum(np.log(diagonal[:, :-1]), axis=1) - 2 * columns * log_s
-            log_det_prior = self.function.log_det_precision(log_tau)
-            log_det_prior -= 2 * (columns - self.function.count) * np.log(self.correction_sd)
-            total = -0.5 * (
-                quadratic + log_det - log_det_prior + 2 * self.curves.points * log_s + self._constant
-            )  # fmt: skip
+        quadratic, log_det = self._dense(z) if self.curves.correlated else self._banded(z)
+        terms = CORRECTION_TERMS if self.ansatz.corrected else 0
+        log_det_prior = self.function.log_det_precision(log_tau) - 2 * terms * np.log(self.correction_sd)
+        scale = 2 * (self.curves.points - self.function.count - terms) * log_s
+        total = -0.5 * (quadratic * np.exp(-2 * log_s) + log_det - log_det_prior + scale + self._constant)
         return np.where(np.isfinite(total), total, -np.inf)
+
+    def _banded(self, z: FloatArray) -> tuple[FloatArray, FloatArray]:
+        """s^2 Q and ln det(M + s^2 P) for independent points."""
+        correction = self.ansatz.correction(z, self._points[0], self.curves.sizes)
+        return solve_batch(
+            self.positions(z), correction, None, self.standardised, self.spread / self.curves.flat()[3],
+            *self._nuisance(z), self.function.roughness_band, self.function.line, self.correction_sd,
+        )  # fmt: skip
+
+    def _dense(self, z: FloatArray) -> tuple[FloatArray, FloatArray]:
+        """The same by dense algebra, whatever the covariance of the points."""
+        diagonal = np.diagonal(_cholesky(self.system(z)), axis1=1, axis2=2)
+        return diagonal[:, -1] ** 2, 2 * np.sum(np.log(diagonal[:, :-1]), axis=1)
 
     def coefficients(self, z: FloatArray) -> tuple[FloatArray, FloatArray]:
         """Posterior mean and covariance of c, in units of the range of y, at one vector `z`, shape (dimension,)."""
