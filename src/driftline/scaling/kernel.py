@@ -7,9 +7,9 @@ The spline's normal matrix is banded (four functions overlap); everything dense 
     [ G^T  0    H    g  ]     G  correction terms, H their own block with its prior
     [ b^T  0    g^T  yy ]     b, g, yy  products with the data
 
-Eliminating A, then U, then H leaves s^2 Q in the last corner, and the pivots give the determinant; the elimination of the
-block -I turns A into A + U U^T (matrix-determinant lemma).  About ten times faster than batched dense algebra, which
-`likelihood.py` keeps for correlated points, and which the tests compare with.
+Eliminating A, then U, then H leaves s^2 Q in the last corner, and the pivots give the determinant; the elimination
+of the block -I turns A into A + U U^T (matrix-determinant lemma).  Several times faster than batched dense algebra
+(`tests/benchmarks` measures it), which `likelihood.py` keeps for correlated points and the tests compare with.
 """
 
 from __future__ import annotations
