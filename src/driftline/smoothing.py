@@ -15,7 +15,7 @@ from __future__ import annotations
 from abc import ABC, abstractmethod
 from collections.abc import Iterator
 from dataclasses import dataclass
-from functools import cached_property
+from functools import cached_property, lru_cache
 
 import numpy as np
 import numpy.typing as npt
@@ -24,8 +24,8 @@ from scipy.special import logsumexp
 
 from driftline.curves import Curve, Curves, FloatArray
 
-#: Grid points over the common disorder range; 120 steps resolve a curve far better than its error allows.
-POINTS = 121
+#: Grid points over the common disorder range: the shortest length is five of their steps.
+POINTS = 81
 #: Lengths of the Gaussian process, in half-widths of the measured range: from a few points to practically a cubic.
 LENGTHS = np.geomspace(0.12, 4.0, 10)
 #: Amplitudes in units of the spread of y over all points.
@@ -147,7 +147,7 @@ def smooth_curves(
     >>> curves = simulate([8, 12], np.linspace(2, 6, 15), PowerLawTruth(), 0.003, 1)
     >>> smooth = smooth_curves(curves, draws=50, rng=1)
     >>> smooth[0].draws.shape
-    (50, 121)
+    (50, 81)
     """
     generator = np.random.default_rng(rng)
     smoother = _Smoother.of(curves, points)
@@ -186,7 +186,7 @@ class _Smoother:
         grid = shared_grid(curves, points)
         every = np.unique(np.concatenate([grid, disorder]))
         unit = float(np.std(mean)) or float(np.max(np.abs(mean))) or 1.0  # identical means have no spread
-        return cls(curves, every, grid, float(np.mean(mean)), unit, tuple(_processes(every, grid)))
+        return cls(curves, every, grid, float(np.mean(mean)), unit, _processes(every.tobytes(), grid.tobytes()))
 
     def linear(self, disorder: FloatArray) -> tuple[FloatArray, FloatArray]:
         """Constant and linear part with their prior scale, and their derivatives by disorder; each (n, 2)."""
@@ -271,15 +271,19 @@ class _Smoother:
         return np.concatenate(drawn) * self.unit
 
 
-def _processes(points: FloatArray, grid: FloatArray) -> Iterator[Process]:
+@lru_cache(maxsize=2)  # the same disorders come back in every refit and calibration set; an entry takes some 20 MB
+def _processes(points_bytes: bytes, grid_bytes: bytes) -> tuple[Process, ...]:
+    points, grid = np.frombuffer(points_bytes), np.frombuffer(grid_bytes)
     on = np.searchsorted(points, grid)
+    processes = []
     for coordinate, stretch in _coordinates(points):
         for kernel in KERNELS:
             for length in LENGTHS:
-                r = (coordinate[:, None] - coordinate[None, :]) / length
-                value, first, second = kernel.terms(r)
+                value, first, second = kernel.terms((coordinate[:, None] - coordinate[None, :]) / length)
                 rate = stretch / length  # dr/dW
-                yield Process(value, (rate[:, None] * first)[on], (-np.outer(rate, rate) * second)[np.ix_(on, on)])
+                slope_value, slope_slope = rate[:, None] * first, -np.outer(rate, rate) * second
+                processes.append(Process(value, slope_value[on], slope_slope[np.ix_(on, on)]))
+    return tuple(processes)
 
 
 def _coordinates(points: FloatArray) -> Iterator[tuple[FloatArray, FloatArray]]:
