@@ -8,7 +8,6 @@ import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
-from driftline.curves import Labels
 from driftline.figures import style
 from driftline.figures.base import Drawing
 from driftline.report import numbers
@@ -64,8 +63,8 @@ class CollapseDrawing(Drawing):
             f"{name} = {numbers.short(fit.parameters[name])}" for name in ("W_c", "nu") if name in fit.parameters
         )
         return (
-            f"Collapse under {fit.ansatz.name} at the posterior median ({values}) with one standard error, and the "
-            "scaling function with its 68 % band; below, residuals in units of the error."
+            f"Collapse under {fit.ansatz.name} at the posterior median ({values}) with one standard "
+            "error, and the scaling function with its 68 % band; below, residuals in units of the error."
         )
 
     def draw(self, analysis: Analysis) -> Figure:
@@ -122,12 +121,6 @@ def _ordinate(fit: CollapseFit) -> str:
 
 
 def _abscissa(fit: CollapseFit) -> str:
-    return scaled_label(getattr(fit.ansatz.length, "axis", ""), fit.curves.labels)
-
-
-def scaled_label(axis: str, labels: Labels) -> str:
-    """Label of the scaled variable: the mathtext of its formula with the disorder's own symbol, or plain x."""
-    if not axis:
-        return "scaled distance $x$"
-    bare = style.math(labels.disorder_symbol).strip("$")
-    return style.math(axis.replace("W", bare))
+    """The scaled variable with the disorder's own symbol; a symbol that cannot be typeset leaves the letter W."""
+    symbol = style.math(fit.curves.labels.disorder_symbol)
+    return style.math(fit.ansatz.length.label.format(W=symbol[1:-1] if symbol.startswith("$") else "W"))

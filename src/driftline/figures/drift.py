@@ -16,7 +16,7 @@ from driftline.report.numbers import probability
 
 if TYPE_CHECKING:
     from driftline.analysis import Analysis
-    from driftline.drift import Drift, LawFit
+    from driftline.drift import Drift
 
 BEYOND = 1.6  # the panel against L goes on to this many times the largest size
 
@@ -53,7 +53,8 @@ def draw_drift(drift: Drift, labels: Labels | None = None, *, ax: tuple[Axes, Ax
         style.legend_above(left, style.Entries(handles[:half], texts[:half]))
         style.legend_above(right, style.Entries(handles[half:], texts[half:]))
         if own:
-            style.finish(style.figure_of(left))
+            wide = len(drift.sizes) > 0 and float(np.ptp(right.get_xlim())) > 4
+            style.finish(style.figure_of(left), whole=(right.xaxis,) if wide else ())
     return left, right
 
 
@@ -100,8 +101,8 @@ def _laws(left: Axes, right: Axes, drift: Drift) -> tuple[list[Any], list[str]]:
             (line,) = axes.plot(x, middle, color=colour, linestyle=dashes, zorder=3)
             axes.fill_between(x, low, high, color=colour, alpha=0.16, linewidth=0, zorder=1)
         handles.append(line)
-        texts.append(f"{law.name}, p = {probability(law.probability)}")
-        _limit(left, law, colour, _bounded_before(drift, number))
+        texts.append(f"P({law.name}) = {probability(law.probability)}")
+    _asymptotes(left, drift)
     return handles, texts
 
 
@@ -112,28 +113,25 @@ def _grid(axes: Axes, inverse: bool) -> tuple[FloatArray, FloatArray]:
     return x, 1 / x if inverse else x
 
 
-def _bounded_before(drift: Drift, number: int) -> int:
-    return sum(law.bounded for law in drift.laws[:number])
-
-
-def _limit(left: Axes, law: LawFit, colour: str, order: int) -> None:
-    """The limit of a bounded law, beside the axis 1/L = 0 and a little apart from the limits of the others."""
-    if law.limit is None:
-        return
-    low, high = left.get_xlim()
-    bars = [[law.limit.median - law.limit.low68], [law.limit.high68 - law.limit.median]]
-    place = low + (0.35 + 0.6 * order) * 0.025 * (high - low)
-    left.errorbar(
-        [place], [law.limit.median], np.abs(bars), marker="D", markersize=3.4, color=colour,
-        markerfacecolor="white", markeredgecolor=colour, elinewidth=0.9, capsize=1.6, zorder=4,
-    )  # fmt: skip
+def _asymptotes(left: Axes, drift: Drift) -> None:
+    """The limits of the bounded laws side by side in the strip left of 1/L = 0, each in the colour of its law."""
+    low, _ = left.get_xlim()
+    bounded = [(number, law.limit) for number, law in enumerate(drift.laws) if law.limit is not None]
+    left.axvline(0.0, color=style.FAINT, linewidth=0.6, zorder=1)
+    for order, (number, limit) in enumerate(bounded, start=1):
+        colour = style.PALETTE[number % len(style.PALETTE)]
+        bars = np.abs([[limit.median - limit.low68], [limit.high68 - limit.median]])
+        left.errorbar(
+            [low * order / (len(bounded) + 1)], [limit.median], bars, marker="D", markersize=3.0, color=colour,
+            markerfacecolor="white", markeredgecolor=colour, elinewidth=0.9, capsize=1.4, zorder=4,
+        )  # fmt: skip
 
 
 def _limits(left: Axes, right: Axes, drift: Drift) -> None:
     """Every point with its error bar, zero on the 1/L axis, and the limits of bounded laws as far as they are known."""
     sizes = drift.sizes if len(drift.sizes) else np.array([4.0, 16.0])
     largest = 1 / float(np.min(sizes))
-    left.set_xlim(-0.07 * largest, 1.08 * largest)
+    left.set_xlim(-0.1 * largest, 1.08 * largest)
     low, high = float(np.min(sizes)), float(np.max(sizes))
     right.set_xlim(low - 0.08 * (BEYOND * high - low), BEYOND * high)
     if not len(drift.sizes):
