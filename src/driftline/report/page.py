@@ -64,9 +64,9 @@ def page(analysis: Analysis, figures: Path) -> str:
 def _verdict(analysis: Analysis) -> str:
     verdict = analysis.verdict
     role = "verdict good" if verdict.code == "transition-supported" else "verdict"
-    reasons = "".join(f"<li>{escape(reason)}</li>" for reason in verdict.reasons)
+    reasons = "".join(f"<li>{escape(reason)}</li>" for reason in rows.reasons(analysis))
     warnings = "".join(
-        f"<li><code>{escape(each.code)}</code> {escape(each.message)} <em>{escape(each.action)}</em></li>"
+        f"<li><code>{escape(each.code)}</code> {escape(each.message)}. <em>What to do: {escape(each.action)}.</em></li>"
         for each in verdict.warnings
     )
     return (
@@ -74,8 +74,7 @@ def _verdict(analysis: Analysis) -> str:
         f"<p>Verdict: <code>{escape(verdict.code)}</code></p>"
         + (f"<ul>{reasons}</ul>" if reasons else "")
         + "</div>\n"
-        + (f"<h2>Warnings</h2>\n<ul>{warnings}</ul>\n" if warnings else "")
-        + f"<p>Caution: {escape(rows.CAUTION)}</p>"
+        + (f"<h2>Warnings</h2>\n<ul>{warnings}</ul>" if warnings else "")
     )
 
 

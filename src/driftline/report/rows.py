@@ -10,12 +10,6 @@ from driftline.report import numbers
 if TYPE_CHECKING:
     from driftline.analysis import Analysis
 
-CAUTION = (
-    "Finite sizes alone do not decide the thermodynamic limit: a crossover that looks settled here may still move, "
-    "or vanish, at sizes beyond these."
-)
-
-
 @dataclass(frozen=True)
 class Table:
     """A heading, column names, and rows of text."""
@@ -43,6 +37,14 @@ def symbol(text: str) -> str:
 def disorder(analysis: Analysis) -> str:
     """Symbol of the disorder as plain text."""
     return symbol(analysis.curves.labels.disorder_symbol)
+
+
+def reasons(analysis: Analysis) -> list[str]:
+    """The reasons of the verdict; those that repeat a warning are shortened to a pointer, for it is given below."""
+    codes = [caution.code for caution in analysis.verdict.warnings]
+    repeated = [code for code in codes if any(each.startswith(f"{code}:") for each in analysis.verdict.reasons)]
+    new = [each for each in analysis.verdict.reasons if not any(each.startswith(f"{code}:") for code in codes)]
+    return new + ([f"see below: {', '.join(repeated)}"] if repeated else [])
 
 
 def crossover(analysis: Analysis) -> Table:

@@ -35,7 +35,6 @@ def lines(analysis: Analysis) -> Iterator[tuple[str, str]]:
         yield from _wrapped(sentence, TEXT, "  ")
     yield from _warnings(analysis)
     yield TEXT, ""
-    yield from _wrapped(f"Caution: {rows.CAUTION}", TEXT)
     yield from _wrapped(f"Data: {rows.data(analysis)}", TEXT)
 
 
@@ -54,7 +53,7 @@ def _verdict(analysis: Analysis) -> Iterator[tuple[str, str]]:
     role = GOOD if verdict.code == "transition-supported" else BAD
     yield from _wrapped(verdict.statement, role)
     yield TEXT, f"Verdict: {verdict.code}"
-    for reason in verdict.reasons:
+    for reason in rows.reasons(analysis):
         yield from _wrapped(reason, TEXT, "    ", first="  - ")
 
 
