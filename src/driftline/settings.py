@@ -113,10 +113,7 @@ class Settings:
         try:
             return curves.select(smallest_size=self.smallest_size, window=self.window)
         except InputError as reason:
-            if self.window is None:
-                raise
-            low, high = self.window
-            raise ConfigurationError(f"window {low:g} to {high:g}: {reason}") from reason
+            raise ConfigurationError(str(reason)) from reason
 
 
 def suggestion(name: str, known: Iterable[str]) -> str:

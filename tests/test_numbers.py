@@ -1,0 +1,59 @@
+"""Numbers for people: as many digits as the error carries."""
+
+import math
+
+import pytest
+from hypothesis import given
+from hypothesis import strategies as st
+
+from driftline.inference.intervals import Interval
+from driftline.report import numbers
+
+
+@pytest.mark.parametrize(
+    ("value", "error", "text"),
+    [
+        (16.52834, 0.1234, "16.53(12)"),
+        (16.5, 0.0996, "16.50(10)"),  # the error rounds up to 0.10, and its two digits decide
+        (12.34, 1.4, "12.3(1.4)"),  # not 12.3(14), which could be read as 14
+        (250.0, 31.0, "250(31)"),
+        (123456.0, 1234.0, "123500(1200)"),
+        (3.2e-9, 4.1e-11, "3.200(41)e-09"),
+        (5.23e20, 1e18, "5.230(10)e+20"),
+        (-0.001, 0.1, "0.00(10)"),  # no minus zero
+        (0.0, 0.001, "0.0000(10)"),
+        (1.2, 3500.0, "0(3500)"),
+        (2.5, 0.0, "2.5"),
+        (math.nan, 1.0, "-"),
+        (1.0, math.inf, "1"),
+    ],
+)
+def test_value_with_error(value, error, text):
+    """The bracket holds two significant digits of the error in units of the last digits, worked out by hand."""
+    assert numbers.plus_minus(value, error) == text
+
+
+@given(
+    st.floats(-1e12, 1e12, allow_subnormal=False).filter(lambda x: x == 0 or abs(x) > 1e-12),
+    st.floats(1e-12, 1e12),
+)
+def test_rounding_is_far_below_the_error(value, error):
+    """What is printed differs from the value by at most 5 % of the error."""
+    # two significant digits: the last digit is at most a tenth of the error, so rounding moves it by at most a twentieth;
+    # beyond fifteen digits of the value the limit is the double itself
+    assert abs(float(numbers.rounded(value, error)) - value) <= 0.0501 * error + 1e-14 * abs(value)
+
+
+def test_brackets_and_gaps():
+    """Limits are rounded alike, and what is missing is a dash."""
+    interval = Interval(16.53, 16.41, 16.65, 16.31, 16.78)
+    assert numbers.bracket(interval) == "[16.31, 16.78]"
+    assert numbers.bracket(interval, 68) == "[16.41, 16.65]"
+    assert numbers.short(interval) == "16.53(12)"
+    assert (numbers.bracket(None), numbers.short(None), numbers.fixed(None, 2)) == ("-", "-", "-")
+    assert (numbers.significant(None), numbers.probability(None), numbers.probability(math.nan)) == ("-", "-", "-")
+
+
+def test_probabilities_are_never_rounded_to_certainty():
+    """Zero and one are printed only where they are exact."""
+    assert [numbers.probability(p) for p in (0.0, 1e-9, 0.994, 0.9999, 1.0)] == ["0.00", "<0.01", ">0.99", ">0.99", "1.00"]
