@@ -10,12 +10,13 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from driftline.collapse import CollapseFit, Comparison, fit_collapse, weigh
-from driftline.crossings import Crossings, Separation, find_crossings, separation_test
+from driftline.crossings import Crossings, find_crossings
 from driftline.curves import Curves
 from driftline.drift import Drift, fit_drift
 from driftline.inference.intervals import Interval
 from driftline.parallel import Task, run_tasks
 from driftline.scaling.ansatz import parse_ansatz
+from driftline.separation import Separation, separation_test
 from driftline.settings import Settings
 from driftline.stability import StabilityRow, cuts, refit, systematic
 from driftline.verdict import Case, Verdict, judge

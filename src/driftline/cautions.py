@@ -11,9 +11,10 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from driftline.collapse import CollapseFit, Comparison
-from driftline.crossings import Crossings, Separation
+from driftline.crossings import Crossings
 from driftline.curves import Curves
 from driftline.drift import Drift
+from driftline.separation import Separation
 from driftline.stability import StabilityRow
 
 #: A pair of sizes counts as crossing from this probability on.
