@@ -2,17 +2,20 @@
 
 from __future__ import annotations
 
-from types import SimpleNamespace
-
 import numpy as np
 
-from driftline.collapse import CollapsedPoints, CollapseFit, Comparison, FitQuality, SamplerHealth
+from driftline.analysis import Analysis, Crossover
+from driftline.cautions import Caution
+from driftline.collapse import CollapsedPoints, CollapseFit, Comparison, FitQuality, SamplerHealth, weigh
 from driftline.crossings import Crossing, Crossings
 from driftline.curves import Curve, Curves, Labels
+from driftline.drift import LAWS, Drift, LawFit
 from driftline.inference.intervals import Interval
 from driftline.scaling.ansatz import parse_ansatz
 from driftline.settings import Settings
 from driftline.smoothing import SmoothCurve
+from driftline.stability import StabilityRow
+from driftline.verdict import Verdict
 
 LABELS = Labels(
     observable="gap ratio",
@@ -96,34 +99,78 @@ def made_fit(curves, name="power-law:corrected", *, log_evidence=250.0):
     )
 
 
-def made_drift(crossings, *, note=""):
-    """Drift through the adjacent crossings: exact lines, with a band of 0.1; with a `note`, nothing fitted."""
+def made_drift(crossings, *, note="", laws=("constant", "inverse", "linear")):
+    """Drift through the adjacent crossings by least squares, with bands of 0.1; with a `note`, nothing is fitted."""
     pairs = [each for each in crossings.adjacent if each.disorder is not None]
     sizes = np.array([np.sqrt(each.sizes[0] * each.sizes[1]) for each in pairs])
     positions = np.array([each.disorder.median for each in pairs])
-    covariance = np.diag(np.full(len(pairs), 0.12**2))
-    laws = () if note else tuple(_law(name, sizes, positions) for name in ("constant", "inverse", "linear"))
-    return SimpleNamespace(source="crossings", sizes=sizes, positions=positions, covariance=covariance, laws=laws,
-        probability_bounded=None if note else 0.8, rate_per_site=None if note else Interval.of_normal(0.04, 0.01), deciding_size=None if note else 31.0, note=note,
-        to_dict=lambda: {"source": "crossings", "laws": [{"name": law.name, "bounded": law.bounded, "log_evidence": law.log_evidence, "probability": law.probability, "parameters": {}, "limit": law.limit and law.limit.to_dict()} for law in laws], "probability_bounded": 0.8, "rate_per_site": None, "deciding_size": None})
+    return Drift(
+        source="crossings",
+        sizes=sizes,
+        positions=positions,
+        covariance=np.diag(np.full(len(pairs), 0.12**2)),
+        laws=() if note else tuple(_law(LAWS[name], sizes, positions, 1 / len(laws)) for name in laws),
+        probability_bounded=None if note else 0.8,
+        rate_per_site=None if note else Interval.of_normal(0.04, 0.01),
+        deciding_size=None if note else 31.0,
+        note=note,
+    )
 
-def _law(name, sizes, positions):
-    power = {"constant": 0, "inverse": -1, "linear": 1}[name]
-    a = np.polyfit(sizes**power, positions, 1) if power else [0.0, positions.mean()]
-    def predict(L):
-        y = a[1] + a[0] * L**power
-        return y, y - 0.1, y + 0.1
-    return SimpleNamespace(name=name, bounded=power <= 0, formula="W* = a + b L^%d" % power, log_evidence=-3.0 + power, probability=0.4,
-        parameters={"a": Interval.of_normal(a[1], 0.1)}, limit=Interval.of_normal(a[1], 0.15) if power <= 0 else None, chi2_per_dof=1.1, predict=predict)
 
-def made_analysis(curves=None, *, code="transition-supported", names=("power-law", "power-law:corrected"), warnings=(), note="", crossover=True, settings=None, **crossing):
+def _law(law, sizes, positions, probability):
+    basis = law.basis(sizes, np.array(1.0))
+    slope, level = np.polyfit(basis, positions, 1) if law.has_shift else (0.0, positions.mean())
+    rng = np.random.default_rng(8)
+    draws = np.column_stack([rng.normal(level, 0.1, 400), np.full(400, slope), np.ones(400)])[:, : len(law.symbols)]
+    return LawFit(
+        name=law.name,
+        bounded=law.bounded,
+        formula=law.formula,
+        log_evidence=-3.0 - len(law.symbols),
+        probability=probability,
+        parameters={name: Interval.of_draws(draws[:, i]) for i, name in enumerate(law.symbols)},
+        limit=Interval.of_draws(draws[:, 0]) if law.bounded else None,
+        chi2_per_dof=1.1,
+        coefficient_draws=draws,
+        law=law,
+    )
+
+
+CAUTION = Caution(
+    "DRIFT_UNRESOLVED",
+    "the crossings alone give laws with a limit a probability of 0.80",
+    "the two best laws differ by three errors from size 31 on",
+    {"probability_bounded": 0.8},
+)
+
+
+def made_analysis(
+    curves=None, *, code="transition-supported", names=("power-law", "power-law:corrected"), warnings=(CAUTION,),
+    note="", crossover=True, settings=None, **crossing,
+):  # fmt: skip
+    """An analysis with W_c = 16.53(12) and nu = 1.57(5), under the verdict `code`."""
     curves = made_curves() if curves is None else curves
     crossings = made_crossings(curves, **crossing)
-    fits = tuple(made_fit(curves, name, log_evidence=250.0 + i) for i, name in enumerate(names))
-    weights = np.exp([fit.log_evidence - 250 for fit in fits]); weights /= weights.sum()
-    statement = "A transition is supported by these data." if code == "transition-supported" else OPENING + " The crossings drift."
-    return SimpleNamespace(curves=curves, settings=settings or Settings(seed=3), crossings=crossings, drift=made_drift(crossings, note=note), comparison=Comparison(fits, tuple(float(w) for w in weights)),
-        crossover=SimpleNamespace(disorder=Interval.of_normal(16.53, 0.12), systematic=0.05, nu=Interval.of_normal(1.57, 0.05), basis=("power-law:corrected",)) if crossover else None,
-        stability=(SimpleNamespace(ansatz="power-law:corrected", smallest_size=8.0, window=(13.0, 20.0), disorder=Interval.of_normal(16.5, 0.2), p_value=0.3),),
-        verdict=SimpleNamespace(code=code, statement=statement, reasons=("The crossings agree.",), probability_transition=0.9, probability_drift=0.1, warnings=tuple(warnings), false_alarm={}),
-        timing={"total": 1.0})
+    fits = tuple(made_fit(curves, name, log_evidence=250.0 + number) for number, name in enumerate(names))
+    supported = code == "transition-supported"
+    return Analysis(
+        curves=curves,
+        settings=settings or Settings(seed=3, ansatze=names),
+        crossings=crossings,
+        drift=made_drift(crossings, note=note),
+        separation=None,
+        comparison=Comparison(fits, weigh(fits)),
+        crossover=Crossover(Interval.of_normal(16.53, 0.12), 0.05, Interval.of_normal(1.57, 0.05), (names[-1],))
+        if crossover
+        else None,
+        stability=(StabilityRow(names[-1], 8.0, (13.0, 20.0), Interval.of_normal(16.5, 0.2), 0.3),),
+        verdict=Verdict(
+            code=code,
+            statement="The data support a transition." if supported else f"{OPENING} The crossings drift.",
+            reasons=() if supported else (f"{CAUTION.code}: {CAUTION.message}", "2 of 4 pairs cross"),
+            probability_transition=0.97 if supported else 0.4,
+            probability_drift=0.03 if supported else 0.6,
+            warnings=tuple(warnings),
+        ),
+        timing={"crossings": 0.5, "collapse": 4.0},
+    )

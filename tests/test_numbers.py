@@ -39,8 +39,8 @@ def test_value_with_error(value, error, text):
 )
 def test_rounding_is_far_below_the_error(value, error):
     """What is printed differs from the value by at most 5 % of the error."""
-    # two significant digits: the last digit is at most a tenth of the error, so rounding moves it by at most a twentieth;
-    # beyond fifteen digits of the value the limit is the double itself
+    # two significant digits: the last digit is at most a tenth of the error, so rounding moves it by a
+    # twentieth; beyond fifteen digits of the value the limit is the double itself
     assert abs(float(numbers.rounded(value, error)) - value) <= 0.0501 * error + 1e-14 * abs(value)
 
 
@@ -56,4 +56,10 @@ def test_brackets_and_gaps():
 
 def test_probabilities_are_never_rounded_to_certainty():
     """Zero and one are printed only where they are exact."""
-    assert [numbers.probability(p) for p in (0.0, 1e-9, 0.994, 0.9999, 1.0)] == ["0.00", "<0.01", ">0.99", ">0.99", "1.00"]
+    assert [numbers.probability(p) for p in (0.0, 1e-9, 0.994, 0.9999, 1.0)] == [
+        "0.00",
+        "<0.01",
+        ">0.99",
+        ">0.99",
+        "1.00",
+    ]

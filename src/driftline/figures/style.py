@@ -309,11 +309,11 @@ def shown_ticks(axis: Axis) -> list[Any]:
 
 def _power_into_label(axis: Axis) -> None:
     """Write a common power of ten beside the axis label: above the axes it would collide with the legend."""
-    formatter = axis.get_major_formatter()
-    assert isinstance(formatter, ScalarFormatter)
+    text = axis.get_major_formatter().get_offset()  # "1e-6", or nothing
     axis.get_offset_text().set_visible(False)
-    if formatter.orderOfMagnitude and axis.label.get_text():
-        axis.set_label_text(f"{axis.label.get_text()}  [$10^{{{formatter.orderOfMagnitude}}}$]")
+    if text and axis.label.get_text():
+        power = text.partition("e")[2].replace("\N{MINUS SIGN}", "-")
+        axis.set_label_text(f"{axis.label.get_text()}  [$10^{{{power}}}$]")
 
 
 def _shrink_label(ax: Axes, axis: Axis) -> None:

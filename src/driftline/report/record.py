@@ -182,7 +182,11 @@ def _verdict(analysis: Analysis) -> dict[str, Any]:
         "probability_transition": _plain(verdict.probability_transition),
         "probability_drift": _plain(verdict.probability_drift),
         "warnings": [
-            {"code": each.code, "message": f"{each.message}. What to do: {each.action}.", "numbers": _plain(each.numbers)}
+            {
+                "code": each.code,
+                "message": f"{each.message}. What to do: {each.action}.",
+                "numbers": _plain(each.numbers),
+            }
             for each in verdict.warnings
         ],
         "false_alarm": _plain(verdict.false_alarm),

@@ -10,6 +10,7 @@ from driftline.report import numbers
 if TYPE_CHECKING:
     from driftline.analysis import Analysis
 
+
 @dataclass(frozen=True)
 class Table:
     """A heading, column names, and rows of text."""
@@ -92,8 +93,8 @@ def collapse(analysis: Analysis) -> Table:
         )
         for index in order
     )
-    columns = ("ansatz", "ln Z - best", "prob.", f"{disorder(analysis)}_c", "nu", "chi2/dof", "p")
-    return Table("Collapse", columns, rows)
+    columns = ("ansatz", "ln Z", "prob.", f"{disorder(analysis)}_c", "nu", "chi2/dof", "p")
+    return Table("Collapse, ln Z relative to the best", columns, rows)
 
 
 def crossings(analysis: Analysis) -> Table:
@@ -135,7 +136,7 @@ def drift(analysis: Analysis) -> Table:
 def drift_sentences(analysis: Analysis) -> list[str]:
     """What the drift says beyond its table."""
     found = analysis.drift
-    sentences = [found.note] if found.note else []
+    sentences = [*found.excluded, *([found.note] if found.note else [])]
     if found.probability_bounded is not None:
         sentences.append(f"Bounded as L grows: probability {numbers.probability(found.probability_bounded)}.")
     if found.rate_per_site is not None:

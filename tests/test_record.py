@@ -1,0 +1,297 @@
+"""The machine-readable result and the files beside it."""
+
+import csv
+import io
+import json
+import math
+
+import h5py
+import numpy as np
+import pytest
+from analyses import OPENING, made_analysis, made_curves
+
+from driftline.errors import ConfigurationError
+from driftline.report.configuration import to_toml
+from driftline.report.folder import MARK, check_folder, default_folder, output_folder
+from driftline.report.page import page
+from driftline.report.record import record, tables, to_json
+from driftline.report.writers import WRITERS, write_report
+from driftline.settings import Settings
+
+NUMBER, TEXT, FLAG, MAYBE = "number", "text", "flag", "number or null"
+INTERVAL = dict.fromkeys(("median", "low68", "high68", "low95", "high95"), NUMBER)
+NO_INTERVAL = dict.fromkeys(INTERVAL, MAYBE)
+
+#: The contract, key by key in order; a list of one element means any number of such, `...` means keys are free.
+SCHEMA = {
+    "schema": TEXT,
+    "software": {"name": TEXT, "version": TEXT, "python": TEXT, "packages": {...: TEXT}},
+    "input": {
+        "path": TEXT, "sha256": TEXT, "sizes": [NUMBER], "points": NUMBER, "disorder_range": [NUMBER],
+        "observable": TEXT,
+    },
+    "seed": NUMBER,
+    "config": {
+        "ansatze": [TEXT], "window": None, "smallest_size": MAYBE, "quick": FLAG, "labels": {...: TEXT},
+        "draws": NUMBER,
+    },
+    "crossings": [
+        {
+            "sizes": [NUMBER], "probability": NUMBER, "separated": NUMBER, "disorder": INTERVAL, "value": INTERVAL,
+            "inverse_nu": INTERVAL,
+        }
+    ],
+    "drift": {
+        "source": TEXT,
+        "laws": [
+            {
+                "name": TEXT, "bounded": FLAG, "log_evidence": NUMBER, "probability": NUMBER,
+                "parameters": {...: INTERVAL}, "limit": [INTERVAL, None],
+            }
+        ],
+        "probability_bounded": MAYBE,
+        "rate_per_site": INTERVAL,
+        "deciding_size": MAYBE,
+    },
+    "collapse": [
+        {
+            "ansatz": TEXT, "hypothesis": TEXT, "log_evidence": NUMBER, "log_evidence_error": NUMBER,
+            "probability": NUMBER, "parameters": {...: INTERVAL},
+            "fit": {"chi2_per_dof": NUMBER, "p_value": NUMBER, "noise_scale": NUMBER, "max_residual": NUMBER},
+            "held_out": {"log_score": MAYBE, "chi2_per_point": MAYBE},
+            "sampler": {"effective_samples": NUMBER, "autocorrelation": MAYBE, "converged": FLAG},
+        }
+    ],
+    "crossover": {"disorder": {**INTERVAL, "systematic": MAYBE}, "nu": INTERVAL, "basis": [TEXT]},
+    "stability": [
+        {"ansatz": TEXT, "smallest_size": NUMBER, "window": [NUMBER], "disorder": INTERVAL, "p_value": NUMBER}
+    ],
+    "verdict": {
+        "code": TEXT, "statement": TEXT, "probability_transition": MAYBE, "probability_drift": MAYBE,
+        "warnings": [{"code": TEXT, "message": TEXT, "numbers": {...: NUMBER}}],
+        "false_alarm": {...: NUMBER},
+    },
+    "timing": {...: NUMBER},
+}  # fmt: skip
+
+
+def differences(value, rule, place="result"):
+    """Every place where `value` breaks `rule`, as sentences."""
+    if isinstance(rule, dict):
+        if not isinstance(value, dict):
+            return [f"{place} is no object"]
+        if ... in rule:
+            return [each for key in value for each in differences(value[key], rule[...], f"{place}.{key}")]
+        if list(value) != list(rule):
+            return [f"{place} has the keys {list(value)} and not {list(rule)}"]
+        return [each for key in rule for each in differences(value[key], rule[key], f"{place}.{key}")]
+    if isinstance(rule, list) and rule[-1] is None:
+        return [] if value is None else differences(value, rule[0], place)
+    if isinstance(rule, list):
+        if not isinstance(value, list):
+            return [f"{place} is no list"]
+        return [each for i, item in enumerate(value) for each in differences(item, rule[0], f"{place}[{i}]")]
+    if rule is None:
+        return [] if value is None else [f"{place} is not null"]
+    number = isinstance(value, int | float) and not isinstance(value, bool) and math.isfinite(value)
+    fits = {
+        NUMBER: number, MAYBE: number or value is None, TEXT: isinstance(value, str), FLAG: isinstance(value, bool),
+    }  # fmt: skip
+    return [] if fits[rule] else [f"{place} = {value!r} is no {rule}"]
+
+
+def test_result_keeps_the_contract():
+    """Every key of the contract is there, in order, with its type, and nothing else is."""
+    result = json.loads(to_json(made_analysis()))
+    assert differences(result, SCHEMA) == []
+    assert result["schema"] == "driftline-result/1"
+    assert list(result["software"]["packages"]) == ["numpy", "scipy", "lmfit", "emcee"]
+
+
+def test_the_contract_check_can_fail():
+    """Negative control: a missing key, a wrong order, a wrong type and a NaN are all noticed."""
+    result = record(made_analysis())
+    assert differences({**result, "seed": "3"}, SCHEMA) == ["result.seed = '3' is no number"]
+    assert len(differences({key: result[key] for key in reversed(result)}, SCHEMA)) == 1
+    assert len(differences({**result, "seed": math.nan}, SCHEMA)) == 1
+    del result["stability"][0]["p_value"]
+    assert len(differences(result, SCHEMA)) == 1
+
+
+def test_without_crossover_its_fields_are_null_and_not_missing():
+    """Nothing found is written as null under the same keys."""
+    result = record(made_analysis(crossover=False, probability=0.01, note="No pair of sizes crosses."))
+    assert result["crossover"] == {"disorder": {**dict.fromkeys(INTERVAL), "systematic": None},
+                                   "nu": dict.fromkeys(INTERVAL), "basis": []}  # fmt: skip
+    assert result["crossings"][0]["disorder"] is None
+    assert result["drift"]["laws"] == []
+    assert result["drift"]["probability_bounded"] is None
+
+
+def test_numbers_that_are_not_finite_become_null():
+    """JSON knows no NaN, so none is written."""
+    analysis = made_analysis()
+    analysis.timing["nothing"] = math.nan
+    analysis.timing["forever"] = math.inf
+    result = json.loads(to_json(analysis), parse_constant=pytest.fail)
+    assert result["timing"]["nothing"] is None
+    assert result["timing"]["forever"] is None
+
+
+def test_numbers_survive_the_file_exactly():
+    """Full precision is written: what is read back equals what was computed."""
+    analysis = made_analysis()
+    entry = json.loads(to_json(analysis))["collapse"][1]
+    assert entry["parameters"]["W_c"] == analysis.comparison.fits[1].parameters["W_c"].to_dict()
+    assert entry["probability"] == analysis.comparison.probabilities[1]
+
+
+def test_a_warning_carries_what_to_do():
+    """The message of a warning is finding and remedy in one."""
+    (warning,) = record(made_analysis())["verdict"]["warnings"]
+    assert warning["message"] == (
+        "the crossings alone give laws with a limit a probability of 0.80. What to do: the two best laws differ by "
+        "three errors from size 31 on."
+    )
+    assert warning["numbers"] == {"probability_bounded": 0.8}
+
+
+def test_tables_hold_the_same_numbers_as_the_result():
+    """Each table has a row for each entry, intervals and lists spread over columns."""
+    analysis = made_analysis()
+    made = tables(analysis)
+    assert list(made) == ["crossings", "drift", "ansatze", "stability", "collapsed-points"]
+    assert made["crossings"][0]["size_1"] == 6.0
+    assert made["crossings"][0]["disorder_median"] == analysis.crossings.pairs[0].disorder.median
+    assert made["ansatze"][1]["parameters_W_c_low95"] == analysis.comparison.fits[1].parameters["W_c"].low95
+    assert len(made["collapsed-points"]) == 2 * analysis.curves.points
+
+
+@pytest.fixture(scope="module")
+def folder(tmp_path_factory):
+    """One complete output folder."""
+    target = tmp_path_factory.mktemp("report") / "out"
+    write_report(made_analysis(), target)
+    return target
+
+
+def test_the_folder_is_complete(folder):
+    """Every file of the contract is there, none is empty, and no temporary one is left beside it."""
+    names = {str(path.relative_to(folder)) for path in folder.rglob("*") if path.is_file()}
+    figures = {f"figures/{name}.{kind}" for name in ("curves", "drift", "collapse") for kind in ("pdf", "png")}
+    sheets = {f"tables/{name}.csv" for name in ("crossings", "drift", "ansatze", "stability", "collapsed-points")}
+    assert names == figures | sheets | {
+        "result.json", "summary.txt", "report.html", "analysis.toml", "posterior.h5",
+    }  # fmt: skip
+    assert all((folder / name).stat().st_size > 0 for name in names)
+    assert [path.name for path in folder.parent.iterdir()] == ["out"]
+    assert len({writer.title for writer in WRITERS}) == len(WRITERS)
+
+
+def test_two_runs_write_equal_files(folder, tmp_path):
+    """Byte for byte, figures and posterior included: nothing carries a date or an address."""
+    write_report(made_analysis(), tmp_path / "again")
+    for path in folder.rglob("*"):
+        if path.is_file():
+            assert path.read_bytes() == (tmp_path / "again" / path.relative_to(folder)).read_bytes(), path.name
+
+
+def test_csv_files_are_rectangular_and_read_back(folder):
+    """Every row has as many cells as the header, and numbers are in full precision."""
+    for path in (folder / "tables").iterdir():
+        header, *body = list(csv.reader(io.StringIO(path.read_text(encoding="utf-8"))))
+        assert body, path.name
+        assert all(len(row) == len(header) for row in body)
+    text = (folder / "tables" / "crossings.csv").read_text(encoding="utf-8")
+    first = next(csv.DictReader(io.StringIO(text)))
+    assert float(first["disorder_median"]) == made_analysis().crossings.pairs[0].disorder.median
+
+
+def test_posterior_file(folder):
+    """Each ansatz has its draws with the names of the columns."""
+    analysis = made_analysis()
+    with h5py.File(folder / "posterior.h5") as file:
+        for fit in analysis.comparison.fits:
+            samples = file[fit.ansatz.name]["samples"]
+            np.testing.assert_array_equal(samples[...], fit.samples)
+            assert tuple(samples.attrs["names"]) == fit.names
+
+
+def test_configuration_file_reproduces_the_settings(folder):
+    """`analysis.toml` beside the result holds the resolved settings."""
+    analysis = made_analysis()
+    assert Settings.resolve(folder / "analysis.toml") == analysis.settings
+    assert (folder / "analysis.toml").read_text(encoding="utf-8").endswith(to_toml(analysis.settings))
+
+
+def test_page_is_self_contained_and_escaped(folder):
+    """The page loads nothing from elsewhere, and text of the data file cannot become markup."""
+    curves = made_curves().relabel(observable="<script>x</script>", disorder_unit="<b>")
+    text = page(made_analysis(curves, code="drifting"), folder / "figures")
+    assert "<script" not in text
+    assert "<b>" not in text
+    assert text.count("data:image/png;base64,") == 3
+    assert "http" not in text
+    assert text.index(OPENING) < text.index("<table")
+
+
+def write_half(folder, kind):
+    """Begin an output folder and fail."""
+    with output_folder(folder) as place:
+        (place / MARK).write_text("{}")
+        raise kind
+
+
+class TestFolder:
+    """The output folder: all or nothing, and nobody's files are deleted."""
+
+    def test_default_name(self, tmp_path):
+        """It is named after the data file and lies in the current directory."""
+        assert str(default_folder(tmp_path / "run.7.csv")) == "run.7-driftline"
+
+    def test_an_error_leaves_nothing(self, tmp_path):
+        """A failure halfway removes what was written, interruption included."""
+        for kind in (RuntimeError, KeyboardInterrupt):
+            with pytest.raises(kind):
+                write_half(tmp_path / "out", kind)
+            assert list(tmp_path.iterdir()) == []
+
+    def test_nothing_has_the_final_name_before_the_end(self, tmp_path):
+        """While writing goes on the folder of that name does not exist."""
+        with output_folder(tmp_path / "out") as place:
+            assert not (tmp_path / "out").exists()
+            (place / MARK).write_text("{}")
+        assert (tmp_path / "out" / MARK).read_text() == "{}"
+
+    def test_the_old_result_stays_until_the_new_one_is_complete(self, tmp_path):
+        """With force an earlier output is replaced at the end, and kept if the new one fails."""
+        old = tmp_path / "out"
+        old.mkdir()
+        (old / MARK).write_text("old")
+        with pytest.raises(RuntimeError), output_folder(old, force=True):
+            raise RuntimeError
+        assert (old / MARK).read_text() == "old"
+        with output_folder(old, force=True) as place:
+            (place / MARK).write_text("new")
+            assert (old / MARK).read_text() == "old"
+        assert (old / MARK).read_text() == "new"
+        assert [path.name for path in tmp_path.iterdir()] == ["out"]
+
+    def test_what_is_in_the_way_is_refused(self, tmp_path):
+        """A used folder without force, a stranger's folder even with it, a file, and a missing parent."""
+        used = tmp_path / "used"
+        used.mkdir()
+        check_folder(used)
+        (used / "thesis.tex").write_text("years of work")
+        with pytest.raises(ConfigurationError, match=r"used: is not empty; give --force to replace it or choose"):
+            check_folder(used)
+        with pytest.raises(ConfigurationError, match=r"used: holds no result\.json, so it is not an output folder"):
+            check_folder(used, force=True)
+        with pytest.raises(ConfigurationError, match=r"thesis\.tex: exists and is not a folder"):
+            check_folder(used / "thesis.tex", force=True)
+        with pytest.raises(ConfigurationError, match=r"none: is not a folder, so the output cannot be put there"):
+            check_folder(tmp_path / "none" / "out")
+        link = tmp_path / "link"
+        link.symlink_to(used)
+        with pytest.raises(ConfigurationError, match=r"link: exists and is not a folder"):
+            check_folder(link, force=True)
