@@ -25,7 +25,7 @@ def coordinates(target: Posterior, count: int, seed: int) -> np.ndarray:
 
 
 def dense_log_density(curves: Curves, ansatz: str, z: np.ndarray) -> float:
-    """ln N(y; 0, s^2 C + Phi S Phi^T) of the model as the design states it, with nothing taken from the program's algebra."""
+    """ln N(y; 0, s^2 C + Phi S Phi^T) of the model, with nothing taken from the program's algebra."""
     form = parse_ansatz(ansatz, curves)
     size, disorder, mean, _ = curves.flat()
     spread = np.ptp(mean)
@@ -65,7 +65,9 @@ def test_agrees_with_dense_gaussian(ansatz: str, correlation: float) -> None:
     for z in coordinates(target, 5, seed=2):
         # Rounding: y^T C^-1 y is about 1e5 here, and eps times that times the condition of the dense matrix
         # (about 1e4) bounds the error of the *reference* by 1e-7 of a quadratic form of order 1e4
-        assert target.log_likelihood(z[None])[0] == pytest.approx(dense_log_density(curves, ansatz, z), abs=1e-4, rel=1e-8)
+        assert target.log_likelihood(z[None])[0] == pytest.approx(
+            dense_log_density(curves, ansatz, z), abs=1e-4, rel=1e-8
+        )
 
 
 @pytest.mark.parametrize("ansatz", ["power-law", "power-law:linear-drift:corrected"])
@@ -139,7 +141,9 @@ def test_units_of_disorder_do_not_matter() -> None:
     one = Posterior(curves, parse_ansatz("power-law", curves))
     other = Posterior(scaled, parse_ansatz("power-law", scaled))
     z = coordinates(one, 10, seed=4)
-    np.testing.assert_allclose(other(z * [10, 1, 1, 1]), one(z) - np.log(10), rtol=1e-11)  # rounding of u: ~1e-13 times 1e2
+    np.testing.assert_allclose(
+        other(z * [10, 1, 1, 1]), one(z) - np.log(10), rtol=1e-11
+    )  # rounding of u: ~1e-13 times 1e2
 
 
 def test_basis_is_the_b_spline_of_scipy() -> None:

@@ -371,13 +371,7 @@ def _effective_dof(held: Posterior, z: FloatArray) -> float:
 
 def _predictive_p(held: Posterior, places: FloatArray, rng: np.random.Generator) -> float:
     """Mean over posterior draws of P(chi2_n > chi2 of the data at that draw)."""
-    total = 0.0
-    for z in places:
-        mean, covariance = held.coefficients(z)
-        draw = rng.multivariate_normal(mean, covariance, method="cholesky")
-        fitted = held.centre + held.spread * (held.design(z[None])[0, :, :-1] @ draw)
-        total += float(chi2.sf(_chi2(held, fitted), held.curves.points))
-    return total / len(places)
+    return float(np.mean(chi2.sf(held.chi2_of_draws(places, rng), held.curves.points)))
 
 
 def compare_ansatze(

@@ -236,6 +236,21 @@ class Posterior:
         mean = scipy.linalg.cho_solve(factor, matrix[:-1, -1])
         return mean, s2 * scipy.linalg.cho_solve(factor, np.eye(len(mean)))
 
+    def chi2_of_draws(self, z: FloatArray, rng: np.random.Generator) -> FloatArray:
+        """Chi-squared of the data, with the errors as given, at one draw of c for each row of `z`; shape (batch,)."""
+        design = self.design(z)
+        self._whiten(design)
+        phi, data = design[..., :-1], design[..., -1]
+        log_tau, log_s = self._nuisance(z)
+        s = np.exp(log_s)[:, None]
+        matrix = np.matmul(phi.swapaxes(1, 2), phi) + self._precision(log_tau, phi.shape[2]) * s[..., None] ** 2
+        mean = np.linalg.solve(matrix, np.einsum("bpc,bp->bc", phi, data)[..., None])[..., 0]
+        normal = rng.standard_normal(mean.shape)
+        upper = np.linalg.cholesky(matrix).swapaxes(1, 2)
+        draw = mean + s * np.linalg.solve(upper, normal[..., None])[..., 0]
+        residual = data - np.einsum("bpc,bc->bp", phi, draw)
+        return np.asarray(np.sum(residual**2, axis=1))
+
 
 def _cholesky(matrix: FloatArray) -> FloatArray:
     """Batched Cholesky factor; NaN where a matrix is not positive definite to working precision."""
