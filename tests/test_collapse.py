@@ -186,7 +186,7 @@ def scatter_of_critical_disorder(keep_covariance: bool) -> float:
 
 
 def test_covariance_of_points_is_used() -> None:
-    """With their covariance, correlated points give honest errors of W_c; without it, errors more than twice too small."""
+    """With their covariance, correlated points give honest errors of W_c; without it, errors far too small."""
     # root mean square of 25 standard normals: chi-squared with 25 degrees of freedom, 99.9 % below sqrt(52.6/25) = 1.45
     assert scatter_of_critical_disorder(keep_covariance=True) < 1.45
     assert scatter_of_critical_disorder(keep_covariance=False) > 1.8  # negative control; about 2.7 was found

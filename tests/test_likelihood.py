@@ -65,9 +65,8 @@ def test_agrees_with_dense_gaussian(ansatz: str, correlation: float) -> None:
     for z in coordinates(target, 5, seed=2):
         # Rounding: y^T C^-1 y is about 1e5 here, and eps times that times the condition of the dense matrix
         # (about 1e4) bounds the error of the *reference* by 1e-7 of a quadratic form of order 1e4
-        assert target.log_likelihood(z[None])[0] == pytest.approx(
-            dense_log_density(curves, ansatz, z), abs=1e-4, rel=1e-8
-        )
+        expected = dense_log_density(curves, ansatz, z)
+        assert target.log_likelihood(z[None])[0] == pytest.approx(expected, abs=1e-4, rel=1e-8)
 
 
 @pytest.mark.parametrize("ansatz", ["power-law", "power-law:linear-drift:corrected"])
@@ -77,7 +76,7 @@ def test_compiled_loop_agrees_with_dense_algebra(ansatz: str) -> None:
     target = Posterior(curves, parse_ansatz(ansatz, curves))
     z = coordinates(target, 50, seed=3)
     banded, dense = target._banded(z), target._dense(z)
-    # the Schur complement cancels y^T C^-1 y ~ 1e5 down to Q ~ 1e2 or more: eps * 1e5 / 1e2 = 2e-13, times ~100 roundings
+    # cancelling y^T C^-1 y ~ 1e5 down to Q ~ 1e2 or more costs eps * 1e5 / 1e2 = 2e-13, times ~100 roundings
     np.testing.assert_allclose(banded[0], dense[0], rtol=1e-9)
     np.testing.assert_allclose(banded[1], dense[1], rtol=1e-12)
 
