@@ -100,11 +100,10 @@ class Layout(ABC):
 
     def read(self, path: Path, place: str, labels: Mapping[str, Any]) -> Curves:
         """The curves at `path`, with `labels` put over those of the file and the origin recorded."""
-        digest = self.fingerprint(path)
-        found = self.contents(path, place)
+        found = self.contents(path, place)  # before the hash, which would take long on a file too large to be read
         origin = {
             "path": place,
-            "sha256": digest,
+            "sha256": self.fingerprint(path),
             "layout": self.name,
             "columns": dict(found.columns),
             "rows": found.rows,
