@@ -2,13 +2,14 @@
 
 Which crossing is taken where a draw has several. Noise makes curves cross many times wherever they coincide, so the
 first root, or the steepest, would say nothing. With Z the difference (larger size minus smaller) in units of its
-posterior standard deviation and s = +1 or -1 the expected direction, each draw's crossing is the root of s Z from
-plus to minus that maximises
+posterior standard deviation, w = |mean of Z| and s = +1 or -1 the expected direction, each draw's crossing is the
+root of s Z from plus to minus that maximises
 
-    G(c) = integral from the window's lower end to c of s Z dW  -  integral from c to its upper end of s Z dW,
+    G(c) = integral from the window's lower end to c of s w Z dW  -  integral from c to its upper end of s w Z dW,
 
 the place that best splits the window into a side where the larger size lies above and one where it lies below (the
-change-point estimate of a step; maxima of G are such roots, since dG/dc = 2 s Z(c)). The direction is one for all
+change-point estimate of a step; maxima of G are such roots, since dG/dc = 2 s w Z(c)). The weight w keeps a plateau,
+where Z is noise about zero, from outvoting the places where the curves differ. The direction is one for all
 draws and pairs: in a scaling y = F((W - W_c) L^(1/nu)) the curve of the larger size is the steeper one at the
 crossing, so s follows from whether the curves fall or rise; only if the other direction is resolved on both sides,
 and better, do the data overrule this.
@@ -215,7 +216,8 @@ def _best_root(grid: FloatArray, z: FloatArray) -> tuple[npt.NDArray[np.intp], n
 
     The integrals are trapezia; the split inside a step is good to its width, which only matters between candidates.
     """
-    area = np.cumsum((z[:, 1:] + z[:, :-1]) / 2 * np.diff(grid), axis=1)
+    weighted = z * np.abs(z.mean(axis=0))
+    area = np.cumsum((weighted[:, 1:] + weighted[:, :-1]) / 2 * np.diff(grid), axis=1)
     gain = 2 * area - area[:, -1:]
     candidate = (z[:, :-1] > 0) & (z[:, 1:] <= 0)
     gain[~candidate] = -np.inf
