@@ -71,6 +71,9 @@ NO_ERROR = "add 'error', the standard error of the mean ({} divided by the squar
         ("size disorder  mean error", "the columns are separated by blanks; separate them by commas"),
         ("8,1,0.5,0.01", "the first row holds numbers, so the columns have no names; put the line "
          "size,disorder,mean,error above it"),
+        ("W,8,10,12", "columns 'size' and 'disorder' and 'mean' and 'error' are missing; the columns are W, 8, 10, 12; "
+         "rename 'W' to 'disorder' if that is what it holds; "
+         + NO_ERROR.format("the standard deviation over disorder realisations")),
         ('size,"disorder,mean,error', "the quotation marks do not match; remove them"),
         ("a," * 15 + "b", "column 'a' occurs twice; give each column its own name"),
         ("x" * 100_001, "the line is longer than 100000 characters; this is not a summary table"),
@@ -449,13 +452,13 @@ def test_damaged_hdf5_reads_or_is_refused(tmp_path):
     path = tmp_path / "run.h5"
     write_hdf5(read(tmp_path / "run.csv"), path)
     whole, rng, refused = path.read_bytes(), np.random.default_rng(20), 0
-    for _ in range(150):
+    for _ in range(80):
         spoiled = bytearray(whole)
         start = rng.integers(8, len(whole) - 8)
         spoiled[start : start + 8] = rng.bytes(8)
         path.write_bytes(spoiled)
         refused += not reads(path)
-    assert refused > 10  # the damage was felt at all: the headers are well over a tenth of the file
+    assert refused > 5  # the damage was felt at all: the headers are well over a tenth of the file
 
 
 def reads(path: Path) -> bool:
@@ -484,7 +487,7 @@ NEARLY = st.tuples(
     st.lists(st.one_of(st.sampled_from((EIGHT + TWELVE).splitlines()), ROW), max_size=12).map("\n".join),
 ).map("".join)
 QUICK = settings(
-    max_examples=150, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture], derandomize=True
+    max_examples=100, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture], derandomize=True
 )
 
 

@@ -99,7 +99,7 @@ class _Table:
                     comment = (count, text.lstrip("# \t"))
             elif text:
                 cells, last = _split(line, f"{place}, line {count}"), count
-                if not table.columns and not _all_numbers(cells):
+                if not table.columns and not _is_number(cells[0]):
                     table._take_header(cells, count)
                     continue
                 if not table.columns:
@@ -205,12 +205,11 @@ def _split(line: str, where: str) -> list[str]:
         raise InputError("the quotation marks do not match; remove them", where=where) from reason
 
 
-def _all_numbers(cells: Sequence[str]) -> bool:
-    for cell in cells:
-        try:
-            number(cell, "")
-        except InputError:
-            return False
+def _is_number(cell: str) -> bool:
+    try:
+        number(cell, "")
+    except InputError:
+        return False
     return True
 
 
