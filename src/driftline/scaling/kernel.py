@@ -54,7 +54,7 @@ def solve_batch(
     )  # fmt: skip
 
 
-@njit(cache=True, nogil=True, error_model="numpy")  # type: ignore[untyped-decorator]
+@njit(cache=True, nogil=True, error_model="numpy")
 def _solve_batch(u, correction, amplitude, y, root, log_tau, log_s, roughness, line, correction_sd):  # type: ignore[no-untyped-def]
     batch, points = u.shape
     count = line.shape[0]

@@ -28,15 +28,16 @@ from driftline.scaling.ansatz import Ansatz
 from driftline.scaling.function import SplineFunction
 from driftline.scaling.kernel import solve_batch
 from driftline.scaling.parameters import Parameter
-from driftline.scaling.priors import LOG_2PI, LogNormal
+from driftline.scaling.priors import LOG_2PI, LogNormal, LogUniform
 
 #: Standard deviation of the constant and linear part of G in units of the range of y at the smallest size.
 CORRECTION_SD = 0.3
 CORRECTION_TERMS = 2
 
 #: tau is the scale of second differences of the coefficients in units of the range of y.  A logistic step over a third
-#: of the axis has 0.05; three standard deviations reach from a straight line (0.0005) to a step between two knots (5).
-TAU_PRIOR = LogNormal.around(0.05, 1.5)
+#: of the axis has 0.05; the ends are a straight line for all that data can tell and a step between two knots.  Ends are
+#: needed: below the lower one the normal matrix is too badly conditioned for double precision.
+TAU_PRIOR = LogUniform.between(5e-4, 5.0)
 NOISE_PRIOR = LogNormal.around(1.0, 0.3)
 NUISANCE = (
     Parameter("tau", r"\tau", TAU_PRIOR, "roughness of the scaling function"),
@@ -213,7 +214,8 @@ class Posterior:
         log_det_prior = self.function.log_det_precision(log_tau) - 2 * terms * np.log(self.correction_sd)
         scale = 2 * (self.curves.points - self.function.count - terms) * log_s
         total = -0.5 * (quadratic * np.exp(-2 * log_s) + log_det - log_det_prior + scale + self._constant)
-        return np.where(np.isfinite(total), total, -np.inf)
+        sound = np.isfinite(total) & (quadratic > 0)  # else rounding has eaten the number
+        return np.where(sound, total, -np.inf)
 
     def _banded(self, z: FloatArray) -> tuple[FloatArray, FloatArray]:
         """s^2 Q and ln det(M + s^2 P) for independent points."""
