@@ -4,6 +4,7 @@ import csv
 import io
 import json
 import math
+import re
 
 import h5py
 import numpy as np
@@ -231,7 +232,7 @@ def test_page_is_self_contained_and_escaped(folder):
     assert "<script" not in text
     assert "<b>" not in text
     assert text.count("data:image/png;base64,") == 3
-    assert "http" not in text
+    assert "http" not in re.sub(r"base64,[\w+/=]*", "", text)
     assert text.index(OPENING) < text.index("<table")
 
 

@@ -17,6 +17,9 @@ if TYPE_CHECKING:
     from driftline.collapse import CollapseFit
 
 
+LONGEST_SYMBOL = 30  # characters of mathtext
+
+
 def draw_collapse(fit: CollapseFit, *, ax: tuple[Axes, Axes] | None = None) -> tuple[Axes, Axes]:
     """Draw the collapse at the posterior median (above) and the standardised residuals (below).
 
@@ -121,6 +124,8 @@ def _ordinate(fit: CollapseFit) -> str:
 
 
 def _abscissa(fit: CollapseFit) -> str:
-    """The scaled variable with the disorder's own symbol; a symbol that cannot be typeset leaves the letter W."""
+    """The scaled variable in the disorder's own symbol, where that can be typeset and is short enough."""
     symbol = style.math(fit.curves.labels.disorder_symbol)
-    return style.math(fit.ansatz.length.label.format(W=symbol[1:-1] if symbol.startswith("$") else "W"))
+    if not symbol.startswith("$") or len(symbol) > LONGEST_SYMBOL:
+        return "scaled disorder $x$"
+    return style.math(fit.ansatz.length.label.format(W=f"{{{symbol[1:-1]}}}"))  # braces: the symbol may have an index

@@ -22,7 +22,7 @@ from matplotlib.figure import Figure
 from matplotlib.layout_engine import ConstrainedLayoutEngine
 from matplotlib.legend import Legend
 from matplotlib.mathtext import MathTextParser
-from matplotlib.ticker import MaxNLocator, ScalarFormatter
+from matplotlib.ticker import AutoLocator, MaxNLocator, ScalarFormatter
 from matplotlib.transforms import ScaledTranslation
 
 from driftline.curves import FloatArray, Labels
@@ -30,6 +30,7 @@ from driftline.curves import FloatArray, Labels
 SINGLE, DOUBLE = 3.4, 7.0  # inches: one and two columns of the usual journals
 DPI = 300
 ROOM = 0.97  # share of an axis that a legend or label may take: the last layout moves the edges by a little
+BREAK_FROM = 1.2  # a label so many times too long is broken, before its letters get smaller than 7 points
 MARKERS = "os^DvPX<>ph*"
 INK, SOFT, FAINT = "#1a1a1a", "#5a5a5a", "#9a9a9a"
 #: Okabe and Ito's palette (common practice for colour-blind readers), for things that have no order.
@@ -268,7 +269,7 @@ def finish(figure: Figure, whole: Sequence[Axis] = ()) -> None:
     figure.draw_without_rendering()
     for ax in figure.axes:
         for axis in (ax.xaxis, ax.yaxis):
-            if isinstance(axis.get_major_formatter(), ScalarFormatter):
+            if isinstance(axis.get_major_locator(), AutoLocator):  # not where ticks were chosen, or taken off
                 axis.set_major_formatter(_formatter())
                 _thin_ticks(axis, whole=axis in whole)
                 _power_into_label(axis)
@@ -280,7 +281,7 @@ def finish(figure: Figure, whole: Sequence[Axis] = ()) -> None:
 
 def _formatter() -> ScalarFormatter:
     formatter = ScalarFormatter(useOffset=False, useMathText=False)  # plain text needs no parsing, a third of the time
-    formatter.set_powerlimits((-3, 4))
+    formatter.set_powerlimits((-3, 6))
     return formatter
 
 
@@ -317,8 +318,17 @@ def _power_into_label(axis: Axis) -> None:
 
 
 def _shrink_label(ax: Axes, axis: Axis) -> None:
-    """Make a long label small enough to be no longer than its axis."""
+    """Make a long label no longer than its axis: the unit goes to a second line, then the letters get smaller."""
+    if _excess(ax, axis) > BREAK_FROM:
+        head, bracket, unit = axis.label.get_text().rpartition(" (")
+        axis.set_label_text(f"{head}\n({unit}" if bracket else unit)
+    excess = _excess(ax, axis)
+    if excess > 1:
+        axis.label.set_fontsize(float(axis.label.get_fontsize()) / excess)
+
+
+def _excess(ax: Axes, axis: Axis) -> float:
+    """Length of the label over the room for it."""
     box, room = axis.label.get_window_extent(), ax.get_window_extent()
     length, space = (box.width, room.width) if isinstance(axis, XAxis) else (box.height, room.height)
-    if length > ROOM * space:
-        axis.label.set_fontsize(float(axis.label.get_fontsize()) * ROOM * space / length)
+    return float(length / (ROOM * space))

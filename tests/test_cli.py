@@ -1,0 +1,319 @@
+"""The command line: exit codes, messages, and what is and is not written."""
+
+import json
+import os
+import signal
+import subprocess
+import sys
+import time
+
+import numpy as np
+import pytest
+from analyses import OPENING, made_analysis, made_curves
+
+import driftline
+from driftline import analysis as analysis_module
+from driftline.cli import main
+from driftline.report import writers
+from driftline.report.summary import summary
+from driftline.simulate import PowerLawTruth, simulate
+
+HEADER = "size,disorder,mean,error\n"
+
+
+@pytest.fixture
+def data(tmp_path, monkeypatch):
+    """A working folder with a data file in it."""
+    monkeypatch.chdir(tmp_path)
+    path = tmp_path / "made.csv"
+    size, disorder, mean, error = made_curves().flat()
+    rows = zip(size.tolist(), disorder.tolist(), mean.tolist(), error.tolist(), strict=True)
+    path.write_text(HEADER + "".join(",".join(map(repr, row)) + "\n" for row in rows))
+    return path
+
+
+@pytest.fixture
+def prepared(monkeypatch):
+    """The estimators replaced by a hand-built result, so that only the command line itself is at work."""
+    calls = []
+
+    def analyse(curves, *, settings, progress):
+        calls.append(settings)
+        return made_analysis(code="drifting", settings=settings)
+
+    monkeypatch.setattr(analysis_module, "analyse", analyse)
+    # the figures take seconds and have their own tests; the run of the whole job below draws them
+    monkeypatch.setattr(writers, "WRITERS", tuple(each for each in writers.WRITERS if each.title != "figures"))
+    return calls
+
+
+def run(*arguments, **options):
+    """The installed command in a process of its own."""
+    command = [
+        sys.executable,
+        "-c",
+        "import sys; from driftline.cli import main; sys.exit(main())",
+        *map(str, arguments),
+    ]
+    return subprocess.run(command, capture_output=True, text=True, check=False, timeout=120, **options)
+
+
+def test_help_imports_no_numerics():
+    """`driftline --help` loads neither numpy nor scipy nor matplotlib, nor what draws progress bars."""
+    code = (
+        "import sys; from driftline.cli import main; code = main(['--help']); "
+        "print(code, [name for name in ('numpy', 'scipy', 'matplotlib', 'h5py', 'rich') if name in sys.modules])"
+    )
+    result = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True, timeout=60)
+    assert result.stdout.endswith("0 []\n")
+    assert "Usage: driftline" in result.stdout
+
+
+def test_public_names_are_lazy_and_complete():
+    """Importing the package loads no numerics, and every public name can be had."""
+    code = "import sys, driftline; driftline.Settings; print([n for n in ('scipy', 'matplotlib') if n in sys.modules])"
+    result = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True, timeout=60)
+    assert result.stdout == "[]\n"
+    for name in driftline.__all__:
+        assert getattr(driftline, name) is not None
+    with pytest.raises(AttributeError, match=r"^module 'driftline' has no attribute 'analyze'$"):
+        _ = driftline.analyze
+
+
+def test_version(capsys):
+    """The version is that of the installed package."""
+    assert main(["--version"]) == 0
+    assert capsys.readouterr().out == f"driftline {driftline.__version__}\n"
+
+
+def test_analyse_writes_the_folder_and_prints_the_summary(data, prepared, capsys):
+    """The terminal shows what `summary.txt` holds, without colour where it is not a terminal."""
+    assert main(["analyse", str(data), "--seed", "4", "--ansatz", "power-law"]) == 0
+    out, err = capsys.readouterr()
+    assert out.startswith(OPENING)
+    text = (data.parent / "made-driftline" / "summary.txt").read_text(encoding="utf-8")
+    assert out == text + f"\nWritten to made-driftline{os.sep}\n"
+    assert "\x1b" not in out
+    assert err == ""
+    assert prepared[0].seed == 4
+    assert prepared[0].ansatze == ("power-law",)
+
+
+def test_all_options_reach_the_settings(data, prepared):
+    """Every option of the command ends up where it belongs, over the file's."""
+    (data.parent / "run.toml").write_text("seed = 1\ndraws = 300\njobs = 1\n")
+    assert main(
+        ["analyse", str(data), "--config", "run.toml", "--out", "o", "--ansatz", "power-law", "--ansatz",
+         "power-law:corrected", "--window", "14", "19", "--smallest-size", "8", "--seed", "2", "--quick", "--jobs", "2"]
+    ) == 0  # fmt: skip
+    (settings,) = prepared
+    assert settings == driftline.Settings(
+        ("power-law", "power-law:corrected"), (14.0, 19.0), 8.0, 2, True, 2, {}, 300
+    )  # fmt: skip
+    assert (data.parent / "o" / "result.json").is_file()
+
+
+@pytest.mark.parametrize(
+    ("arguments", "sentence"),
+    [
+        (["--window", "19", "14"], "option --window: the low end 19 must lie below the high end 14"),
+        (["--seed", "-1"], "option --seed: must be at least 0, not -1"),
+        (["--jobs", "0"], "option --jobs: must be at least 1, not 0"),
+        (["--smallest-size", "14"], "smallest size 14 leaves 1 of the sizes 6, 8, 10, 12, 14, and 2 are needed; "
+                                    "choose 12 or less"),
+        (["--out", "none/out"], "{cwd}/none: is not a folder, so the output cannot be put there; make it first"),
+        (["--out", "full"], "full: is not empty; give --force to replace it or choose another with --out"),
+        (["--out", "full", "--force"], "full: holds no result.json, so it is not an output folder and --force does not "
+                                       "delete it; choose another place with --out"),
+        (["--config", "none.toml"], "none.toml: cannot be read (No such file or directory); give a TOML file to "
+                                    "--config"),
+    ],
+)  # fmt: skip
+def test_bad_options_are_one_sentence_and_nothing_is_computed(data, prepared, capsys, arguments, sentence):
+    """Exit code 1, one line on standard error, no file, and no computation before the refusal."""
+    full = data.parent / "full"
+    full.mkdir()
+    (full / "mine.txt").write_text("mine")
+    before = sorted(data.parent.rglob("*"))
+    assert main(["analyse", str(data), *arguments]) == 1
+    out, err = capsys.readouterr()
+    assert err == f"driftline: {sentence.format(cwd=data.parent)}\n"
+    assert out == ""
+    assert prepared == []
+    assert sorted(data.parent.rglob("*")) == before
+
+
+def test_unknown_ansatz(data, prepared, capsys):
+    """A misspelt ansatz is refused with a suggestion before anything is computed."""
+    assert main(["analyse", str(data), "--ansatz", "power-low"]) == 1
+    err = capsys.readouterr().err
+    assert err.startswith("driftline: option --ansatz: ansatz 'power-low'")
+    assert err.endswith("did you mean 'power-law'?\n")
+    assert prepared == []
+
+
+@pytest.mark.parametrize(
+    "content",
+    [
+        "",
+        "size,disorder,mean\n8,1,0.5\n",
+        HEADER + "8,1,0.5,x\n",
+        HEADER + "8,1,nan,0.1\n",
+        HEADER + "8,1,0.5,-0.1\n",
+        HEADER + "".join(f"8,{w},0.5,0.1\n" for w in range(1, 9)),
+    ],
+)
+def test_bad_data_is_one_sentence_with_the_place(data, capsys, content):
+    """Exit code 1, one line that begins with the file, no traceback and no folder."""
+    data.write_text(content)
+    for command in (["analyse", str(data)], ["inspect", str(data)]):
+        assert main(command) == 1
+        out, err = capsys.readouterr()
+        assert out == ""
+        assert err.startswith(f"driftline: {data}")
+        assert err.count("\n") == 1
+    assert list(data.parent.iterdir()) == [data]
+
+
+def test_missing_data(tmp_path, capsys):
+    """A path that leads nowhere gets its sentence."""
+    assert main(["analyse", str(tmp_path / "none.csv"), "--out", str(tmp_path / "out")]) == 1
+    assert capsys.readouterr().err == f"driftline: {tmp_path / 'none.csv'}: there is no such file; check the path\n"
+
+
+@pytest.mark.parametrize(
+    "arguments", [["analyse"], ["analyse", "x.csv", "--nosuch"], ["analyse", "x.csv", "--seed", "many"], ["nosuch"]]
+)
+def test_wrong_usage(arguments, capsys):
+    """What the command line does not know ends with exit code 2 and a usage line."""
+    assert main(arguments) == 2
+    assert "Usage: driftline" in capsys.readouterr().err
+
+
+def test_force_replaces_an_earlier_output(data, prepared):
+    """A second run is refused, and with force it replaces the first."""
+    assert main(["analyse", str(data)]) == 0
+    assert main(["analyse", str(data), "--seed", "9"]) == 1
+    assert main(["analyse", str(data), "--seed", "9", "--force"]) == 0
+    assert json.loads((data.parent / "made-driftline" / "result.json").read_text())["seed"] == 9
+    assert {path.name for path in data.parent.iterdir()} == {"made.csv", "made-driftline"}
+
+
+def test_interruption_inside(data, monkeypatch, capsys):
+    """An interrupt during the computation gives exit code 130, one line, and no folder."""
+
+    def analyse(curves, *, settings, progress):
+        raise KeyboardInterrupt
+
+    monkeypatch.setattr(analysis_module, "analyse", analyse)
+    assert main(["analyse", str(data)]) == 130
+    assert capsys.readouterr().err == "driftline: interrupted, nothing was written\n"
+    assert list(data.parent.iterdir()) == [data]
+
+
+def test_interruption_from_outside(data):
+    """The same for a process that gets the signal while it computes."""
+    code = "import sys; from driftline.cli import main; sys.exit(main())"
+    process = subprocess.Popen(
+        [sys.executable, "-c", code, "analyse", str(data)], stderr=subprocess.PIPE, stdout=subprocess.PIPE, text=True
+    )  # fmt: skip
+    time.sleep(2.5)  # past the start of the interpreter, far from the end of a full analysis
+    process.send_signal(signal.SIGINT)
+    out, err = process.communicate(timeout=60)
+    assert (process.returncode, out, err) == (130, "", "driftline: interrupted, nothing was written\n")
+    assert list(data.parent.iterdir()) == [data]
+
+
+def test_bugs_are_not_hidden(data, monkeypatch):
+    """An exception that no user can cause is passed on, so that its traceback is seen."""
+
+    def analyse(curves, *, settings, progress):
+        raise ZeroDivisionError
+
+    monkeypatch.setattr(analysis_module, "analyse", analyse)
+    with pytest.raises(ZeroDivisionError):
+        main(["analyse", str(data)])
+
+
+def test_colour_only_where_it_is_wanted(data, prepared, monkeypatch, capsys):
+    """A terminal gets colours, unless NO_COLOR is set."""
+    monkeypatch.setattr("click.utils.should_strip_ansi", lambda *_: False)
+    monkeypatch.delenv("NO_COLOR", raising=False)
+    assert main(["analyse", str(data)]) == 0
+    assert capsys.readouterr().out.startswith("\x1b[31m\x1b[1mWarning: no evidence")
+    monkeypatch.setenv("NO_COLOR", "1")
+    assert main(["analyse", str(data), "--force"]) == 0
+    assert "\x1b" not in capsys.readouterr().out
+
+
+def test_inspect_prints_what_is_read_and_writes_nothing(data, capsys):
+    """The report on the input names file and sizes."""
+    assert main(["inspect", data.name]) == 0
+    out = capsys.readouterr().out
+    assert data.name in out
+    assert "14" in out
+    assert list(data.parent.iterdir()) == [data]
+
+
+def test_ansatze_lists_every_form(data, capsys):
+    """Each ansatz is shown with formula, parameters and priors; with a path, those of the data."""
+    from driftline.scaling.ansatz import available
+
+    assert main(["ansatze"]) == 0
+    out = capsys.readouterr().out
+    assert all(f"\n{name}  (" in out for name in available())
+    assert "uniform from -2.5 to 12.5" in out  # 0 to 10, a quarter wider on each side
+    assert main(["ansatze", str(data)]) == 0
+    assert "uniform from 11.25 to 21.75" in capsys.readouterr().out  # 13 to 20 likewise
+
+
+def test_narrow_encodings_do_not_stop_the_summary(data):
+    """A terminal that only knows ASCII gets question marks and no traceback."""
+    text = data.read_text()
+    data.write_text(f"# disorder_unit: \N{GREEK SMALL LETTER MU}eV\n{text}", encoding="utf-8")
+    result = run("inspect", data, env={**os.environ, "PYTHONIOENCODING": "ascii", "PYTHONUTF8": "0"})
+    assert (result.returncode, result.stderr) == (0, "")
+    assert "?eV" in result.stdout
+
+
+@pytest.fixture(scope="module")
+def real(tmp_path_factory):
+    """One real run of the whole job on synthetic curves, and the folder it was made in."""
+    place = tmp_path_factory.mktemp("real")
+    grid = np.linspace(2.0, 4.0, 9)
+    curves = simulate((8, 12, 18), grid, PowerLawTruth(W_c=3.0, nu=1.2), 0.003, 2)
+    size, disorder, mean, error = curves.flat()
+    rows = zip(size.tolist(), disorder.tolist(), mean.tolist(), error.tolist(), strict=True)
+    (place / "data.csv").write_text(HEADER + "".join(",".join(map(repr, row)) + "\n" for row in rows))
+    options = ("--quick", "--seed", "3", "--window", "2.2", "4", "--ansatz", "power-law:corrected")
+    first = run("analyse", "data.csv", *options, cwd=place)
+    return place, first
+
+
+def test_the_whole_job(real):
+    """From a file to a folder: exit code 0, the truth inside the interval, and no word on standard error."""
+    place, first = real
+    assert (first.returncode, first.stderr) == (0, "")
+    result = json.loads((place / "data-driftline" / "result.json").read_text(encoding="utf-8"))
+    interval = result["crossover"]["disorder"]
+    # the five-sigma equivalent of the 95 % interval: a chance of one in a million to fail for another data set
+    half = 2.55 * (interval["high95"] - interval["low95"]) / 2
+    assert abs(interval["median"] - 3.0) < half
+    assert result["input"]["disorder_range"] == [2.25, 4.0]
+    assert first.stdout.startswith((place / "data-driftline" / "summary.txt").read_text(encoding="utf-8"))
+
+
+def test_the_written_configuration_reproduces_the_result(real):
+    """`analysis.toml` given back makes the same `result.json`, byte for byte but for the timing at its end."""
+    place, _ = real
+    again = run("analyse", "data.csv", "--config", "data-driftline/analysis.toml", "--out", "again", cwd=place)
+    assert again.returncode == 0
+    old, new = ((place / name / "result.json").read_text().split('"timing"')[0] for name in ("data-driftline", "again"))
+    assert old == new
+    assert len(old) > 1000
+
+
+def test_summary_is_public():
+    """What the command prints can be had from Python."""
+    analysis = made_analysis()
+    assert driftline.summary(analysis) == summary(analysis)
