@@ -96,9 +96,9 @@ def test_slope_draws_are_derivatives_of_the_draws(curves):
     numeric = np.gradient(smooth.draws, smooth.grid, axis=1)[:, 1:-1]
     difference = np.abs(numeric - smooth.slope_draws[:, 1:-1])
     largest = np.max(np.abs(smooth.slope_draws))
-    # Step h = 0.025; draws vary over lengths l of at least 0.24. Central differences err by h^2 / 6 times a third derivative, at most about
-    # (h/l)^2/6 * 5 = 1 % of a slope for smooth draws and h/(2l) = 5 % where a Matern draw's second derivative jumps.
-    # Slopes of other draws would differ by about as much as the slopes themselves.
+    # Step h = 0.025; draws vary over lengths l of at least 0.24. Central differences err by h^2/6 times a third
+    # derivative, about (h/l)^2/6 * 5 = 1 % of a slope, and by h/(2l) = 5 % where a Matern draw's second derivative
+    # jumps. Slopes of other draws would differ by about as much as the slopes themselves.
     assert np.max(difference) < 0.05 * largest
     assert np.median(difference) < 0.01 * largest
 

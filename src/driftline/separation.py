@@ -12,7 +12,9 @@ with ln L, by weighted least squares over all sizes, is followed through the dis
   the simulated distribution of that largest value (the look-elsewhere effect; Gross, Vitells, Eur. Phys. J. C 70,
   525 (2010)), and turned back into standard deviations;
 - the place that divides the sides is the one that makes the weaker side strongest. Each side is judged as if its run
-  had been sought over the whole range and with either sign, which pays for that choice.
+  had been sought over the whole range and with either sign, which pays for that choice;
+- where that weaker side is not resolved, the strongest run of all is reported beside the best of the opposite sign
+  below or above it: a resolved side and a flat one, or none.
 """
 
 from __future__ import annotations
@@ -152,7 +154,7 @@ class LookElsewhere:
 
     def corrected(self, z: float) -> float:
         """Signed significance of one test that is as improbable by chance as `z` is as the largest of all runs."""
-        return float(-np.sign(z) * ndtri_exp(self.log_probability(abs(z)) - np.log(2.0)))
+        return float(-np.sign(z) * ndtri_exp(self.log_probability(abs(z)) - np.log(2.0))) + 0.0  # no negative zero
 
 
 def separation_test(
@@ -181,8 +183,12 @@ def separation_test(
     log_size = np.log(curves.sizes)
     trends = fit_trends(disorder, log_size, means, noise)
     statistic = _held_to_odd_size(trends, log_size, means, noise)
-    below, above, split = _best_split(statistic)
     correction = LookElsewhere.of(trends, rng)
+    opposite = _opposite_runs(statistic)
+    if opposite is not None and correction.corrected(opposite[0]) >= THRESHOLD:
+        _, below, above, split = opposite
+    else:
+        below, above, split = _runs_beside_the_strongest(statistic)
     return _outcome(curves, trends, statistic, correction, below, above, split)
 
 
@@ -242,25 +248,43 @@ def _held_to_odd_size(trends: Trends, log_size: FloatArray, means: FloatArray, n
 Run = tuple[int, int]
 
 
-def _best_split(statistic: FloatArray) -> tuple[Run, Run, int]:
-    """Best runs below and above, and the number of disorders below the split.
+def _opposite_runs(statistic: FloatArray) -> tuple[float, Run, Run, int] | None:
+    """Strength of the weaker side, runs below and above, and disorders below the split, where that strength is largest.
 
-    The split makes the weaker of two opposite sides strongest. Where nothing is opposite it is the middle and the
-    strongest run of either sign stands for each side.
+    None if no run has a run of the opposite sign beside it.
     """
     points = len(statistic) - 1
-    best, choice = 0.0, None
+    best: tuple[float, Run, Run, int] | None = None
     for split in range(1, points):
         for sign in (+1.0, -1.0):
             below, above = _strongest(sign * statistic, 0, split), _strongest(-sign * statistic, split, points)
-            weaker = min(sign * statistic[below], -sign * statistic[above])
-            if weaker > best:
-                best, choice = weaker, (below, above, split)
-    if choice is not None:
-        return choice
-    middle = points // 2
-    strength = np.abs(statistic)
-    return _strongest(strength, 0, middle), _strongest(strength, middle, points), middle
+            weaker = float(min(sign * statistic[below], -sign * statistic[above]))
+            if weaker > (best[0] if best else 0.0):
+                best = (weaker, below, above, split)
+    return best
+
+
+def _runs_beside_the_strongest(statistic: FloatArray) -> tuple[Run, Run, int]:
+    """Where no change of sign is resolved: the strongest run of all, and what there is on the other side of it.
+
+    The other side is the one with the strongest run of opposite sign; if neither has any, the longer one with its
+    strongest run of the same sign. A strongest run that covers everything is cut in the middle.
+    """
+    points = len(statistic) - 1
+    first, last = _strongest(np.abs(statistic), 0, points)
+    if (first, last) == (0, points):
+        middle = points // 2
+        return _strongest(np.abs(statistic), 0, middle), _strongest(np.abs(statistic), middle, points), middle
+    opposite = -np.sign(statistic[first, last]) * statistic
+    sides = [side for side in ((0, first), (last, points)) if side[0] < side[1]]
+    strengths = [float(opposite[_strongest(opposite, *side)]) for side in sides]
+    if max(strengths) > 0:
+        side = sides[int(np.argmax(strengths))]
+        other = _strongest(opposite, *side)
+    else:
+        side = max(sides, key=lambda each: each[1] - each[0])
+        other = _strongest(np.abs(statistic), *side)
+    return (other, (first, last), first) if side[1] == first else ((first, last), other, last)
 
 
 def _strongest(statistic: FloatArray, first: int, last: int) -> Run:

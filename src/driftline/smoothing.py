@@ -19,7 +19,7 @@ from functools import cached_property, lru_cache
 
 import numpy as np
 import numpy.typing as npt
-from scipy.linalg import cho_solve, cholesky, solve_triangular
+from scipy.linalg import solve_triangular
 from scipy.special import logsumexp
 
 from driftline.curves import Curve, Curves, FloatArray
@@ -196,27 +196,23 @@ class _Smoother:
         slopes = BROAD * np.column_stack([np.zeros_like(u), np.full_like(u, 2 / (high - low))])
         return values, slopes
 
-    def background(self, curve: Curve) -> FloatArray:
-        """Lower Cholesky factor of noise plus constant and linear part, in units of the spread squared."""
-        values, _ = self.linear(curve.disorder)
-        return np.asarray(cholesky(curve.noise / self.unit**2 + values @ values.T, lower=True))
-
     def log_likelihood(self, curve: Curve) -> FloatArray:
         """Log marginal likelihood of every cell, shape (processes, amplitudes), up to a constant.
 
-        With C C^T the background covariance and C^-1 K C^-T = U diag(lambda) U^T, the covariance at amplitude a is
-        C U diag(1 + a^2 lambda) U^T C^T, so that all amplitudes cost one eigendecomposition.
+        With C C^T the covariance of noise, constant and linear part, and C^-1 K C^-T = U diag(lambda) U^T, the
+        covariance at amplitude a is C U diag(1 + a^2 lambda) U^T C^T, so that all amplitudes cost one
+        eigendecomposition.
         """
         at = np.searchsorted(self.points, curve.disorder)
-        factor = self.background(curve)
-        data = solve_triangular(factor, (curve.mean - self.centre) / self.unit, lower=True)
-        rows = []
-        for process in self.processes:
-            half = solve_triangular(factor, process.value[np.ix_(at, at)], lower=True)
-            eigenvalues, vectors = np.linalg.eigh(solve_triangular(factor, half.T, lower=True))
-            variance = 1 + AMPLITUDES[:, None] ** 2 * np.maximum(eigenvalues, 0.0)
-            rows.append(-0.5 * np.sum(np.log(variance) + (vectors.T @ data) ** 2 / variance, axis=1))
-        return np.array(rows)
+        values, _ = self.linear(curve.disorder)
+        factor = np.linalg.cholesky(curve.noise / self.unit**2 + values @ values.T)
+        whiten = solve_triangular(factor, np.eye(at.size), lower=True)
+        data = whiten @ (curve.mean - self.centre) / self.unit
+        kernels = np.array([process.value[np.ix_(at, at)] for process in self.processes])
+        eigenvalues, vectors = np.linalg.eigh(whiten @ kernels @ whiten.T)
+        projected = (data @ vectors)[:, None, :]
+        variance = 1 + AMPLITUDES[:, None] ** 2 * np.maximum(eigenvalues, 0.0)[:, None, :]
+        return np.asarray(-0.5 * np.sum(np.log(variance) + projected**2 / variance, axis=2))
 
     def posteriors(self) -> list[FloatArray]:
         """Weights of the cells for each size; short curves take those of all sizes together."""
@@ -227,48 +223,66 @@ class _Smoother:
 
     def draw(self, curve: Curve, weights: FloatArray, draws: int, rng: np.random.Generator) -> SmoothCurve:
         """Draws from the mixture over cells."""
-        inside = (self.grid >= curve.disorder[0]) & (self.grid <= curve.disorder[-1])
+        sampler = _Sampler.of(self, curve)
         counts = rng.multinomial(draws, weights.ravel()).reshape(weights.shape)
         parts = [
-            self._draw_process(curve, inside, process, cells, rng)
+            sampler.draw(process, cells, rng)
             for process, cells in zip(self.processes, counts, strict=True)
             if cells.any()
         ]
         # Draws come ordered by cell; shuffled, so that draw k of one size knows nothing of draw k of another
-        values, slopes = np.split(np.concatenate(parts)[rng.permutation(draws)], 2, axis=1)
+        values, slopes = np.split(np.concatenate(parts)[rng.permutation(draws)] * self.unit, 2, axis=1)
         values = values + self.centre
-        return SmoothCurve(curve.size, self.grid[inside], values.mean(axis=0), values.std(axis=0), values, slopes)
+        return SmoothCurve(curve.size, sampler.grid, values.mean(axis=0), values.std(axis=0), values, slopes)
 
-    def _draw_process(
-        self,
-        curve: Curve,
-        inside: npt.NDArray[np.bool_],
-        process: Process,
-        counts: npt.NDArray[np.int64],
-        rng: np.random.Generator,
-    ) -> FloatArray:
+
+@dataclass(frozen=True, eq=False)
+class _Sampler:
+    """What draws of one size's curve need, in units of the spread of y.
+
+    Rows run over (function, slope) at the grid of this size, then the function at its data.
+    """
+
+    grid: FloatArray
+    rows: npt.NDArray[np.intp]
+    at: npt.NDArray[np.intp]
+    linear: FloatArray
+    data: FloatArray
+    noise: FloatArray
+    noise_root: FloatArray
+
+    @classmethod
+    def of(cls, smoother: _Smoother, curve: Curve) -> _Sampler:
+        inside = (smoother.grid >= curve.disorder[0]) & (smoother.grid <= curve.disorder[-1])
+        grid = smoother.grid[inside]
+        at, on = np.searchsorted(smoother.points, curve.disorder), np.searchsorted(smoother.points, grid)
+        rows = np.concatenate([on, smoother.points.size + np.flatnonzero(inside), at])
+        values, slopes = smoother.linear(grid)
+        linear = np.concatenate([values, slopes, smoother.linear(curve.disorder)[0]])
+        noise = curve.noise / smoother.unit**2
+        data = (curve.mean - smoother.centre) / smoother.unit
+        return cls(grid, rows, at, linear, data, noise, np.asarray(np.linalg.cholesky(noise), dtype=np.float64))
+
+    def draw(self, process: Process, counts: npt.NDArray[np.int64], rng: np.random.Generator) -> FloatArray:
         """Draws of (function, slope) on the grid for one process, `counts` of them at each amplitude.
 
         Prior draws are moved onto the data (Matheron's rule; Journel, Huijbregts, Mining Geostatistics, 1978): with
         prior draw f and noise draw e,  f + K_*d (K_dd + N)^-1 (y - f_d - e)  is a posterior draw.
         """
-        at, on = np.searchsorted(self.points, curve.disorder), np.searchsorted(self.points, self.grid[inside])
-        rows = np.concatenate([on, self.points.size + np.flatnonzero(inside)])
-        values, slopes = self.linear(self.points)
-        linear = np.concatenate([values, slopes[np.searchsorted(self.points, self.grid)]])
-        noise = curve.noise / self.unit**2
-        noise_root = cholesky(noise, lower=True)
-        kernel = np.concatenate([process.value[:, at], process.slope_value[:, at]])
-        drawn = []
-        for a, count in zip(AMPLITUDES[counts > 0], counts[counts > 0], strict=True):
-            prior = a * rng.standard_normal((count, process.factor.shape[1])) @ process.factor.T
-            prior += rng.standard_normal((count, 2)) @ linear.T
-            misfit = (curve.mean - self.centre) / self.unit - prior[:, at]
-            misfit -= rng.standard_normal((count, at.size)) @ noise_root.T
-            covariance = a**2 * kernel + linear @ linear[at].T
-            root = cholesky(covariance[at] + noise, lower=True)
-            drawn.append(prior[:, rows] + cho_solve((root, True), misfit.T).T @ covariance[rows].T)
-        return np.concatenate(drawn) * self.unit
+        total, points = int(counts.sum()), self.at.size
+        amplitude = np.repeat(AMPLITUDES, counts)[:, None]
+        factor = process.factor[self.rows]
+        prior = amplitude * (rng.standard_normal((total, factor.shape[1])) @ factor.T)
+        prior += rng.standard_normal((total, 2)) @ self.linear.T
+        misfit = self.data - prior[:, -points:] - rng.standard_normal((total, points)) @ self.noise_root.T
+        kernel = np.concatenate([process.value[:, self.at], process.slope_value[:, self.at]])[self.rows]
+        background = self.linear @ self.linear[-points:].T
+        drawn, last = prior[:, :-points], np.cumsum(counts)
+        for a, count, stop in zip(AMPLITUDES[counts > 0], counts[counts > 0], last[counts > 0], strict=True):
+            covariance = a**2 * kernel + background
+            gain = np.linalg.solve(covariance[-points:] + self.noise, covariance[:-points].T)
+            drawn[stop - count : stop] += misfit[stop - count : stop] @ gain
+        return drawn
 
 
 @lru_cache(maxsize=2)  # the same disorders come back in every refit and calibration set; an entry takes some 20 MB
