@@ -51,12 +51,21 @@ def dense_log_density(curves: Curves, ansatz: str, z: np.ndarray) -> float:
         stop = start + curve.mean.size
         noise[start:stop, start:stop] = curve.noise
         start = stop
-    total = spread**2 * covariance + s**2 * noise
+    amplitude = np.ones(mean.size)
+    if form.has_amplitude:
+        names = [p.name for p in form.parameters]
+        kappa = form.amplitude_exponent if form.amplitude_exponent is not None else z[names.index("kappa_A")]
+        amplitude = (size / np.sqrt(size.min() * size.max())) ** kappa
+    # the model is scaled, not the data: y = A (F + ...) + noise, with the noise as measured
+    total = spread**2 * np.outer(amplitude, amplitude) * covariance + s**2 * noise
     centre = (mean.max() + mean.min()) / 2
-    return float(multivariate_normal(np.full(mean.size, centre), total).logpdf(mean))
+    return float(multivariate_normal(amplitude * centre, total).logpdf(mean))
 
 
-@pytest.mark.parametrize("ansatz", available())
+AMPLITUDES = ("power-law:amplitude", "kt:corrected:amplitude=0.3", "size-independent:amplitude=-1")
+
+
+@pytest.mark.parametrize("ansatz", [*available(), *AMPLITUDES])
 @pytest.mark.parametrize("correlation", [0.0, 0.6])
 def test_agrees_with_dense_gaussian(ansatz: str, correlation: float) -> None:
     """The spline likelihood is the density of the dense Gaussian of the same model, for every ansatz on offer."""
@@ -69,7 +78,7 @@ def test_agrees_with_dense_gaussian(ansatz: str, correlation: float) -> None:
         assert target.log_likelihood(z[None])[0] == pytest.approx(expected, abs=1e-4, rel=1e-8)
 
 
-@pytest.mark.parametrize("ansatz", ["power-law", "power-law:linear-drift:corrected"])
+@pytest.mark.parametrize("ansatz", ["power-law", "power-law:linear-drift:corrected", "kt:corrected:amplitude=0.3"])
 def test_compiled_loop_agrees_with_dense_algebra(ansatz: str) -> None:
     """The banded compiled loop and the batched dense algebra are the same function."""
     curves = simulate(SIZES, GRID, PowerLawTruth(4.0), 0.003, 6)

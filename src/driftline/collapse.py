@@ -77,7 +77,8 @@ class SamplerHealth:
 class CollapsedPoints:
     """All points at the posterior median; arrays of shape (points,).
 
-    `y` is freed of the correction term, so that it lies on F; `residual` is (mean - fit) / error.
+    `y` and its `error` are divided by the amplitude and `y` is freed of the correction term, so that it lies on F;
+    `fitted` is in the measured unit and `residual` is (mean - fitted) / measured error.
     """
 
     size: FloatArray
@@ -317,12 +318,14 @@ def _collapsed(held: Posterior, z: FloatArray) -> tuple[CollapsedPoints, tuple[F
     size, disorder, mean, error = curves.flat()
     coefficients, covariance = held.coefficients(z)
     design = held.design(z[None])[0, :, :-1]
-    x = form.scaled(z[None], size, disorder, curves.sizes)[0]
+    scale = form.amplitude(z[None], size, curves.sizes)
+    amplitude = np.ones(mean.size) if scale is None else scale[0]
     values = {name: float(v[0, 0]) for name, v in form.values(z[None]).items()}
-    x *= form.length.unit(float(np.sqrt(curves.sizes[0] * curves.sizes[-1])), values)
-    fitted = held.centre + held.spread * (design @ coefficients)
+    x = form.scaled(z[None], size, disorder, curves.sizes)[0] * form.form.unit(curves.sizes, values)
+    fitted = amplitude * held.centre + held.spread * (design @ coefficients)
     correction = held.spread * (design[:, count:] @ coefficients[count:])
-    points = CollapsedPoints(size, disorder, x, mean - correction, error, fitted, (mean - fitted) / error)
+    collapsed = (mean - correction) / amplitude
+    points = CollapsedPoints(size, disorder, x, collapsed, error / amplitude, fitted, (mean - fitted) / error)
     grid = np.linspace(0, 1, 201)
     first, four = held.function.basis(grid)
     basis = np.zeros((grid.size, count))

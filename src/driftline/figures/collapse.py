@@ -128,4 +128,4 @@ def _abscissa(fit: CollapseFit) -> str:
     symbol = style.math(fit.curves.labels.disorder_symbol)
     if not symbol.startswith("$") or len(symbol) > LONGEST_SYMBOL:
         return "scaled disorder $x$"
-    return style.math(fit.ansatz.length.label.format(W=f"{{{symbol[1:-1]}}}"))  # braces: the symbol may have an index
+    return style.math(fit.ansatz.form.label.format(W=f"{{{symbol[1:-1]}}}"))  # braces: the symbol may have an index

@@ -1,14 +1,16 @@
 """A scaling ansatz put together from its parts, and the names by which a user asks for one.
 
-    y = F(x) + (L/L_min)^-omega G(x),      x = x(W - W_c(L), L)
+    y = A(L) [ F(x) + (L/L_min)^-omega G(x) ],      x = x(W, L)
 
-The parts are a correlation length, a trajectory of the critical disorder and, with `corrected`, the leading
-irrelevant term.  Names join with a colon: ``power-law``, ``power-law:corrected``, ``power-law:linear-drift``.
+The parts are the scaled variable x (a correlation length with a trajectory of the critical disorder, or a form without
+one), the leading irrelevant term (`corrected`) and an amplitude L^kappa (`amplitude`, or `amplitude=VALUE` to hold the
+exponent).  Names join with a colon: ``power-law``, ``power-law:corrected``, ``kt:linear-drift``.
 """
 
 from __future__ import annotations
 
 import difflib
+import math
 from collections.abc import Mapping
 from dataclasses import dataclass
 
@@ -16,13 +18,15 @@ import numpy as np
 
 from driftline.curves import Curves, FloatArray
 from driftline.errors import ConfigurationError
-from driftline.scaling.lengths import LENGTHS, CorrelationLength
+from driftline.scaling.forms import FIXED, FORMS, Critical, Form, typical_size
+from driftline.scaling.lengths import LENGTHS
 from driftline.scaling.parameters import Parameter
-from driftline.scaling.priors import LogNormal
-from driftline.scaling.trajectories import TRAJECTORIES, Hypothesis, Trajectory
+from driftline.scaling.priors import LogNormal, Normal
+from driftline.scaling.trajectories import TRAJECTORIES, Hypothesis
 
 CORRECTED = "corrected"
-FIXED = "fixed"
+AMPLITUDE = "amplitude"
+AMPLITUDE_SD = 0.5
 
 
 @dataclass(frozen=True)
@@ -30,33 +34,42 @@ class Ansatz:
     """One scaling form with the priors of its parameters; knows sizes and disorders, not the measured values.
 
     Use `parse_ansatz` to build one from its name.
+
+    Parameters
+    ----------
+    name : str
+        As `parse_ansatz` understands it.
+    form : Form
+        The scaled variable.
+    corrected : bool
+        Whether the leading irrelevant term is included.
+    has_amplitude : bool
+        Whether the model is multiplied by L^kappa.
+    amplitude_exponent : float or None
+        Exponent kappa of the amplitude where it is held; None where it is a parameter.
+    parameters : tuple of Parameter
+        In the order of the sampled coordinates.
     """
 
-    length: CorrelationLength
-    trajectory: Trajectory
+    name: str
+    form: Form
     corrected: bool
+    has_amplitude: bool
+    amplitude_exponent: float | None
     parameters: tuple[Parameter, ...]
-
-    @property
-    def name(self) -> str:
-        """The name that `parse_ansatz` understands."""
-        parts = [self.length.name]
-        if self.trajectory.name != FIXED:
-            parts.append(self.trajectory.name)
-        if self.corrected:
-            parts.append(CORRECTED)
-        return ":".join(parts)
 
     @property
     def hypothesis(self) -> Hypothesis:
         """What it would mean if this form were true."""
-        return self.trajectory.hypothesis
+        return self.form.hypothesis
 
     @property
     def formula(self) -> str:
         """One line for people."""
-        function = "y = F(x) + (L/L_min)^-omega G(x)" if self.corrected else "y = F(x)"
-        return f"{function}, {self.length.formula}, {self.trajectory.formula}"
+        function = "F(x) + (L/L_min)^-omega G(x)" if self.corrected else "F(x)"
+        if self.has_amplitude:
+            function = f"L^kappa_A [{function}]" if self.corrected else f"L^kappa_A {function}"
+        return f"y = {function}, {self.form.formula}"
 
     def values(self, z: FloatArray) -> dict[str, FloatArray]:
         """Parameter values by name, each (batch, 1), from sampled coordinates `z`, shape (batch, parameters)."""
@@ -74,9 +87,8 @@ class Ansatz:
         sizes : array, shape (m,)
             The measured sizes; they fix the unit of size and the middle of a trajectory.
         """
-        values = self.values(z)
-        delta = disorder - self.trajectory.critical(size, sizes, values)
-        return self.length.scaled(delta, size / np.sqrt(sizes[0] * sizes[-1]), values)
+        x = self.form.scaled(size, disorder, sizes, self.values(z))
+        return np.broadcast_to(x, (len(z), size.size))
 
     def correction(self, z: FloatArray, size: FloatArray, sizes: FloatArray) -> FloatArray | None:
         """Weight (L/L_min)^-omega of the irrelevant term, shape (batch, points); None without correction."""
@@ -84,9 +96,13 @@ class Ansatz:
             return None
         return np.asarray(np.exp(-self.values(z)["omega"] * np.log(size / sizes[0])))
 
-
-def _omega() -> Parameter:
-    return Parameter("omega", r"\omega", LogNormal.around(1.0, 0.5), "exponent of the leading irrelevant term")
+    def amplitude(self, z: FloatArray, size: FloatArray, sizes: FloatArray) -> FloatArray | None:
+        """Factor (L/L_typical)^kappa of the whole model, shape (batch, points); None without amplitude."""
+        if not self.has_amplitude:
+            return None
+        held = self.amplitude_exponent
+        exponent = self.values(z)["kappa_A"] if held is None else np.full((len(z), 1), held)
+        return np.asarray(np.exp(exponent * np.log(size / typical_size(sizes))))
 
 
 def parse_ansatz(name: str, curves: Curves) -> Ansatz:
@@ -95,7 +111,7 @@ def parse_ansatz(name: str, curves: Curves) -> Ansatz:
     Raises
     ------
     ConfigurationError
-        If a part is unknown, given twice, or the correlation length is missing.
+        If a part is unknown, given twice, does not fit the others, or the scaled variable is missing.
 
     Examples
     --------
@@ -106,37 +122,58 @@ def parse_ansatz(name: str, curves: Curves) -> Ansatz:
     >>> [p.name for p in parse_ansatz("power-law:corrected", curves).parameters]
     ['W_c', 'nu', 'omega']
     """
-    parts = name.split(":")
-    _check_parts(name, parts)
-    length = LENGTHS[parts[0]]
-    trajectory = TRAJECTORIES[next((part for part in parts[1:] if part in TRAJECTORIES), FIXED)]
-    corrected = CORRECTED in parts
-    irrelevant = (_omega(),) if corrected else ()
-    parameters = trajectory.parameters(curves)
-    first, shift = parameters[:1], parameters[1:]
-    return Ansatz(length, trajectory, corrected, (*first, *length.parameters(curves), *shift, *irrelevant))
+    check_ansatz_name(name)
+    first, *rest = name.split(":")
+    trajectory = TRAJECTORIES[next((part for part in rest if part in TRAJECTORIES), FIXED)]
+    form = Critical(LENGTHS[first], trajectory) if first in LENGTHS else FORMS[first]
+    corrected = CORRECTED in rest
+    amplitude = next((part for part in rest if _is_amplitude(part)), None)
+    exponent = float(amplitude.partition("=")[2]) if amplitude and "=" in amplitude else None
+    parameters = [*form.parameters(curves)]
+    if corrected:
+        parameters.append(_omega())
+    if amplitude and exponent is None:
+        parameters.append(_kappa())
+    return Ansatz(name, form, corrected, amplitude is not None, exponent, tuple(parameters))
+
+
+def _omega() -> Parameter:
+    return Parameter("omega", r"\omega", LogNormal.around(1.0, 0.5), "exponent of the leading irrelevant term")
+
+
+def _kappa() -> Parameter:
+    return Parameter("kappa_A", r"\kappa_A", Normal(0.0, AMPLITUDE_SD), "exponent of the amplitude")
 
 
 def check_ansatz_name(name: str) -> None:
     """Raise ConfigurationError if `parse_ansatz` would not understand this name."""
-    _check_parts(name, name.split(":"))
-
-
-def _check_parts(name: str, parts: list[str]) -> None:
-    if parts[0] not in LENGTHS:
+    first, *rest = name.split(":")
+    known = [*LENGTHS, *FORMS]
+    if first not in known:
         raise ConfigurationError(
-            f"ansatz {name!r} must begin with a correlation length ({', '.join(LENGTHS)})"
-            + _suggestion(parts[0], list(LENGTHS))
+            f"ansatz {name!r} must begin with a scaled variable ({', '.join(known)})" + _suggestion(first, known)
         )
-    known = [*TRAJECTORIES, CORRECTED]
-    for part in parts[1:]:
-        if part not in known:
+    parts = [*TRAJECTORIES, CORRECTED, AMPLITUDE] if first in LENGTHS else [CORRECTED, AMPLITUDE]
+    for part in rest:
+        if part not in parts and not _is_amplitude(part):
             raise ConfigurationError(
-                f"ansatz {name!r} has an unknown part {part!r}; the parts are {', '.join(known)}"
-                + _suggestion(part, known)
+                f"ansatz {name!r} has a part {part!r} that {first} does not take; it takes {', '.join(parts)}"
+                + _suggestion(part, parts)
             )
-    if sum(part in TRAJECTORIES for part in parts[1:]) > 1 or len(set(parts)) < len(parts):
-        raise ConfigurationError(f"ansatz {name!r} names a part twice; one trajectory and one `{CORRECTED}` are enough")
+    kinds = ["trajectory" if part in TRAJECTORIES else part.partition("=")[0] for part in rest]
+    if len(set(kinds)) < len(kinds):
+        raise ConfigurationError(f"ansatz {name!r} names a part twice; one of each kind is enough")
+
+
+def _is_amplitude(part: str) -> bool:
+    """Whether it is `amplitude` or `amplitude=NUMBER`."""
+    word, equals, number = part.partition("=")
+    if word != AMPLITUDE:
+        return False
+    try:
+        return not equals or math.isfinite(float(number))
+    except ValueError:
+        return False
 
 
 def _suggestion(word: str, choices: list[str]) -> str:
@@ -145,9 +182,10 @@ def _suggestion(word: str, choices: list[str]) -> str:
 
 
 def available() -> tuple[str, ...]:
-    """Every name that the parts on offer make, simplest first."""
+    """Every combination of scaled variable and correction on offer, simplest first; any takes `amplitude` as well."""
     drifts = ["", *(f":{name}" for name in TRAJECTORIES if name != FIXED)]
-    return tuple(f"{length}{drift}{tail}" for length in LENGTHS for drift in drifts for tail in ("", f":{CORRECTED}"))
+    variables = [f"{length}{drift}" for length in LENGTHS for drift in drifts] + list(FORMS)
+    return tuple(f"{variable}{tail}" for variable in variables for tail in ("", f":{CORRECTED}"))
 
 
 def describe(name: str, curves: Curves) -> Mapping[str, str]:
@@ -156,5 +194,5 @@ def describe(name: str, curves: Curves) -> Mapping[str, str]:
     priors = "; ".join(f"{p.name}: {p.prior.describe()}" for p in ansatz.parameters)
     return {
         "name": name, "hypothesis": ansatz.hypothesis, "formula": ansatz.formula,
-        "parameters": priors, "source": ansatz.length.source,
+        "parameters": priors, "source": ansatz.form.source,
     }  # fmt: skip

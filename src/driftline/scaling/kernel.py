@@ -36,8 +36,10 @@ def solve_batch(
         Positions in [0, 1].
     correction, amplitude : array, shape (batch, points), or None
         Weight of the irrelevant term; factor of the whole model.
-    y, root : array, shape (points,)
-        Data and inverse standard errors.
+    y : array, shape (batch or 1, points)
+        Data, the same for all or one row each.
+    root : array, shape (points,)
+        Inverse standard errors.
     log_tau, log_s : array, shape (batch,)
     roughness : array, shape (count, 4)
         Lower band of D^T D: element (k, d) belongs to functions k and k + d.
@@ -62,6 +64,7 @@ def _solve_batch(u, correction, amplitude, y, root, log_tau, log_s, roughness, l
     terms = TERMS if correction.size else 0
     border = RANK + terms + 1
     last = border - 1
+    rows = y.shape[0] - 1
     quadratic = np.empty(batch)
     log_det = np.empty(batch)
     band = np.empty((count, BAND))
@@ -101,7 +104,7 @@ def _solve_batch(u, correction, amplitude, y, root, log_tau, log_s, roughness, l
             if terms:
                 extra[RANK] = factor * correction[k, p]
                 extra[RANK + 1] = extra[RANK] * (2 * u[k, p] - 1)
-            extra[last] = root[p] * y[p]
+            extra[last] = root[p] * y[min(k, rows), p]
             for a in range(BAND):
                 for d in range(BAND - a):
                     band[first + a, d] += four[a] * four[a + d]

@@ -165,6 +165,15 @@ class Posterior:
         u: FloatArray = (x - low) / (x.max(axis=1, keepdims=True) - low)
         return u
 
+    def targets(self, amplitude: FloatArray | None) -> FloatArray:
+        """Data minus the prior mean of the model, in units of their range, shape (batch or 1, points).
+
+        The prior mean of F is the middle of the data; with an amplitude A the model's mean is A times that.
+        """
+        if amplitude is None:
+            return self.standardised[None]
+        return np.asarray(self.standardised + (1 - amplitude) * self.centre / self.spread)
+
     def design(self, z: FloatArray) -> FloatArray:
         """Phi with the data as last column, shape (batch, points, columns + 1), not yet whitened."""
         u = self.positions(z)
@@ -179,7 +188,10 @@ class Posterior:
         if weight is not None:
             matrix[..., count] = weight
             matrix[..., count + 1] = weight * (2 * u - 1)
-        matrix[..., -1] = self.standardised
+        amplitude = self.ansatz.amplitude(z, self._points[0], self.curves.sizes)
+        if amplitude is not None:
+            matrix *= amplitude[..., None]
+        matrix[..., -1] = self.targets(amplitude)
         return matrix
 
     def _precision(self, log_tau: FloatArray, columns: int) -> FloatArray:
@@ -219,9 +231,10 @@ class Posterior:
 
     def _banded(self, z: FloatArray) -> tuple[FloatArray, FloatArray]:
         """s^2 Q and ln det(M + s^2 P) for independent points."""
-        correction = self.ansatz.correction(z, self._points[0], self.curves.sizes)
+        size, sizes = self._points[0], self.curves.sizes
+        correction, amplitude = self.ansatz.correction(z, size, sizes), self.ansatz.amplitude(z, size, sizes)
         return solve_batch(
-            self.positions(z), correction, None, self.standardised, self.spread / self.curves.flat()[3],
+            self.positions(z), correction, amplitude, self.targets(amplitude), self.spread / self.curves.flat()[3],
             *self._nuisance(z), self.function.roughness_band, self.function.line, self.correction_sd,
         )  # fmt: skip
 
