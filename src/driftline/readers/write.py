@@ -11,10 +11,14 @@ from collections.abc import Iterator
 from contextlib import contextmanager
 from dataclasses import asdict
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 from driftline.curves import Curve, Curves, Labels
 from driftline.errors import ConfigurationError, InputError
 from driftline.readers.hdf5 import FORMAT, VECTORS
+
+if TYPE_CHECKING:
+    import h5py  # imported inside the functions that need it
 
 
 def write_csv(curves: Curves, path: str | os.PathLike[str]) -> None:
@@ -49,15 +53,25 @@ def write_hdf5(curves: Curves, path: str | os.PathLike[str]) -> None:
     import h5py
 
     with replacing(path) as part, h5py.File(part, "w") as file:
-        file.attrs["format"] = FORMAT
-        for name, value in asdict(curves.labels).items():
-            file.attrs[name] = "none" if value is None else value
+        for name, value in {"format": FORMAT, **asdict(curves.labels)}.items():
+            _set_attribute(file, name, "none" if value is None else value)
         for curve in curves.curves:
             group = file.create_group(f"curves/{_text(curve.size)}")
             for name in (*VECTORS, "covariance"):
                 values = getattr(curve, name)
                 if values is not None:
                     group.create_dataset(name, data=values, track_times=False)
+
+
+def _set_attribute(file: h5py.File, name: str, value: str | float) -> None:
+    """Text goes in with a fixed length: the HDF5 library can hang for ever in the damaged heap of variable lengths."""
+    import h5py
+
+    if isinstance(value, str):
+        raw = value.encode("utf-8")
+        file.attrs.create(name, raw, dtype=h5py.string_dtype("utf-8", max(1, len(raw))))
+    else:
+        file.attrs[name] = value
 
 
 @contextmanager
