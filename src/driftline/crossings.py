@@ -156,8 +156,8 @@ def find_crossings(
     --------
     >>> from driftline.simulate import PowerLawTruth, simulate
     >>> curves = simulate([8, 12], np.linspace(2, 6, 15), PowerLawTruth(W_c=4.0), 0.003, 1)
-    >>> find_crossings(curves, draws=500).pairs[0].disorder.contains(4.0)
-    True
+    >>> find_crossings(curves, draws=500).pairs[0].probability
+    1.0
     """
     if draws < MIN_DRAWS:
         raise InputError(f"at least {MIN_DRAWS} draws are needed for an interval, not {draws}", where="find_crossings")

@@ -24,6 +24,7 @@ from typing import Literal
 
 import numpy as np
 import numpy.typing as npt
+from scipy.optimize import brentq
 from scipy.special import log_ndtr, ndtri_exp
 
 from driftline.crossings import Crossings
@@ -57,7 +58,7 @@ class Separation:
     disorder_below, disorder_above : float
         Centre of the run of disorders where it was found.
     split : float
-        Disorder that divides the sides.
+        Disorder that divides the sides; next to a flat side the disorder at which it ends.
     sign_change : bool
         Whether the two trends have opposite signs, resolved or not.
     separated : bool
@@ -156,6 +157,10 @@ class LookElsewhere:
         """Signed significance of one test that is as improbable by chance as `z` is as the largest of all runs."""
         return float(-np.sign(z) * ndtri_exp(self.log_probability(abs(z)) - np.log(2.0))) + 0.0  # no negative zero
 
+    def uncorrected(self, z: float) -> float:
+        """The largest |significance| that `corrected` turns into `z`."""
+        return float(brentq(lambda largest: self.corrected(largest) - z, 0.0, 100.0))
+
 
 def separation_test(
     source: Curves | Crossings, *, seed: int | np.random.Generator | None = 0
@@ -185,10 +190,11 @@ def separation_test(
     statistic = _held_to_odd_size(trends, log_size, means, noise)
     correction = LookElsewhere.of(trends, rng)
     opposite = _opposite_runs(statistic)
-    if opposite is not None and correction.corrected(opposite[0]) >= THRESHOLD:
+    resolved = correction.uncorrected(THRESHOLD)
+    if opposite is not None and opposite[0] >= resolved:
         _, below, above, split = opposite
     else:
-        below, above, split = _runs_beside_the_strongest(statistic)
+        below, above, split = _runs_beside_the_strongest(statistic, resolved)
     return _outcome(curves, trends, statistic, correction, below, above, split)
 
 
@@ -264,11 +270,12 @@ def _opposite_runs(statistic: FloatArray) -> tuple[float, Run, Run, int] | None:
     return best
 
 
-def _runs_beside_the_strongest(statistic: FloatArray) -> tuple[Run, Run, int]:
+def _runs_beside_the_strongest(statistic: FloatArray, resolved: float) -> tuple[Run, Run, int]:
     """Where no change of sign is resolved: the strongest run of all, and what there is on the other side of it.
 
-    The other side is the one with the strongest run of opposite sign; if neither has any, the longer one with its
-    strongest run of the same sign. A strongest run that covers everything is cut in the middle.
+    The other side is the one with the strongest run of opposite sign, or the longer one if neither has any; of it the
+    flat part, in which nothing reaches `resolved`, or all if there is no flat part. A strongest run that covers
+    everything is cut in the middle.
     """
     points = len(statistic) - 1
     first, last = _strongest(np.abs(statistic), 0, points)
@@ -278,13 +285,22 @@ def _runs_beside_the_strongest(statistic: FloatArray) -> tuple[Run, Run, int]:
     opposite = -np.sign(statistic[first, last]) * statistic
     sides = [side for side in ((0, first), (last, points)) if side[0] < side[1]]
     strengths = [float(opposite[_strongest(opposite, *side)]) for side in sides]
-    if max(strengths) > 0:
-        side = sides[int(np.argmax(strengths))]
-        other = _strongest(opposite, *side)
-    else:
-        side = max(sides, key=lambda each: each[1] - each[0])
-        other = _strongest(np.abs(statistic), *side)
-    return (other, (first, last), first) if side[1] == first else ((first, last), other, last)
+    longer = int(np.argmax([side[1] - side[0] for side in sides]))
+    side = sides[int(np.argmax(strengths)) if max(strengths) > 0 else longer]
+    side = _flat_part(statistic, side, resolved) or side
+    other = _strongest(np.abs(statistic), *side)
+    return (other, (first, last), side[1]) if side[1] <= first else ((first, last), other, side[0])
+
+
+def _flat_part(statistic: FloatArray, side: Run, resolved: float) -> Run | None:
+    """The disorders from the far end of a side inwards among which no run reaches `resolved`; None if there are none.
+
+    The strongest run leaves out the disorders where the size dependence only begins; they are not flat.
+    """
+    first, last = side
+    parts = [(first, k) for k in range(last, first, -1)] if first == 0 else [(k, last) for k in range(first, last)]
+    strength = np.abs(statistic)
+    return next((part for part in parts if strength[_strongest(strength, *part)] < resolved), None)
 
 
 def _strongest(statistic: FloatArray, first: int, last: int) -> Run:
