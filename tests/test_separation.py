@@ -2,12 +2,15 @@
 
 from __future__ import annotations
 
+from pathlib import Path
+
 import numpy as np
 import pytest
 from scipy.stats import norm
 
 from driftline.crossings import find_crossings
 from driftline.curves import Curve, Curves, Labels
+from driftline.readers import read
 from driftline.separation import LookElsewhere, Trends, fit_trends, separation_test
 from driftline.simulate import FiniteLengthTruth, PowerLawTruth, SizeIndependentTruth, simulate
 
@@ -147,3 +150,15 @@ def test_two_sizes_are_judged_without_leaving_one_out():
     found = separation_test(simulate([8, 16], GRID, PowerLawTruth(), 0.002, 1))
     assert found.separated
     assert "opposite signs" in found.summary()
+
+
+def test_real_crossover_without_a_transition():
+    """2D Anderson model (no transition: Abrahams et al., PRL 42, 673 (1979)): flat below, on the ergodic value.
+
+    Gap ratio of the orthogonal class 0.5307 (Atas et al., PRL 110, 084101 (2013); the large-size number from memory).
+    """
+    path = Path(__file__).parents[1] / "datasets" / "anderson-square" / "curves.csv"
+    found = separation_test(read(path).relabel(ergodic_value=0.5307))
+    assert not found.separated
+    assert found.z_above < -10
+    assert (found.flat_side, found.flat_at_reference) == ("below", True)
