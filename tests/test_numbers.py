@@ -23,6 +23,7 @@ from driftline.report import numbers
         (-0.001, 0.1, "0.00(10)"),  # no minus zero
         (0.0, 0.001, "0.0000(10)"),
         (1.2, 3500.0, "0(3500)"),
+        (1e-12, 1.2e-4, "0.00000(12)"),  # nothing, seen from its error
         (2.5, 0.0, "2.5"),
         (math.nan, 1.0, "-"),
         (1.0, math.inf, "1"),

@@ -117,7 +117,8 @@ def _asymptotes(left: Axes, drift: Drift) -> None:
     """The limits of the bounded laws side by side in the strip left of 1/L = 0, each in the colour of its law."""
     low, _ = left.get_xlim()
     bounded = [(number, law.limit) for number, law in enumerate(drift.laws) if law.limit is not None]
-    left.axvline(0.0, color=style.FAINT, linewidth=0.6, zorder=1)
+    if len(drift.sizes):
+        left.axvline(0.0, color=style.FAINT, linewidth=0.6, zorder=1)
     for order, (number, limit) in enumerate(bounded, start=1):
         colour = style.PALETTE[number % len(style.PALETTE)]
         bars = np.abs([[limit.median - limit.low68], [limit.high68 - limit.median]])
@@ -136,7 +137,8 @@ def _limits(left: Axes, right: Axes, drift: Drift) -> None:
     right.set_xlim(low - 0.08 * (BEYOND * high - low), BEYOND * high)
     if not len(drift.sizes):
         left.set_ylim(0.0, 1.0)
-        left.set_yticks([])
+        for axis in (left.xaxis, right.xaxis, left.yaxis):
+            axis.set_ticks([])  # without points there is no scale
         return
     bottom, top = style.spread(drift.positions, _sd(drift))
     reach = 1.2 * max(top - bottom, 1e-9 * abs(top))  # a limit far away must not flatten the points

@@ -21,6 +21,7 @@ from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.figure import Figure
 from matplotlib.layout_engine import ConstrainedLayoutEngine
 from matplotlib.legend import Legend
+from matplotlib.lines import Line2D
 from matplotlib.mathtext import MathTextParser
 from matplotlib.ticker import AutoLocator, MaxNLocator, ScalarFormatter
 from matplotlib.transforms import ScaledTranslation
@@ -213,7 +214,8 @@ def legend_above(ax: Axes, *groups: Entries) -> None:
 
 def _narrowed(ax: Axes, pairs: list[tuple[Any, str]], height: float) -> float:
     """Add a legend with as many columns as fit, `height` inches above the axes; return its own height."""
-    for columns in range(len(pairs), 0, -1):
+    for rows in range(1, len(pairs) + 1):
+        columns = -(-len(pairs) // rows)  # rows of nearly equal length
         legend = _add_legend(ax, pairs, columns, height)
         if columns == 1 or _fits(ax, legend):
             break
@@ -234,10 +236,15 @@ def _add_legend(ax: Axes, pairs: list[tuple[Any, str]], columns: int, height: fl
         borderaxespad=0.2,
         borderpad=0.2,
         columnspacing=0.9,
-        handlelength=1.3,
+        handlelength=1.7 if any(handle_is_line(handle) for handle, _ in pairs) else 1.0,
         handletextpad=0.4,
         labelspacing=0.3,
     )
+
+
+def handle_is_line(handle: Any) -> bool:
+    """Whether a legend entry is a line, whose dashes need room to be told apart."""
+    return isinstance(handle, Line2D) and handle.get_linestyle() != "None"
 
 
 def _fits(ax: Axes, legend: Legend) -> bool:
@@ -245,9 +252,7 @@ def _fits(ax: Axes, legend: Legend) -> bool:
     return bool(legend.get_window_extent().width <= ROOM * ax.get_window_extent().width)
 
 
-def _blank() -> Any:
-    from matplotlib.lines import Line2D
-
+def _blank() -> Line2D:
     return Line2D([], [], linestyle="none")
 
 

@@ -30,7 +30,7 @@ def rounded(value: float, error: float, digits: int = DIGITS) -> str:
     if not _usable(error) or error == 0:
         return significant(value, 6)
     last = _last_digit(value, error, digits)
-    if not _plain(value, last):
+    if not _plain(value, error):
         shift = exponent(value) if value else exponent(error)
         return f"{_at(value, last).scaleb(-shift):f}e{shift:+03d}"
     return f"{_at(value, last):.{max(0, -last)}f}"
@@ -126,6 +126,7 @@ def _at(value: float, last: int) -> Decimal:
     )  # + drops minus zero
 
 
-def _plain(value: float, last: int) -> bool:
-    top = exponent(value) if value else last
-    return max(top, last) in PLAIN and last > -9
+def _plain(value: float, error: float) -> bool:
+    """Whether neither value nor error asks for an exponent."""
+    top = max(exponent(value), exponent(error)) if value else exponent(error)
+    return top in PLAIN and exponent(error) > -8

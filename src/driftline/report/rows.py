@@ -136,7 +136,8 @@ def drift(analysis: Analysis) -> Table:
 def drift_sentences(analysis: Analysis) -> list[str]:
     """What the drift says beyond its table."""
     found = analysis.drift
-    sentences = [*found.excluded, *([found.note] if found.note else [])]
+    # where nothing was fitted at all, the note says so, and the table of crossings shows why
+    sentences = [found.note] if found.note else list(found.excluded)
     if found.probability_bounded is not None:
         sentences.append(f"Bounded as L grows: probability {numbers.probability(found.probability_bounded)}.")
     if found.rate_per_site is not None:

@@ -75,9 +75,15 @@ def _wrapped(text: str, role: str, indent: str = "", first: str | None = None) -
 
 
 def _table(table: rows.Table) -> Iterator[tuple[str, str]]:
+    """Columns under their names; a first cell too long for the page stands on a line of its own."""
     yield HEADING, table.heading
     everything = [table.columns, *table.rows]
     widths = [max(len(row[column]) for row in everything) for column in range(len(table.columns))]
     gap = "  " if sum(widths) + 2 * len(widths) <= WIDTH else " "
-    for row in everything:
-        yield TEXT, "  " + gap.join(cell.ljust(width) for cell, width in zip(row, widths, strict=True)).rstrip()
+    widths[0] = min(widths[0], WIDTH - 2 - sum(widths[1:]) - len(gap) * (len(widths) - 1))
+    for first, *others in everything:
+        if len(first) > widths[0]:
+            yield TEXT, f"  {first}"
+            first = ""
+        cells = (cell.ljust(width) for cell, width in zip((first, *others), widths, strict=True))
+        yield TEXT, "  " + gap.join(cells).rstrip()
