@@ -64,7 +64,10 @@ def test_options_override_the_file_and_the_file_the_defaults(tmp_path):
             "{file}, ansatze: 'power-law' is given twice; give each ansatz once",
         ),
         ("labels = 3", "{file}, labels: must be a table of labels, not 3"),
-        ("[labels]\nobservabel = 'r'", "{file}, labels: unknown label 'observabel'; did you mean observable or observable_symbol?"),
+        (
+            "[labels]\nobservabel = 'r'",
+            "{file}, labels: unknown label 'observabel'; did you mean observable or observable_symbol?",
+        ),
         ("[labels]\nergodic_value = 'x'", "{file}, labels.ergodic_value: must be a finite number, not 'x'"),
         ("[labels]\nobservable = 3", "{file}, labels.observable: must be text, not 3"),
         ("[labels]\ndimension = -1", "{file}, labels: dimension must be positive, not -1"),
