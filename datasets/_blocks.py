@@ -39,7 +39,9 @@ class Study:
     disorders : dict
         ``{size: tuple of disorders}``.
     labels : dict
-        Attributes of curves.h5: names, symbols and reference values.
+        Names, symbols and reference values: attributes of curves.h5, comment lines at the top of curves.csv.
+    grain : int
+        Disorders enter the seed as whole numbers, in units of 1/grain.
     """
 
     folder: Path
@@ -48,6 +50,7 @@ class Study:
     plan: dict[int, tuple[int, int]]
     disorders: dict[int, tuple[float, ...]]
     labels: dict[str, str | float]
+    grain: int = 1_000_000
 
     @property
     def blocks(self):
@@ -57,7 +60,7 @@ class Study:
     def block(self, size, disorder, number):
         """One block: realisations, mean, and sum of squared deviations of the values."""
         realisations = self.plan[size][0]
-        rng = np.random.default_rng([self.seed, size, round(1_000_000 * disorder), number])
+        rng = np.random.default_rng([self.seed, size, round(self.grain * disorder), number])
         values = np.array([self.sample(size, disorder, rng) for _ in range(realisations)])
         return size, disorder, number, realisations, values.mean(), np.sum((values - values.mean()) ** 2)
 
@@ -117,6 +120,7 @@ def write(folder, rows, labels):
     """Write curves.csv and curves.h5 into `folder`, each under a temporary name first."""
     table = folder / "curves.csv.part"
     with table.open("w", newline="\n") as file:
+        file.writelines(f"# {name}: {value}\n" for name, value in labels.items())
         file.write("size,disorder,mean,error,samples\n")
         for size, disorder, mean, error, samples in rows:
             file.write(f"{size},{disorder:g},{mean:.8f},{error:.8f},{samples}\n")
