@@ -14,6 +14,7 @@ from analyses import OPENING, made_analysis, made_curves
 import driftline
 from driftline import analysis as analysis_module
 from driftline.cli import main
+from driftline.progress import part, terminal_progress
 from driftline.report import writers
 from driftline.report.summary import summary
 from driftline.simulate import PowerLawTruth, simulate
@@ -262,7 +263,8 @@ def test_ansatze_lists_every_form(data, capsys):
     assert main(["ansatze"]) == 0
     out = capsys.readouterr().out
     assert all(f"\n{name}  (" in out for name in available())
-    assert "uniform from -2.5 to 12.5" in out  # 0 to 10, a quarter wider on each side
+    assert "uniform from -1.5 to 13.5" in out  # 1 to 11, a quarter wider on each side
+    assert max(map(len, out.splitlines())) <= 80
     assert main(["ansatze", str(data)]) == 0
     assert "uniform from 11.25 to 21.75" in capsys.readouterr().out  # 13 to 20 likewise
 
@@ -311,6 +313,31 @@ def test_the_written_configuration_reproduces_the_result(real):
     old, new = ((place / name / "result.json").read_text().split('"timing"')[0] for name in ("data-driftline", "again"))
     assert old == new
     assert len(old) > 1000
+
+
+def test_progress_only_on_a_terminal(monkeypatch, capsys):
+    """Standard error stays empty when nobody watches; on a terminal it says what is being done and how far it is."""
+    with terminal_progress() as progress:
+        assert progress is None
+    assert part(progress, 0.0, 0.5) is None
+    monkeypatch.setattr(sys.stderr, "isatty", lambda: True)
+    monkeypatch.setenv("FORCE_COLOR", "1")
+    monkeypatch.setenv("TERM", "xterm")
+    monkeypatch.setenv("COLUMNS", "100")
+    with terminal_progress() as progress:
+        part(progress, 0.2, 0.6)("finding crossings", 0.5)
+    out, err = capsys.readouterr()
+    assert out == ""
+    assert "finding crossings" in err
+
+
+def test_progress_of_a_part():
+    """A part of a job moves the bar from its own start to its own end."""
+    told = []
+    inner = part(lambda text, fraction: told.append((text, fraction)), 0.5, 1.0)
+    inner("a", 0.0)
+    inner("b", 1.0)
+    assert told == [("a", 0.5), ("b", 1.0)]
 
 
 def test_summary_is_public():

@@ -16,6 +16,7 @@ from driftline.figures.collapse import draw_collapse
 from driftline.figures.curves import draw_curves
 from driftline.figures.drift import draw_drift
 from driftline.figures.gallery import FIGURES
+from driftline.scaling.ansatz import available, parse_ansatz
 
 LONG = Labels(
     observable_symbol=r"\overline{\langle S_{\mathrm{half\ chain}}(t\to\infty)\rangle}/S_{\mathrm{Page}}(L)",
@@ -220,3 +221,20 @@ def test_collapse_shown_is_the_headline():
     # the basis of the hand-built analysis is its last ansatz, which also has the highest evidence
     (caption,) = [figure.caption(analysis) for figure in FIGURES if figure.name == "collapse"]
     assert caption.startswith("Collapse under power-law:linear-drift at the posterior median (W_c = 16.53(12), nu = ")
+
+
+@pytest.mark.parametrize("name", available())
+def test_every_ansatz_has_an_axis_label(name):
+    """The scaled variable of each form can be typeset, whatever index the disorder's symbol has."""
+    curves = made_curves(labels=Labels(disorder_symbol="h_{x}"))
+    text = style.math(parse_ansatz(name, curves).form.label.format(W="{h_{x}}"))
+    assert text.startswith("$")
+    assert "h_{x}" in text
+
+
+def test_a_form_without_critical_disorder_is_drawn():
+    """Where no ansatz has a critical disorder, figure and caption do without it."""
+    analysis = made_analysis(made_curves(), names=("size-independent",), code="undecided", crossover=False)
+    (drawing,) = [figure for figure in FIGURES if figure.name == "collapse"]
+    assert overlapping(drawing.draw(analysis)) == []
+    assert drawing.caption(analysis).startswith("Collapse under size-independent at the posterior median with one ")

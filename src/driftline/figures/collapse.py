@@ -62,12 +62,12 @@ class CollapseDrawing(Drawing):
     def caption(self, analysis: Analysis) -> str:
         """What is to be seen."""
         fit = headline_fit(analysis)
-        values = ", ".join(
-            f"{name} = {numbers.short(fit.parameters[name])}" for name in ("W_c", "nu") if name in fit.parameters
-        )
+        names = [each.name for each in fit.ansatz.parameters if each.name in fit.parameters]
+        values = ", ".join(f"{name} = {numbers.short(fit.parameters[name])}" for name in names)
+        at = f"the posterior median ({values})" if values else "the posterior median"
         return (
-            f"Collapse under {fit.ansatz.name} at the posterior median ({values}) with one standard "
-            "error, and the scaling function with its 68 % band; below, residuals in units of the error."
+            f"Collapse under {fit.ansatz.name} at {at} with one standard error, and the scaling function with its 68 % "
+            "band; below, residuals in units of the error."
         )
 
     def draw(self, analysis: Analysis) -> Figure:

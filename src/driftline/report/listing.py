@@ -10,7 +10,7 @@ from driftline.curves import Curve, Curves
 from driftline.report.summary import WIDTH
 from driftline.scaling.ansatz import available, parse_ansatz
 
-EXAMPLE = "Priors that depend on the data are shown for sizes 8 to 16 and disorders from 0 to 10; give PATH for yours."
+EXAMPLE = "Priors that depend on the data are shown for sizes 8 to 16 and disorders from 1 to 11; give PATH for yours."
 
 
 def listing(curves: Curves | None = None) -> str:
@@ -26,11 +26,13 @@ def listing(curves: Curves | None = None) -> str:
         ansatz = parse_ansatz(name, curves or _example())
         lines.append(f"{name}  ({ansatz.hypothesis})")
         lines += textwrap.wrap(ansatz.formula, WIDTH, initial_indent="  ", subsequent_indent="    ")
-        lines += [f"  {each.name:6} {each.prior.describe()} ({each.meaning})" for each in ansatz.parameters]
+        for each in ansatz.parameters:
+            text = f"{each.name:6} {each.prior.describe()} ({each.meaning})"
+            lines += textwrap.wrap(text, WIDTH, initial_indent="  ", subsequent_indent=" " * 9, break_on_hyphens=False)
         lines.append("")
     return "\n".join(lines)
 
 
 def _example() -> Curves:
-    grid = np.linspace(0.0, 10.0, 11)
-    return Curves([Curve(size, grid, np.tanh((5 - grid) * size / 40), np.full(11, 0.01)) for size in (8, 12, 16)])
+    grid = np.linspace(1.0, 11.0, 11)
+    return Curves([Curve(size, grid, np.tanh((6 - grid) * size / 40), np.full(11, 0.01)) for size in (8, 12, 16)])
