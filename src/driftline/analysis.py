@@ -37,8 +37,8 @@ class Crossover:
         Critical disorder, averaged over the `basis` by evidence.
     systematic : float or None
         What the stability refits add to its error.
-    nu : Interval
-        Correlation-length exponent.
+    nu : Interval or None
+        Correlation-length exponent, averaged over those forms of the basis that have one.
     basis : tuple of str
         The ansätze averaged over: transition forms with the leading correction where any was fitted, since
         corrections to scaling exist in every real system whatever the evidence says of their size.
@@ -46,7 +46,7 @@ class Crossover:
 
     disorder: Interval
     systematic: float | None
-    nu: Interval
+    nu: Interval | None
     basis: tuple[str, ...]
 
 
@@ -156,15 +156,19 @@ def _crossover(basis: Sequence[CollapseFit], stability: Sequence[StabilityRow]) 
     """Average of the basis by evidence."""
     if not basis:
         return None
-    weights = np.array(weigh(basis))
-    share = np.repeat(weights / [len(fit.samples) for fit in basis], [len(fit.samples) for fit in basis])
-    disorder = np.concatenate([fit.draws("W_c") for fit in basis])
-    nu = np.concatenate([fit.draws("nu") for fit in basis])
-    extra = [(w, systematic(fit, stability)) for w, fit in zip(weights, basis, strict=True)]
+    extra = [(w, systematic(fit, stability)) for w, fit in zip(weigh(basis), basis, strict=True)]
     known = [(w, value) for w, value in extra if value is not None]
+    with_exponent = [fit for fit in basis if "nu" in fit.names]
     return Crossover(
-        disorder=Interval.of_draws(disorder, share),
+        disorder=_averaged(basis, "W_c"),
         systematic=float(np.sqrt(sum(w * v**2 for w, v in known) / sum(w for w, _ in known))) if known else None,
-        nu=Interval.of_draws(nu, share),
+        nu=_averaged(with_exponent, "nu") if with_exponent else None,
         basis=tuple(fit.ansatz.name for fit in basis),
     )
+
+
+def _averaged(fits: Sequence[CollapseFit], name: str) -> Interval:
+    """Interval of one parameter over all fits, each weighted by its evidence."""
+    counts = [len(fit.samples) for fit in fits]
+    weights = np.repeat(np.array(weigh(fits)) / counts, counts)
+    return Interval.of_draws(np.concatenate([fit.draws(name) for fit in fits]), weights)

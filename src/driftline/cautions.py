@@ -10,6 +10,7 @@ from dataclasses import dataclass, field
 
 import numpy as np
 
+from driftline import numerals
 from driftline.collapse import CollapseFit, Comparison
 from driftline.crossings import Crossings
 from driftline.curves import Curves
@@ -147,7 +148,7 @@ def drift_unbounded(case: Case) -> Caution | None:
     if p is None or p > 1 - ESTABLISHED:
         return None
     rate = case.drift.rate_per_site
-    speed = f" by {rate.median:.3g} per site" if rate else ""
+    speed = f" by {numerals.median(rate)} per unit of size" if rate else ""
     return Caution(
         "DRIFT_UNBOUNDED",
         f"the crossings move with size{speed} and laws without a limit hold {1 - p:.3f} of the probability",
@@ -248,8 +249,8 @@ def outside_range(case: Case) -> Caution | None:
     interval = fit.parameters["W_c"]
     return Caution(
         "OUTSIDE_RANGE",
-        f"W_c from {interval.low95:.4g} to {interval.high95:.4g} (95 %) reaches beyond the measured disorders {low:g} "
-        f"to {high:g} with probability {share:.2f}",
+        f"W_c in {numerals.bracket(interval)} (95 %) reaches beyond the measured disorders {low:g} to {high:g} "
+        f"with probability {share:.2f}",
         "measure beyond that end before quoting a critical disorder",
         {"probability_outside": share},
     )
@@ -274,7 +275,7 @@ def prior_limited(case: Case) -> Caution | None:
 def exponent_bound(case: Case) -> Caution | None:
     """nu lies below the bound for this kind of disorder."""
     fit, bound = case.headline, exponent_limit(case.curves)
-    if fit is None or bound is None:
+    if fit is None or bound is None or "nu" not in fit.names:
         return None
     limit, source = bound
     share = float(np.mean(fit.draws("nu") < limit))
@@ -282,7 +283,7 @@ def exponent_bound(case: Case) -> Caution | None:
         return None
     return Caution(
         "EXPONENT_BOUND",
-        f"nu = {fit.parameters['nu'].median:.2f} lies below the bound {limit:.3g} for "
+        f"nu = {numerals.short(fit.parameters['nu'])} lies below the bound {limit:.3g} for "
         f"{case.curves.labels.disorder_kind} disorder in d = {case.curves.labels.dimension:g} ({source}) "
         f"with probability {share:.3f}",
         "read the exponent as pre-asymptotic: these sizes do not show the critical behaviour of the infinite system",

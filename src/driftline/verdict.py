@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass, field
 
+from driftline import numerals
 from driftline.cautions import CROSSES, ESTABLISHED, Case, Caution, cautions
 
 __all__ = ["Case", "Caution", "Verdict", "judge"]
@@ -80,7 +81,7 @@ def transition_conditions(
         (
             probability is not None and probability >= ESTABLISHED,
             "no rival form was fitted, so nothing was compared" if probability is None else
-            f"forms with a critical disorder hold {probability:.2f} of the probability and {ESTABLISHED} are asked for",
+            f"forms with a critical disorder hold {probability:.3f} of the probability, and {ESTABLISHED} are asked for",
         ),
         (crossing == pairs, f"{crossing} of {pairs} pairs of neighbouring sizes cross inside the common window"),
         (case.headline is not None, "no form with a critical disorder was fitted"),
@@ -98,12 +99,12 @@ def _transition_statement(case: Case) -> str:
     assert fit is not None  # a condition of this verdict
     wc = fit.parameters["W_c"]
     return (
-        f"The data support a transition: curves separate on both sides of {case.curves.labels.disorder_symbol} between "
-        f"{wc.low95:.4g} and {wc.high95:.4g} (95 %) and forms with a critical disorder describe them best."
+        "The data support a transition: curves separate on both sides of a crossing, and forms with a critical "
+        f"disorder describe them best, with {case.curves.labels.disorder_symbol}_c in {numerals.bracket(wc)} (95 %)."
     )
 
 
 def _drift_statement(case: Case, drift: float) -> str:
     rate = case.drift.rate_per_site
-    speed = f" by {rate.median:.3g} per site (95 %: {rate.low95:.3g} to {rate.high95:.3g})" if rate else ""
+    speed = f" by {numerals.median(rate)} per unit of size, {numerals.bracket(rate)} (95 %)" if rate else ""
     return f"The crossover moves with size{speed}; drifting forms hold {drift:.3f} of the probability."

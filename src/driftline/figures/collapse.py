@@ -8,9 +8,9 @@ import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
+from driftline import numerals
 from driftline.figures import style
 from driftline.figures.base import Drawing
-from driftline.report import numbers
 
 if TYPE_CHECKING:
     from driftline.analysis import Analysis
@@ -63,7 +63,7 @@ class CollapseDrawing(Drawing):
         """What is to be seen."""
         fit = headline_fit(analysis)
         names = [each.name for each in fit.ansatz.parameters if each.name in fit.parameters]
-        values = ", ".join(f"{name} = {numbers.short(fit.parameters[name])}" for name in names)
+        values = ", ".join(f"{name} = {numerals.short(fit.parameters[name])}" for name in names)
         at = f"the posterior median ({values})" if values else "the posterior median"
         return (
             f"Collapse under {fit.ansatz.name} at {at} with one standard error, and the scaling function with its 68 % "

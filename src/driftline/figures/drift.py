@@ -12,7 +12,7 @@ from matplotlib.figure import Figure
 from driftline.curves import FloatArray, Labels
 from driftline.figures import style
 from driftline.figures.base import Drawing
-from driftline.report.numbers import probability
+from driftline.numerals import probability
 
 if TYPE_CHECKING:
     from driftline.analysis import Analysis

@@ -3,9 +3,10 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import partial
 from typing import TYPE_CHECKING
 
-from driftline.report import numbers
+from driftline import numerals
 
 if TYPE_CHECKING:
     from driftline.analysis import Analysis
@@ -48,6 +49,9 @@ def reasons(analysis: Analysis) -> list[str]:
     return new + ([f"see below: {', '.join(repeated)}"] if repeated else [])
 
 
+_VALUE_AND_LIMITS = (numerals.short, partial(numerals.bracket, level=68), numerals.bracket)
+
+
 def crossover(analysis: Analysis) -> Table:
     """Crossover disorder and exponent with both intervals and the systematic part."""
     found = analysis.crossover
@@ -58,12 +62,16 @@ def crossover(analysis: Analysis) -> Table:
     rows = (
         (
             f"{disorder(analysis)}_c" + (f" ({unit})" if unit else ""),
-            numbers.short(found.disorder),
-            numbers.bracket(found.disorder, 68),
-            numbers.bracket(found.disorder, 95),
+            *(write(found.disorder) for write in _VALUE_AND_LIMITS),
             systematic(analysis),
         ),
-        ("nu", numbers.short(found.nu), numbers.bracket(found.nu, 68), numbers.bracket(found.nu, 95), numbers.MISSING),
+        (
+            "nu",
+            numerals.short(found.nu),
+            numerals.bracket(found.nu, 68),
+            numerals.bracket(found.nu, 95),
+            numerals.MISSING,
+        ),
     )
     return Table(f"Crossover, from {' and '.join(found.basis)}", columns, rows)
 
@@ -72,8 +80,8 @@ def systematic(analysis: Analysis) -> str:
     """Systematic part of the crossover disorder, to the digits of the statistical one."""
     found = analysis.crossover
     if found is None or found.systematic is None:
-        return numbers.MISSING
-    return "+-" + numbers.rounded(found.systematic, found.disorder.sd)
+        return numerals.MISSING
+    return "+-" + numerals.rounded(found.systematic, found.disorder.sd)
 
 
 def collapse(analysis: Analysis) -> Table:
@@ -84,12 +92,12 @@ def collapse(analysis: Analysis) -> Table:
     rows = tuple(
         (
             fits[index].ansatz.name,
-            numbers.fixed(fits[index].log_evidence - best, 1),
-            numbers.probability(analysis.comparison.probabilities[index]),
-            numbers.short(fits[index].parameters.get("W_c")),
-            numbers.short(fits[index].parameters.get("nu")),
-            numbers.fixed(fits[index].quality.chi2_per_dof, 2),
-            numbers.probability(fits[index].quality.p_value),
+            numerals.fixed(fits[index].log_evidence - best, 1),
+            numerals.probability(analysis.comparison.probabilities[index]),
+            numerals.short(fits[index].parameters.get("W_c")),
+            numerals.short(fits[index].parameters.get("nu")),
+            numerals.fixed(fits[index].quality.chi2_per_dof, 2),
+            numerals.probability(fits[index].quality.p_value),
         )
         for index in order
     )
@@ -102,11 +110,11 @@ def crossings(analysis: Analysis) -> Table:
     rows = tuple(
         (
             f"{each.sizes[0]:g}, {each.sizes[1]:g}",
-            numbers.probability(each.probability),
-            numbers.probability(each.separated),
-            numbers.short(each.disorder),
-            numbers.bracket(each.disorder),
-            numbers.short(each.inverse_nu),
+            numerals.probability(each.probability),
+            numerals.probability(each.separated),
+            numerals.short(each.disorder),
+            numerals.bracket(each.disorder),
+            numerals.short(each.inverse_nu),
         )
         for each in analysis.crossings.adjacent
     )
@@ -122,10 +130,10 @@ def drift(analysis: Analysis) -> Table:
             law.name,
             law.formula,
             "yes" if law.bounded else "no",
-            numbers.probability(law.probability),
-            numbers.short(law.limit),
-            numbers.bracket(law.limit),
-            numbers.fixed(law.chi2_per_dof, 2),
+            numerals.probability(law.probability),
+            numerals.short(law.limit),
+            numerals.bracket(law.limit),
+            numerals.fixed(law.chi2_per_dof, 2),
         )
         for law in laws
     )
@@ -139,12 +147,14 @@ def drift_sentences(analysis: Analysis) -> list[str]:
     # where nothing was fitted at all, the note says so, and the table of crossings shows why
     sentences = [found.note] if found.note else list(found.excluded)
     if found.probability_bounded is not None:
-        sentences.append(f"Bounded as L grows: probability {numbers.probability(found.probability_bounded)}.")
+        sentences.append(f"Bounded as L grows: probability {numerals.probability(found.probability_bounded)}.")
     if found.rate_per_site is not None:
-        rate, limits = numbers.short(found.rate_per_site), numbers.bracket(found.rate_per_site)
+        rate, limits = numerals.short(found.rate_per_site), numerals.bracket(found.rate_per_site)
         sentences.append(f"Drift per unit of size: {rate}, 95 % {limits}.")
     if found.deciding_size is not None:
-        sentences.append(f"The two best laws part at L = {numbers.significant(found.deciding_size)} at today's errors.")
+        sentences.append(
+            f"The two best laws part at L = {numerals.significant(found.deciding_size)} at today's errors."
+        )
     return sentences
 
 
@@ -155,9 +165,9 @@ def stability(analysis: Analysis) -> Table:
             row.ansatz,
             f"{row.smallest_size:g}",
             f"{row.window[0]:g} to {row.window[1]:g}",
-            numbers.short(row.disorder),
-            numbers.bracket(row.disorder),
-            numbers.probability(row.p_value),
+            numerals.short(row.disorder),
+            numerals.bracket(row.disorder),
+            numerals.probability(row.p_value),
         )
         for row in analysis.stability
     )

@@ -6,8 +6,8 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
+from driftline import numerals
 from driftline.inference.intervals import Interval
-from driftline.report import numbers
 
 
 @pytest.mark.parametrize(
@@ -31,7 +31,7 @@ from driftline.report import numbers
 )
 def test_value_with_error(value, error, text):
     """The bracket holds two significant digits of the error in units of the last digits, worked out by hand."""
-    assert numbers.plus_minus(value, error) == text
+    assert numerals.plus_minus(value, error) == text
 
 
 @given(
@@ -42,22 +42,22 @@ def test_rounding_is_far_below_the_error(value, error):
     """What is printed differs from the value by at most 5 % of the error."""
     # two significant digits: the last digit is at most a tenth of the error, so rounding moves it by a
     # twentieth; beyond fifteen digits of the value the limit is the double itself
-    assert abs(float(numbers.rounded(value, error)) - value) <= 0.0501 * error + 1e-14 * abs(value)
+    assert abs(float(numerals.rounded(value, error)) - value) <= 0.0501 * error + 1e-14 * abs(value)
 
 
 def test_brackets_and_gaps():
     """Limits are rounded alike, and what is missing is a dash."""
     interval = Interval(16.53, 16.41, 16.65, 16.31, 16.78)
-    assert numbers.bracket(interval) == "[16.31, 16.78]"
-    assert numbers.bracket(interval, 68) == "[16.41, 16.65]"
-    assert numbers.short(interval) == "16.53(12)"
-    assert (numbers.bracket(None), numbers.short(None), numbers.fixed(None, 2)) == ("-", "-", "-")
-    assert (numbers.significant(None), numbers.probability(None), numbers.probability(math.nan)) == ("-", "-", "-")
+    assert numerals.bracket(interval) == "[16.31, 16.78]"
+    assert numerals.bracket(interval, 68) == "[16.41, 16.65]"
+    assert numerals.short(interval) == "16.53(12)"
+    assert (numerals.bracket(None), numerals.short(None), numerals.fixed(None, 2)) == ("-", "-", "-")
+    assert (numerals.significant(None), numerals.probability(None), numerals.probability(math.nan)) == ("-", "-", "-")
 
 
 def test_probabilities_are_never_rounded_to_certainty():
     """Zero and one are printed only where they are exact."""
-    assert [numbers.probability(p) for p in (0.0, 1e-9, 0.994, 0.9999, 1.0)] == [
+    assert [numerals.probability(p) for p in (0.0, 1e-9, 0.994, 0.9999, 1.0)] == [
         "0.00",
         "<0.01",
         ">0.99",
