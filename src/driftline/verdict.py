@@ -81,7 +81,7 @@ def transition_conditions(
         (
             probability is not None and probability >= ESTABLISHED,
             "no rival form was fitted, so nothing was compared" if probability is None else
-            f"forms with a critical disorder hold {probability:.3f} of the probability, and {ESTABLISHED} are asked for",
+            f"forms with a critical disorder hold {probability:.3f} of the probability; {ESTABLISHED} are asked for",
         ),
         (crossing == pairs, f"{crossing} of {pairs} pairs of neighbouring sizes cross inside the common window"),
         (case.headline is not None, "no form with a critical disorder was fitted"),
