@@ -16,20 +16,22 @@ import numpy as np
 from scipy.special import logsumexp
 from scipy.stats import chi2
 
-from driftline.curves import Curves, FloatArray
-from driftline.inference.importance import Mixture, WeightedDraws, adapt, fit_mixture, importance_sample
+from driftline.curves import MIN_SIZES, Curves, FloatArray
+from driftline.inference.importance import Mixture, WeightedDraws, adapt, fit_mixture, sample_until
 from driftline.inference.intervals import Interval
 from driftline.inference.modes import find_modes
 from driftline.inference.sampling import WALKERS, run_chain
 from driftline.scaling.ansatz import Ansatz, parse_ansatz
 from driftline.scaling.defaults import DEFAULT_ANSATZE
 from driftline.scaling.likelihood import TAU_PRIOR, Posterior
+from driftline.sensitivity import PRIOR_SETS, PriorShift
 
 Progress = Callable[[str, float], None]
 
 #: Factor e on tau for the physical parameters; see the module's docstring.
 UNDERSMOOTHING = 1.0
 EVIDENCE_DRAWS = 6000
+PREDICTION_DRAWS = 400
 QUICK_DRAWS = 2000
 POSTERIOR_DRAWS = 4000
 CHECK_DRAWS = 100
@@ -91,6 +93,31 @@ class CollapsedPoints:
 
 
 @dataclass(frozen=True, eq=False)
+class HeldOut:
+    """How well the largest size is predicted from the smaller ones.
+
+    Parameters
+    ----------
+    size : float
+        The largest size.
+    log_score, log_score_error : float
+        ln p(largest | smaller) = ln Z(all) - ln Z(smaller), in the unit of the observable, and its Monte Carlo error.
+    chi2_per_point : float
+        (y - prediction)^T (noise + predictive covariance)^-1 (y - prediction) over the number of points.
+    disorder, predicted, predicted_sd : array, shape (n,)
+        The predicted curve at the disorders of that size, without measurement noise.
+    """
+
+    size: float
+    log_score: float
+    log_score_error: float
+    chi2_per_point: float
+    disorder: FloatArray
+    predicted: FloatArray
+    predicted_sd: FloatArray
+
+
+@dataclass(frozen=True, eq=False)
 class CollapseFit:
     """One ansatz fitted to one data set; built by `fit_collapse`."""
 
@@ -108,7 +135,8 @@ class CollapseFit:
     function_x: FloatArray
     function_mean: FloatArray
     function_sd: FloatArray
-    held_out: None = None
+    held_out: HeldOut | None = None
+    prior_sensitivity: tuple[PriorShift, ...] = ()
 
     def draws(self, name: str) -> FloatArray:
         """Posterior draws of one parameter, shape (n,)."""
@@ -141,7 +169,10 @@ class CollapseFit:
                 "chi2_per_dof": q.chi2_per_dof, "p_value": q.p_value,
                 "noise_scale": q.noise_scale, "max_residual": q.max_residual,
             },
-            "held_out": {"log_score": None, "chi2_per_point": None},
+            "held_out": {
+                "log_score": None if self.held_out is None else self.held_out.log_score,
+                "chi2_per_point": None if self.held_out is None else self.held_out.chi2_per_point,
+            },
             "sampler": {
                 "effective_samples": s.effective_samples, "autocorrelation": s.autocorrelation,
                 "converged": s.converged,
@@ -218,17 +249,57 @@ def fit_collapse(
     part = _range(tell, f"{form.name}: sampling", 0.1, 0.8)
     mixture, health = _sampled(target, mixture, draws, rng, quick, part)
     count = QUICK_DRAWS if quick else EVIDENCE_DRAWS
-    draws = importance_sample(target, mixture, count, rng)
+    draws = sample_until(target, mixture, count, EFFECTIVE_LEAST, rng)
     tell(f"{form.name}: parameters", 0.85)
     log_tau = Interval.of_draws(draws.places[:, -2], draws.weights)
     held = replace(target, log_tau=log_tau.median + UNDERSMOOTHING)
-    physical = importance_sample(held, _adapted(held, rng)[0], count, rng)
+    physical = sample_until(held, _adapted(held, rng)[0], count, EFFECTIVE_LEAST, rng)
+    tell(f"{form.name}: predicting the largest size", 0.9)
+    held_out = _held_out(target, draws, rng)
     tell(f"{form.name}: checking", 0.95)
-    return _result(held, draws, physical, health, rng)
+    fit = _result(held, draws, physical, health, rng)
+    return replace(fit, held_out=held_out, prior_sensitivity=_prior_shifts(target, draws, held, physical))
 
 
 def _range(tell: Progress, text: str, start: float, end: float) -> Callable[[float], None]:
     return lambda fraction: tell(text, start + (end - start) * fraction)
+
+
+def _held_out(target: Posterior, full: WeightedDraws, rng: np.random.Generator) -> HeldOut | None:
+    """Leave the means of the largest size out; None if a single size would be left."""
+    largest = target.curves.curves[-1]
+    if target.curves.sizes.size <= MIN_SIZES:
+        return None
+    smaller = replace(target, left_out=largest.size)
+    draws = sample_until(smaller, _adapted(smaller, rng)[0], QUICK_DRAWS, EFFECTIVE_LEAST, rng)
+    at = ~smaller.fitted
+    predicted = smaller.predictions(draws.resample(PREDICTION_DRAWS, rng), rng)[:, at]
+    mean, covariance = predicted.mean(axis=0), np.cov(predicted, rowvar=False)
+    offset = largest.mean - mean
+    return HeldOut(
+        size=largest.size,
+        log_score=full.log_evidence - draws.log_evidence,
+        log_score_error=float(np.hypot(full.log_evidence_error, draws.log_evidence_error)),
+        chi2_per_point=float(offset @ np.linalg.solve(largest.noise + covariance, offset)) / offset.size,
+        disorder=largest.disorder,
+        predicted=mean,
+        predicted_sd=np.sqrt(np.diag(covariance)),
+    )
+
+
+def _prior_shifts(
+    target: Posterior, draws: WeightedDraws, held: Posterior, physical: WeightedDraws
+) -> tuple[PriorShift, ...]:  # fmt: skip
+    """Evidence and W_c under the other declared sets of priors, by reweighting the draws."""
+    critical = [i for i, p in enumerate(held.parameters) if p.name == "W_c"]
+    found = []
+    for name, change in PRIOR_SETS.items():
+        evidence = draws.reweighted(change(target.parameters, draws.places))
+        moved = physical.reweighted(change(held.parameters, physical.places))
+        disorder = Interval.of_draws(moved.places[:, critical[0]], moved.weights) if critical else None
+        shift = evidence.log_evidence - draws.log_evidence
+        found.append(PriorShift(name, shift, disorder, min(evidence.effective, moved.effective)))
+    return tuple(found)
 
 
 def _adapted(target: Posterior, rng: np.random.Generator) -> tuple[Mixture, WeightedDraws]:

@@ -21,6 +21,7 @@ ROUNDS = 8
 ROUND_DRAWS = 1500
 ENOUGH = 0.4  # effective fraction at which adaptation stops
 COMPONENTS = 4
+MOST_REPEATS = 9
 BROAD_WEIGHT, BROAD_SCALE = 0.1, 3.0
 
 
@@ -98,6 +99,10 @@ class WeightedDraws:
         n = self.log_weights.size
         return float(np.sqrt(max(n / self.effective - 1, 0) / n))
 
+    def reweighted(self, log_factor: FloatArray) -> WeightedDraws:
+        """The same draws of another target, whose log density is larger by `log_factor`, shape (n,)."""
+        return WeightedDraws(self.places, self.log_weights + log_factor)
+
     def resample(self, count: int, rng: np.random.Generator) -> FloatArray:
         """`count` equally weighted draws by systematic resampling, in random order."""
         reached = np.cumsum(self.weights)
@@ -110,6 +115,21 @@ def importance_sample(target: LogDensity, mixture: Mixture, count: int, rng: np.
     places = mixture.draw(count, rng)
     chunks = (target(places[i : i + 256]) for i in range(0, count, 256))
     return WeightedDraws(places, np.concatenate(list(chunks)) - mixture.log_density(places))
+
+
+def sample_until(
+    target: LogDensity, mixture: Mixture, count: int, wanted: float, rng: np.random.Generator
+) -> WeightedDraws:  # fmt: skip
+    """`count` weighted draws, and as many again, up to `MOST_REPEATS` times, until `wanted` of them are effective."""
+    draws = importance_sample(target, mixture, count, rng)
+    for _ in range(MOST_REPEATS):
+        if draws.effective >= wanted:
+            break
+        more = importance_sample(target, mixture, count, rng)
+        draws = WeightedDraws(
+            np.concatenate([draws.places, more.places]), np.concatenate([draws.log_weights, more.log_weights])
+        )
+    return draws
 
 
 def adapt(target: LogDensity, mixture: Mixture, rng: np.random.Generator) -> tuple[Mixture, WeightedDraws]:

@@ -22,6 +22,7 @@ from functools import cached_property
 
 import numpy as np
 import scipy.linalg
+from numpy.typing import NDArray
 
 from driftline.curves import Curves, FloatArray
 from driftline.scaling.ansatz import Ansatz
@@ -57,6 +58,9 @@ class Posterior:
         Scaling form.
     log_tau : float, optional
         Hold the roughness at this value instead of sampling it; the coordinate is then left out.
+    left_out : float, optional
+        A size whose means are not fitted. Its points still take part in the layout of the axis, so that the model is
+        the same with and without them.
     function : SplineFunction
         Basis of the scaling function.
     """
@@ -64,6 +68,7 @@ class Posterior:
     curves: Curves
     ansatz: Ansatz
     log_tau: float | None = None
+    left_out: float | None = None
     function: SplineFunction = field(default_factory=SplineFunction)
 
     @cached_property
@@ -124,9 +129,13 @@ class Posterior:
     def _whitener(self) -> FloatArray | tuple[FloatArray, ...]:
         """1/error of each point or, with correlated points, the inverse Cholesky factor of each size."""
         if not self.curves.correlated:
-            return self.spread / self.curves.flat()[3]
+            return self.spread / self.curves.flat()[3] * self.fitted
         factors = (np.linalg.cholesky(curve.noise / self.spread**2) for curve in self.curves.curves)
-        return tuple(scipy.linalg.solve_triangular(f, np.eye(len(f)), lower=True) for f in factors)
+        kept = (curve.size != self.left_out for curve in self.curves.curves)
+        return tuple(
+            scipy.linalg.solve_triangular(f, np.eye(len(f)), lower=True) * keep
+            for f, keep in zip(factors, kept, strict=True)
+        )
 
     def _whiten(self, matrix: FloatArray) -> None:
         """Multiply `matrix`, shape (..., points, columns), by the inverse root of C from the left, in place."""
@@ -145,10 +154,20 @@ class Posterior:
         return (self.curves.flat()[2] - self.centre) / self.spread
 
     @cached_property
+    def fitted(self) -> NDArray[np.bool_]:
+        """Which points are fitted, shape (points,)."""
+        return np.asarray(self.curves.flat()[0] != self.left_out)
+
+    @property
+    def points(self) -> int:
+        """Number of fitted points."""
+        return int(np.count_nonzero(self.fitted))
+
+    @cached_property
     def _constant(self) -> float:
-        """n ln 2 pi + ln det C, in the user's units of y."""
-        blocks = (np.linalg.slogdet(curve.noise)[1] for curve in self.curves.curves)
-        return self.curves.points * LOG_2PI + float(sum(blocks))
+        """n ln 2 pi + ln det C of the fitted points, in the user's units of y."""
+        blocks = (np.linalg.slogdet(c.noise)[1] for c in self.curves.curves if c.size != self.left_out)
+        return self.points * LOG_2PI + float(sum(blocks))
 
     @cached_property
     def correction_sd(self) -> float:
@@ -224,7 +243,7 @@ class Posterior:
         quadratic, log_det = self._dense(z) if self.curves.correlated else self._banded(z)
         terms = CORRECTION_TERMS if self.ansatz.corrected else 0
         log_det_prior = self.function.log_det_precision(log_tau) - 2 * terms * np.log(self.correction_sd)
-        scale = 2 * (self.curves.points - self.function.count - terms) * log_s
+        scale = 2 * (self.points - self.function.count - terms) * log_s
         total = -0.5 * (quadratic * np.exp(-2 * log_s) + log_det - log_det_prior + scale + self._constant)
         sound = np.isfinite(total) & (quadratic > 0)  # else rounding has eaten the number
         return np.where(sound, total, -np.inf)
@@ -234,7 +253,7 @@ class Posterior:
         size, sizes = self._points[0], self.curves.sizes
         correction, amplitude = self.ansatz.correction(z, size, sizes), self.ansatz.amplitude(z, size, sizes)
         return solve_batch(
-            self.positions(z), correction, amplitude, self.targets(amplitude), self.spread / self.curves.flat()[3],
+            self.positions(z), correction, amplitude, self.targets(amplitude), np.asarray(self._whitener),
             *self._nuisance(z), self.function.roughness_band, self.function.line, self.correction_sd,
         )  # fmt: skip
 
@@ -251,8 +270,23 @@ class Posterior:
         mean = scipy.linalg.cho_solve(factor, matrix[:-1, -1])
         return mean, s2 * scipy.linalg.cho_solve(factor, np.eye(len(mean)))
 
+    def predictions(self, z: FloatArray, rng: np.random.Generator) -> FloatArray:
+        """One draw of the noiseless model at all points, left out or not, for each row of `z`; (batch, points)."""
+        bare = self.design(z)[..., :-1]
+        amplitude = self.ansatz.amplitude(z, self._points[0], self.curves.sizes)
+        mean = self.centre if amplitude is None else amplitude * self.centre
+        return np.asarray(mean + self.spread * np.einsum("bpc,bc->bp", bare, self._coefficient_draws(z, rng)[0]))
+
     def chi2_of_draws(self, z: FloatArray, rng: np.random.Generator) -> FloatArray:
         """Chi-squared of the data, with the errors as given, at one draw of c for each row of `z`; shape (batch,)."""
+        draw, phi, data = self._coefficient_draws(z, rng)
+        residual = data - np.einsum("bpc,bc->bp", phi, draw)
+        return np.asarray(np.sum(residual**2, axis=1))
+
+    def _coefficient_draws(
+        self, z: FloatArray, rng: np.random.Generator
+    ) -> tuple[FloatArray, FloatArray, FloatArray]:  # fmt: skip
+        """One draw of c for each row of `z`, (batch, columns), with the whitened design and data."""
         design = self.design(z)
         self._whiten(design)
         phi, data = design[..., :-1], design[..., -1]
@@ -260,11 +294,9 @@ class Posterior:
         s = np.exp(log_s)[:, None]
         matrix = np.matmul(phi.swapaxes(1, 2), phi) + self._precision(log_tau, phi.shape[2]) * s[..., None] ** 2
         mean = np.linalg.solve(matrix, np.einsum("bpc,bp->bc", phi, data)[..., None])[..., 0]
-        normal = rng.standard_normal(mean.shape)
         upper = np.linalg.cholesky(matrix).swapaxes(1, 2)
-        draw = mean + s * np.linalg.solve(upper, normal[..., None])[..., 0]
-        residual = data - np.einsum("bpc,bc->bp", phi, draw)
-        return np.asarray(np.sum(residual**2, axis=1))
+        normal = rng.standard_normal(mean.shape)
+        return mean + s * np.linalg.solve(upper, normal[..., None])[..., 0], phi, data
 
 
 def _cholesky(matrix: FloatArray) -> FloatArray:
