@@ -8,7 +8,14 @@ import numpy as np
 import pytest
 from scipy.stats import multivariate_normal
 
-from driftline.inference.importance import Mixture, WeightedDraws, adapt, fit_mixture, importance_sample
+from driftline.inference.importance import (
+    Mixture,
+    WeightedDraws,
+    adapt,
+    fit_mixture,
+    importance_sample,
+    sample_until,
+)
 from driftline.inference.intervals import Interval
 from driftline.inference.modes import find_modes
 from driftline.inference.sampling import run_chain
@@ -159,3 +166,19 @@ def test_evidence_agrees_with_nested_sampling() -> None:
     combined = np.hypot(error, ours.log_evidence_error)
     assert abs(ours.log_evidence - theirs) < 3 * combined + 0.1  # 0.1: the remainder that dlogz leaves out
     assert combined < 0.6  # the comparison has teeth: a factor of two in the evidence is 0.7
+
+
+def test_missed_mode_is_found_again() -> None:
+    """A mixture that covers one of two peaks gives too small an evidence and too few draws; refitting finds the other."""
+    rng = np.random.default_rng(12)
+    near = (np.array([-0.1, 0.0, 0.0]), np.array([0.5, -0.3, 0.2]))
+
+    def density(z: np.ndarray) -> np.ndarray:
+        logs = [np.log(2) + np.atleast_1d(multivariate_normal(c, COVARIANCE).logpdf(z)) for c in near]
+        return np.logaddexp(*logs)
+
+    half = Mixture(np.ones(1), near[0][None], np.linalg.cholesky(COVARIANCE)[None])
+    assert importance_sample(density, half, 2000, rng).effective < 400
+    draws = sample_until(density, half, 2000, 400, rng)
+    assert draws.effective >= 400
+    assert abs(draws.log_evidence - np.log(4)) < 4 * draws.log_evidence_error

@@ -21,7 +21,7 @@ ROUNDS = 8
 ROUND_DRAWS = 1500
 ENOUGH = 0.4  # effective fraction at which adaptation stops
 COMPONENTS = 4
-MOST_REPEATS = 9
+MOST_REPEATS = 5
 BROAD_WEIGHT, BROAD_SCALE = 0.1, 3.0
 
 
@@ -120,15 +120,18 @@ def importance_sample(target: LogDensity, mixture: Mixture, count: int, rng: np.
 def sample_until(
     target: LogDensity, mixture: Mixture, count: int, wanted: float, rng: np.random.Generator
 ) -> WeightedDraws:  # fmt: skip
-    """`count` weighted draws, and as many again, up to `MOST_REPEATS` times, until `wanted` of them are effective."""
+    """`count` weighted draws; while fewer than `wanted` are effective, the mixture is refitted and more are drawn.
+
+    A part of the target that the mixture had missed shows itself as a few draws of huge weight; refitting to them moves
+    a component there.  The last set is returned, never the one with the most effective draws: a mixture that misses a
+    part of the target looks better than one that has just found it.
+    """
     draws = importance_sample(target, mixture, count, rng)
-    for _ in range(MOST_REPEATS):
+    for repeat in range(MOST_REPEATS):
         if draws.effective >= wanted:
             break
-        more = importance_sample(target, mixture, count, rng)
-        draws = WeightedDraws(
-            np.concatenate([draws.places, more.places]), np.concatenate([draws.log_weights, more.log_weights])
-        )
+        mixture = fit_mixture(draws.places, _tempered(draws), rng)
+        draws = importance_sample(target, mixture, count * (1 + repeat), rng)
     return draws
 
 
