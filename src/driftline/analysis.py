@@ -15,7 +15,8 @@ from driftline.curves import Curves
 from driftline.drift import Drift, fit_drift
 from driftline.inference.intervals import Interval
 from driftline.parallel import Task, run_tasks
-from driftline.scaling.ansatz import parse_ansatz
+from driftline.scaling.ansatz import applicable, parse_ansatz
+from driftline.scaling.defaults import DEFAULT_ANSATZE
 from driftline.separation import Separation, separation_test
 from driftline.settings import Settings
 from driftline.stability import StabilityRow, cuts, refit, systematic
@@ -126,7 +127,10 @@ def _within(tell: Progress, after: str, part: str) -> Progress:
 
 
 def _compare(curves: Curves, settings: Settings, rng: np.random.Generator, tell: Progress) -> Comparison:
-    forms = [parse_ansatz(name, curves) for name in settings.ansatze]  # all names are checked before any work
+    names = settings.ansatze
+    if names == DEFAULT_ANSATZE:  # what the user asked for by name must run or be refused; the default set adapts
+        names = applicable(names, curves)
+    forms = [parse_ansatz(name, curves) for name in names]  # all names are checked before any work
     tasks = [
         Task(f"collapse {form.name}", fit_collapse, (curves, form), {"seed": stream, "quick": settings.quick})
         for form, stream in zip(forms, rng.spawn(len(forms)), strict=True)

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import multiprocessing
+import signal
 from collections.abc import Callable, Mapping, Sequence
 from concurrent.futures import ProcessPoolExecutor, as_completed
 from dataclasses import dataclass
@@ -40,9 +42,25 @@ def run_tasks(tasks: Sequence[Task], jobs: int, progress: Progress) -> list[Any]
             progress(task.text, i / len(tasks))
             results.append(task())
         return results
-    with ProcessPoolExecutor(min(jobs, len(tasks))) as pool:
+    with ProcessPoolExecutor(min(jobs, len(tasks)), initializer=_leave_interrupts_to_parent) as pool:
         futures = {pool.submit(task): i for i, task in enumerate(tasks)}
         progress(f"{len(tasks)} fits on {min(jobs, len(tasks))} processes", 0.0)
-        for done, future in enumerate(as_completed(futures), 1):
-            progress(tasks[futures[future]].text, done / len(tasks))
+        try:
+            for done, future in enumerate(as_completed(futures), 1):
+                progress(tasks[futures[future]].text, done / len(tasks))
+                future.result()  # an error ends the whole at once, not after the slowest task
+        except BaseException:
+            _end_workers(pool)
+            raise
         return [future.result() for future in futures]
+
+
+def _leave_interrupts_to_parent() -> None:
+    """Ctrl-C reaches every process of a terminal; only the parent shall answer it."""
+    signal.signal(signal.SIGINT, signal.SIG_IGN)
+
+
+def _end_workers(pool: ProcessPoolExecutor) -> None:
+    pool.shutdown(wait=False, cancel_futures=True)
+    for child in multiprocessing.active_children():
+        child.terminate()

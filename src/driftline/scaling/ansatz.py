@@ -11,7 +11,7 @@ from __future__ import annotations
 
 import difflib
 import math
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -135,6 +135,18 @@ def parse_ansatz(name: str, curves: Curves) -> Ansatz:
     if amplitude and exponent is None:
         parameters.append(_kappa())
     return Ansatz(name, form, corrected, amplitude is not None, exponent, tuple(parameters))
+
+
+def applicable(names: Iterable[str], curves: Curves) -> tuple[str, ...]:
+    """Those of the `names` that make sense for these curves."""
+    kept = []
+    for name in names:
+        try:
+            parse_ansatz(name, curves)
+        except ConfigurationError:
+            continue
+        kept.append(name)
+    return tuple(kept)
 
 
 def _omega() -> Parameter:

@@ -1,10 +1,17 @@
 """The ansätze that run when none is named; free of numerics, so that the command line can list them at once."""
 
-#: A fixed and a linearly drifting critical disorder, each without and with the leading correction to scaling: the two
-#: answers to "does it converge or drift away", compared on equal terms.
+#: Three answers on equal terms.  A transition: the two lengths of the literature with the leading correction, and the
+#: plain power law that most papers fit.  A crossover that drifts away: a critical disorder that moves linearly (plain
+#: and corrected, so that a correction is not mistaken for a drift) or logarithmically, and the pure ratio W/L^kappa.
+#: No critical disorder at all: a length finite everywhere, and no size dependence.
 DEFAULT_ANSATZE = (
     "power-law",
     "power-law:corrected",
+    "kt:corrected",
     "power-law:linear-drift",
     "power-law:linear-drift:corrected",
+    "power-law:log-drift",
+    "size-ratio",
+    "finite-length",
+    "size-independent",
 )

@@ -110,6 +110,16 @@ class Critical(Form):
         return self.length.unit(typical_size(sizes), values)
 
 
+def _require_positive(name: str, curves: Curves) -> tuple[float, float]:
+    low, high = curves.disorder_range
+    if low <= 0:
+        raise ConfigurationError(
+            f"ansatz {name!r} needs positive disorders, and the smallest is {low:g}; leave this ansatz out or set "
+            "a window above zero"
+        )
+    return low, high
+
+
 @dataclass(frozen=True)
 class SizeRatio(Form):
     """x = W / L^kappa: the crossover grows as a power of the size (kappa = 1: the ratio W/L)."""
@@ -121,6 +131,7 @@ class SizeRatio(Form):
     label = r"{W}/L^{{\kappa}}"
 
     def parameters(self, curves: Curves) -> tuple[Parameter, ...]:
+        _require_positive(self.name, curves)
         return (Parameter("kappa", r"\kappa", Uniform(0.0, 2.0), "power of the size by which the crossover grows"),)
 
     def scaled(
@@ -148,16 +159,6 @@ class _FiniteLength(Form):
         log_length = self.log_length(disorder, values)
         shortest = log_length.min(axis=1, keepdims=True)
         return np.asarray(np.arcsinh(size / typical_size(sizes) * np.exp(shortest - log_length) / SOFTENING))
-
-
-def _require_positive(name: str, curves: Curves) -> tuple[float, float]:
-    low, high = curves.disorder_range
-    if low <= 0:
-        raise ConfigurationError(
-            f"ansatz {name!r} needs positive disorders, and the smallest is {low:g}; leave this ansatz out or set "
-            "a window above zero"
-        )
-    return low, high
 
 
 @dataclass(frozen=True)
