@@ -24,6 +24,8 @@ from driftline.verdict import Case, Verdict, judge
 
 Progress = Callable[[str, float], None]
 
+#: Forms whose evidence is less than this part of the best one are left out of the headline average.
+LEAST_WEIGHT = 0.01
 #: Parts of the whole job, for the progress display: measured on six sizes by 21 disorders.
 SHARES = {"crossings": 0.06, "collapse": 0.84, "stability": 0.10}
 
@@ -140,15 +142,20 @@ def _compare(curves: Curves, settings: Settings, rng: np.random.Generator, tell:
 
 
 def headline_basis(comparison: Comparison) -> tuple[CollapseFit, ...]:
-    """The fits behind the headline: transition forms with correction, else plain ones, else none."""
+    """The fits behind the headline: transition forms with correction, else plain ones, else none.
+
+    Forms that carry no weight in the average are left out, so that nothing is said about their stability.
+    """
     transition = [fit for fit in comparison.fits if fit.ansatz.hypothesis == "transition"]
-    return tuple([fit for fit in transition if fit.ansatz.corrected] or transition)
+    candidates = [fit for fit in transition if fit.ansatz.corrected] or transition
+    best = max((fit.log_evidence for fit in candidates), default=0.0)
+    return tuple(fit for fit in candidates if fit.log_evidence > best + np.log(LEAST_WEIGHT))
 
 
 def _stability(
     curves: Curves, basis: Sequence[CollapseFit], settings: Settings, rng: np.random.Generator, tell: Progress
 ) -> tuple[StabilityRow, ...]:
-    pairs = [(fit, cut) for fit in basis for cut in cuts(curves, fit.parameters["W_c"].median)]
+    pairs = [(fit, cut) for fit in basis for cut in cuts(curves, fit.parameters["W_c"].median, quick=settings.quick)]
     tasks = [
         Task(f"stability of {fit.ansatz.name}", refit, (curves, fit.ansatz.name, cut, stream), {})
         for (fit, cut), stream in zip(pairs, rng.spawn(len(pairs)), strict=True)

@@ -9,6 +9,7 @@ from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
 
 import numpy as np
+from scipy.special import ndtri
 
 from driftline import numerals
 from driftline.collapse import CollapseFit, Comparison
@@ -23,7 +24,13 @@ CROSSES = 0.5
 #: Posterior probability from which a family counts as established (design decision, to be calibrated).
 ESTABLISHED = 0.95
 POOR_P = 0.01
-UNSTABLE_Z = 2.58  # two-sided 1 %
+UNSTABLE_P = 0.01
+UNDERSTATED_FROM = 1.1
+ASSUMED_INDEPENDENT_BELOW = 0.85
+PLATEAU_SIGMAS = 5.0
+PLATEAU_SHARE = 0.05  # of the distance between the two reference values
+CLOSE_EVIDENCE = 3.0  # difference of log evidences below which it is not strong (Kass, Raftery 1995)
+TWO_BLOCKS = 0.4234  # gap ratio of two unresolved orthogonal blocks (Giraud et al., PRX 12, 011006 (2022), from memory)
 OUTSIDE_SHARE = 0.05
 ENOUGH_SIZES = 4  # three sizes give two neighbouring crossings: a line through them leaves nothing to check it with
 
@@ -224,15 +231,18 @@ def window_unstable(case: Case) -> Caution | None:
 
 
 def _worst(case: Case, *, sizes: bool) -> StabilityRow | None:
-    """The most significant unstable refit of the asked kind, if any."""
-    smallest = case.curves.sizes[0]
-    rows = [row for row in case.stability if (row.smallest_size > smallest) == sizes]
+    """The most significant unstable refit with only the sizes, or only the window, cut; None if all are stable."""
+    smallest, full = case.curves.sizes[0], case.curves.disorder_range
+    rows = [
+        row for row in case.stability if (row.smallest_size > smallest) == sizes and (row.window != full) == (not sizes)
+    ]
 
     def strength(row: StabilityRow) -> float:
         return abs(row.significance(case.comparison[row.ansatz].parameters["W_c"]))
 
     worst = max(rows, key=strength, default=None)
-    return worst if worst is not None and strength(worst) > UNSTABLE_Z else None
+    # the more refits, the larger the largest shift by chance (Bonferroni)
+    return worst if worst is not None and strength(worst) > float(ndtri(1 - UNSTABLE_P / (2 * len(rows)))) else None
 
 
 @rule
@@ -314,4 +324,84 @@ def sampler_not_converged(case: Case) -> Caution | None:
         "run again with another seed; if it stays, the posterior is badly shaped: narrow the window or leave this "
         "ansatz out",
         {fit.ansatz.name: fit.sampler.effective_samples for fit in bad},
+    )
+
+
+@rule
+def errors_understated(case: Case) -> Caution | None:
+    """Every form finds the points to scatter more than their errors."""
+    scale = min((fit.parameters["s"] for fit in case.comparison.fits), key=lambda s: s.median)
+    if scale.low95 <= UNDERSTATED_FROM:
+        return None
+    return Caution(
+        "ERRORS_UNDERSTATED",
+        f"the points scatter about every form by {numerals.short(scale)} times their errors",
+        "check that the errors are standard errors over independent realisations (eigenstates of one realisation are "
+        "not independent), and that the forms can describe these data at all",
+        {"noise_scale": scale.median},
+    )
+
+
+@rule
+def errors_assumed_independent(case: Case) -> Caution | None:
+    """Points scatter less than their errors, as points that share realisations do."""
+    fit = max(case.comparison.fits, key=lambda each: each.log_evidence)
+    scale = fit.parameters["s"]
+    if case.curves.correlated or scale.high95 >= ASSUMED_INDEPENDENT_BELOW:
+        return None
+    return Caution(
+        "ERRORS_ASSUMED_INDEPENDENT",
+        f"the points scatter about {fit.ansatz.name} by only {numerals.short(scale)} times their errors, as they do "
+        "when the same disorder realisations were used at several disorders",
+        "give the covariance of the points (HDF5); treated as independent, such points give wrong intervals",
+        {"noise_scale": scale.median},
+    )
+
+
+@rule
+def plateau_mismatch(case: Case) -> Caution | None:
+    """At the weakest disorder the curves agree with each other but not with the ergodic value."""
+    labels = case.curves.labels
+    if labels.ergodic_value is None:
+        return None
+    first, last = case.curves.curves[-2], case.curves.curves[-1]
+    value = (first.mean[0] / first.error[0] ** 2 + last.mean[0] / last.error[0] ** 2) / (
+        first.error[0] ** -2 + last.error[0] ** -2
+    )
+    error = float((first.error[0] ** -2 + last.error[0] ** -2) ** -0.5)
+    apart = abs(first.mean[0] - last.mean[0]) / float(np.hypot(first.error[0], last.error[0]))
+    other = labels.localised_value
+    distance = np.inf if other is None else abs(labels.ergodic_value - other)
+    off = abs(value - labels.ergodic_value)
+    if apart > 2 or off < PLATEAU_SIGMAS * error or off < PLATEAU_SHARE * distance:
+        return None
+    blocks = labels.observable == "gap-ratio" and abs(value - TWO_BLOCKS) < PLATEAU_SIGMAS * error
+    return Caution(
+        "PLATEAU_MISMATCH",
+        f"at the weakest disorder the two largest sizes agree on {numerals.plus_minus(value, error)}, not on the "
+        f"ergodic value {labels.ergodic_value:g}"
+        + (", but on that of two unresolved symmetry blocks" if blocks else ""),
+        "resolve the symmetries of the model, or correct the reference value"
+        if blocks
+        else "check the reference value and the symmetries, or measure at weaker disorder",
+        {"plateau": float(value), "ergodic_value": labels.ergodic_value},
+    )
+
+
+@rule
+def evidence_close(case: Case) -> Caution | None:
+    """The best forms of two hypotheses are about equally good."""
+    best: dict[str, CollapseFit] = {}
+    for fit in sorted(case.comparison.fits, key=lambda each: each.log_evidence):
+        best[fit.ansatz.hypothesis] = fit
+    ranked = sorted(best.values(), key=lambda each: -each.log_evidence)
+    if len(ranked) < 2 or ranked[0].log_evidence - ranked[1].log_evidence >= CLOSE_EVIDENCE:
+        return None
+    gap = ranked[0].log_evidence - ranked[1].log_evidence
+    return Caution(
+        "EVIDENCE_CLOSE",
+        f"{ranked[0].ansatz.name} ({ranked[0].ansatz.hypothesis}) and {ranked[1].ansatz.name} "
+        f"({ranked[1].ansatz.hypothesis}) differ by only {gap:.1f} in log evidence",
+        "do not decide between them on these data; larger sizes tell them apart sooner than smaller errors",
+        {"log_evidence_difference": gap},
     )

@@ -204,6 +204,7 @@ def fit_collapse(
     *,
     seed: int | np.random.Generator | None = 0,
     quick: bool = False,
+    extras: bool = True,
     progress: Progress | None = None,
 ) -> CollapseFit:
     """Fit one ansatz: posterior of its parameters, evidence, quality.
@@ -218,6 +219,8 @@ def fit_collapse(
         Source of every random number.
     quick : bool
         Leave the chain out; evidence and posterior then come from adaptive importance sampling alone.
+    extras : bool
+        Also predict the largest size from the smaller ones and compare sets of priors.
     progress : callable, optional
         Called with (text, fraction done).
 
@@ -254,10 +257,11 @@ def fit_collapse(
     log_tau = Interval.of_draws(draws.places[:, -2], draws.weights)
     held = replace(target, log_tau=log_tau.median + UNDERSMOOTHING)
     physical = sample_until(held, _adapted(held, rng)[0], count, EFFECTIVE_LEAST, rng)
-    tell(f"{form.name}: predicting the largest size", 0.9)
-    held_out = _held_out(target, draws, rng)
-    tell(f"{form.name}: checking", 0.95)
+    tell(f"{form.name}: checking", 0.9)
     fit = _result(held, draws, physical, health, rng)
+    if not extras:
+        return fit
+    held_out = _held_out(target, draws, rng)
     return replace(fit, held_out=held_out, prior_sensitivity=_prior_shifts(target, draws, held, physical))
 
 

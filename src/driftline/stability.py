@@ -17,8 +17,11 @@ from driftline.curves import MIN_DISORDERS, Curves
 from driftline.errors import InputError
 from driftline.inference.intervals import Interval
 
-#: Part of the common disorder range that the narrowed window keeps, around the crossover.
-NARROWED = 0.7
+#: Parts of the disorder range that the windows keep, around the crossover; the first is everything.
+WINDOWS = (1.0, 0.8, 0.6)
+QUICK_WINDOWS = (1.0, 0.7)
+#: So many of the smallest sizes are left out at most.
+MOST_DROPPED = 2
 #: A drop of the smallest size must leave this many sizes, or the correction has nothing to stand on.
 SIZES_LEFT = 3
 #: Expected scatter is taken as at least this part of the full fit's error: nearly equal errors must not make a
@@ -58,19 +61,28 @@ class StabilityRow:
         return self.shift(full) / self.scatter(full)
 
 
-def cuts(curves: Curves, centre: float) -> tuple[Cut, ...]:
-    """The parts to refit: the smallest size dropped; the window narrowed around `centre`."""
-    low, high = curves.disorder_range
+def cuts(curves: Curves, centre: float, *, quick: bool = False) -> tuple[Cut, ...]:
+    """The parts to refit: smallest sizes dropped, the window narrowed around `centre`, and both.
+
+    With `quick` only one size is dropped and the window narrowed once, not both together.
+    """
+    most = max(0, min(1 if quick else MOST_DROPPED, curves.sizes.size - SIZES_LEFT))
     found = []
-    if curves.sizes.size > SIZES_LEFT:
-        found.append(Cut(float(curves.sizes[1]), (low, high)))
-    middle = min(max(centre, low), high)
-    half = NARROWED * (high - low) / 2
-    start = min(max(middle - half, low), high - 2 * half)
-    narrow = Cut(float(curves.sizes[0]), (start, start + 2 * half))
-    if _possible(curves, narrow):
-        found.append(narrow)
+    for dropped in range(most + 1):
+        for kept in QUICK_WINDOWS if quick else WINDOWS:
+            nothing_left_out, both = not dropped and kept == 1, dropped and kept < 1
+            cut = Cut(float(curves.sizes[dropped]), _window(curves, centre, kept))
+            if not nothing_left_out and not (quick and both) and _possible(curves, cut):
+                found.append(cut)
     return tuple(found)
+
+
+def _window(curves: Curves, centre: float, kept: float) -> tuple[float, float]:
+    """Window of a part of the range, as near to `centre` as the range allows."""
+    low, high = curves.disorder_range
+    width = kept * (high - low)
+    start = min(max(centre - width / 2, low), high - width)
+    return start, start + width
 
 
 def _possible(curves: Curves, cut: Cut) -> bool:
@@ -84,13 +96,13 @@ def _possible(curves: Curves, cut: Cut) -> bool:
 def refit(curves: Curves, ansatz: str, cut: Cut, seed: int | np.random.Generator) -> StabilityRow:
     """Fit `ansatz` to one part of the data, by importance sampling alone."""
     part = curves.select(smallest_size=cut.smallest_size, window=cut.window)
-    fit = fit_collapse(part, ansatz, seed=seed, quick=True)
+    fit = fit_collapse(part, ansatz, seed=seed, quick=True, extras=False)
     return StabilityRow(ansatz, cut.smallest_size, cut.window, fit.parameters["W_c"], fit.quality.p_value)
 
 
 def systematic(full: CollapseFit, rows: Sequence[StabilityRow]) -> float | None:
-    """Largest part of a shift that chance does not explain, in the unit of the disorder; None without refits."""
+    """Root mean square of the shifts beyond what chance explains, in the unit of the disorder; None without refits."""
     interval = full.parameters["W_c"]
     own = [row for row in rows if row.ansatz == full.ansatz.name]
-    excess = [max(row.shift(interval) ** 2 - row.scatter(interval) ** 2, 0.0) for row in own]
-    return float(np.sqrt(max(excess))) if excess else None
+    excess = [row.shift(interval) ** 2 - row.scatter(interval) ** 2 for row in own]
+    return float(np.sqrt(max(float(np.mean(excess)), 0.0))) if excess else None

@@ -10,11 +10,14 @@ from dataclasses import dataclass, field
 
 from driftline import numerals
 from driftline.cautions import CROSSES, ESTABLISHED, Case, Caution, cautions
+from driftline.scaling.forms import SizeIndependent
 
 __all__ = ["Case", "Caution", "Verdict", "judge"]
 
 NO_EVIDENCE = "Warning: no evidence of a transition in these data."
 FINITE_SIZES = "Finite sizes alone do not decide the thermodynamic limit."
+#: Crossings that move under a law with a limit, with this probability, contradict a drift seen by the collapse alone.
+CONTRADICTED = 0.5
 LEAST_SIZES = 3  # two sizes have one crossing, which cannot be seen to drift or to stay
 
 
@@ -25,7 +28,7 @@ class Verdict:
     Parameters
     ----------
     code : str
-        ``transition-supported``, ``drifting``, ``undecided`` or ``insufficient-data``.
+        ``transition-supported``, ``drifting``, ``undecided``, ``size-independent`` or ``insufficient-data``.
     statement : str
         Sentences for people; opens with the warning sentence unless a transition is supported.
     reasons : tuple of str
@@ -48,26 +51,43 @@ class Verdict:
 
 def judge(case: Case) -> Verdict:
     """The verdict on one case."""
-    transition = probability_of_transition(case)
-    drift = None if transition is None else 1 - transition
+    transition, drift = probability_of_transition(case), probability_of_drift(case)
     warnings = cautions(case)
     failed = tuple(reason for holds, reason in transition_conditions(case, transition, warnings) if not holds)
-    if case.curves.sizes.size < LEAST_SIZES:
-        code, shown = "insufficient-data", "Two sizes have a single crossing, which cannot be seen to drift or to stay."
-    elif not failed:
-        code, shown = "transition-supported", _transition_statement(case)
-    elif drift is not None and drift >= ESTABLISHED and (case.drift.probability_bounded or 0.0) < 0.5:
-        code, shown = "drifting", _drift_statement(case, drift)
-    else:
-        code, shown = "undecided", "The data neither support a critical disorder nor establish a drift."
+    code, shown = _decide(case, failed, drift)
     opening = "" if code == "transition-supported" else f"{NO_EVIDENCE} "
     return Verdict(code, f"{opening}{shown} {FINITE_SIZES}", failed, transition, drift, warnings)
+
+
+def _decide(case: Case, failed: tuple[str, ...], drift: float | None) -> tuple[str, str]:
+    """Code and the sentence that says what the data show."""
+    if case.curves.sizes.size < LEAST_SIZES:
+        return "insufficient-data", "Two sizes have a single crossing, which cannot be seen to drift or to stay."
+    if not failed:
+        return "transition-supported", _transition_statement(case)
+    if _without_size(case) >= ESTABLISHED:
+        return "size-independent", "The curves of all sizes are the same within their errors."
+    if drift is not None and drift >= ESTABLISHED and (case.drift.probability_bounded or 0.0) < CONTRADICTED:
+        return "drifting", _drift_statement(case, drift)
+    return "undecided", "The data neither support a critical disorder nor establish a drift."
 
 
 def probability_of_transition(case: Case) -> float | None:
     """From the evidences of the collapse if rival hypotheses were fitted, else from the laws of the drift."""
     collapse = case.comparison.probability("transition")
     return collapse if collapse is not None else case.drift.probability_bounded
+
+
+def probability_of_drift(case: Case) -> float | None:
+    """Probability that there is no critical disorder at any finite value: it moves on, or there is none at all."""
+    transition = probability_of_transition(case)
+    return None if transition is None else max(0.0, 1 - transition - _without_size(case))
+
+
+def _without_size(case: Case) -> float:
+    """Probability of the form in which size does nothing."""
+    pairs = zip(case.comparison.fits, case.comparison.probabilities, strict=True)
+    return float(sum(p for fit, p in pairs if isinstance(fit.ansatz.form, SizeIndependent)))
 
 
 def transition_conditions(
@@ -107,4 +127,6 @@ def _transition_statement(case: Case) -> str:
 def _drift_statement(case: Case, drift: float) -> str:
     rate = case.drift.rate_per_site
     speed = f" by {numerals.median(rate)} per unit of size, {numerals.bracket(rate)} (95 %)" if rate else ""
-    return f"The crossover moves with size{speed}; drifting forms hold {drift:.3f} of the probability."
+    return (
+        f"The crossover moves with size{speed}; forms without a critical disorder hold {drift:.3f} of the probability."
+    )
