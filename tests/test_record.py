@@ -47,7 +47,7 @@ SCHEMA = {
         "laws": [
             {
                 "name": TEXT, "bounded": FLAG, "log_evidence": NUMBER, "probability": NUMBER,
-                "parameters": {...: INTERVAL}, "limit": [INTERVAL, None],
+                "parameters": {...: INTERVAL}, "limit": [INTERVAL, None], "limit_one_sided": [TEXT, None],
             }
         ],
         "probability_bounded": MAYBE,

@@ -22,7 +22,7 @@ from abc import ABC, abstractmethod
 from collections.abc import Sequence
 from dataclasses import dataclass, field
 from itertools import combinations
-from typing import Any, ClassVar
+from typing import Any, ClassVar, Literal
 
 import numpy as np
 import numpy.typing as npt
@@ -30,13 +30,14 @@ from scipy.linalg import cho_solve, cholesky, solve_triangular
 from scipy.special import log_ndtr, logsumexp, ndtr, ndtri
 from scipy.stats import rankdata
 
+from driftline import numerals
 from driftline.crossings import Crossing, Crossings
 from driftline.curves import FloatArray
 from driftline.errors import ConfigurationError
 from driftline.inference.intervals import Interval
 
-#: Laws fitted by default. More laws need more points than most data sets have.
-DEFAULT_LAWS = ("constant", "inverse", "linear")
+#: Laws fitted by default: four that stay bounded, three that do not.
+DEFAULT_LAWS = ("constant", "inverse", "inverse-power", "kt", "logarithmic", "linear", "power")
 #: Pairs that cross with less probability than this are left out.
 MIN_PROBABILITY = 0.5
 #: Pairs whose position leans on an end of the window, so that the interval is cut there, are left out: the share of
@@ -46,6 +47,8 @@ EDGE = 0.01
 LARGEST_SIZE = 1e6
 #: Standard deviations at which two laws count as told apart.
 TOLD_APART = 3.0
+#: Ratio of the two 95 % tails of a limit from which only its near side is quoted.
+LOPSIDED = 3.0
 POSTERIOR_DRAWS = 2000
 SHAPE_POINTS = 65
 
@@ -337,6 +340,16 @@ class LawFit:
     coefficient_draws: FloatArray
     law: DriftLaw
 
+    @property
+    def one_sided(self) -> Literal["above", "below"] | None:
+        """The side on which alone the limit is constrained: the other tail reaches `LOPSIDED` times as far."""
+        if self.limit is None:
+            return None
+        up, down = self.limit.high95 - self.limit.median, self.limit.median - self.limit.low95
+        if up > LOPSIDED * down:
+            return "above"
+        return "below" if down > LOPSIDED * up else None
+
     def predict(self, sizes: FloatArray) -> tuple[FloatArray, FloatArray, FloatArray]:
         """Median and ends of the 68 % band of W* at `sizes`, each of shape (m,)."""
         drawn = self.law.evaluate(self.coefficient_draws, np.asarray(sizes, dtype=np.float64))
@@ -352,6 +365,7 @@ class LawFit:
             "probability": self.probability,
             "parameters": {name: interval.to_dict() for name, interval in self.parameters.items()},
             "limit": None if self.limit is None else self.limit.to_dict(),
+            "limit_one_sided": self.one_sided,
         }
 
 
@@ -416,7 +430,7 @@ class Drift:
             lines.append(f"Probability that it stays bounded: {self.probability_bounded:.3f}")
         if self.rate_per_site is not None:
             rate = self.rate_per_site
-            lines.append(f"Linear rate: {rate.median:.3g} per site ({rate.low68:.3g} to {rate.high68:.3g} at 68 %)")
+            lines.append(f"Linear rate: {numerals.short(rate)} per unit of size")
         if self.deciding_size is not None:
             lines.append(f"Size at which the two best laws part by three errors: {self.deciding_size:.3g}")
         for sentence in (*self.excluded, self.note):
@@ -647,8 +661,25 @@ def _deciding_size(fits: tuple[LawFit, ...], largest: float, error: float) -> fl
     return float(sizes[np.argmax(apart)]) if apart.any() else None
 
 
+def limit_text(law: LawFit, level: int = 68) -> str:
+    """The limit with its interval, or the one side of it that the data constrain, said as such.
+
+    Examples
+    --------
+    >>> from types import SimpleNamespace
+    >>> limit_text(SimpleNamespace(limit=Interval(6.3, 5.0, 8.8, 4.9, 14.0), one_sided="above"))
+    'above 4.9 (97.5 %)'
+    """
+    assert law.limit is not None  # callers have checked
+    if law.one_sided == "above":
+        return f"above {numerals.rounded(law.limit.low95, law.limit.median - law.limit.low95)} (97.5 %)"
+    if law.one_sided == "below":
+        return f"below {numerals.rounded(law.limit.high95, law.limit.high95 - law.limit.median)} (97.5 %)"
+    return numerals.short(law.limit) if level == 68 else numerals.bracket(law.limit, level)
+
+
 def _law_line(law: LawFit) -> str:
     limit = "unbounded"
     if law.limit is not None:
-        limit = f"{law.limit.median:.4g} ({law.limit.low68:.4g} to {law.limit.high68:.4g})"
+        limit = limit_text(law)
     return f"{law.name:<14} {law.formula:<20} {law.probability:>6.3f} {law.log_evidence:>9.2f}  {limit:>26}"

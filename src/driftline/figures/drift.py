@@ -16,8 +16,9 @@ from driftline.numerals import probability
 
 if TYPE_CHECKING:
     from driftline.analysis import Analysis
-    from driftline.drift import Drift
+    from driftline.drift import Drift, LawFit
 
+MOST_LAWS = 2  # of each family
 BEYOND = 1.6  # the panel against L goes on to this many times the largest size
 
 
@@ -68,8 +69,8 @@ class DriftDrawing(Drawing):
         """What is to be seen."""
         return (
             f"Disorder of the {analysis.drift.source} against inverse size and size, with one standard deviation; "
-            "lines and bands: fitted laws with their 68 % bands and posterior probabilities; at 1/L = 0 the limits "
-            "of the bounded laws with 68 % intervals."
+            "lines and bands: the two most probable laws with a limit and without, with their 68 % bands and posterior "
+            "probabilities; at 1/L = 0 the limits of the former with 68 % intervals."
         )
 
     def draw(self, analysis: Analysis) -> Figure:
@@ -77,6 +78,15 @@ class DriftDrawing(Drawing):
         figure = draw_drift(analysis.drift, analysis.curves.labels)[0].figure
         assert isinstance(figure, Figure)
         return figure
+
+
+def shown_laws(drift: Drift) -> tuple[LawFit, ...]:
+    """The most probable laws of each family, in the order of the registry; seven bands hide each other."""
+    kept: list[LawFit] = []
+    for bounded in (True, False):
+        family = sorted((law for law in drift.laws if law.bounded == bounded), key=lambda law: -law.probability)
+        kept += family[:MOST_LAWS]
+    return tuple(law for law in drift.laws if law in kept)
 
 
 def _points(left: Axes, right: Axes, drift: Drift) -> None:
@@ -93,7 +103,7 @@ def _points(left: Axes, right: Axes, drift: Drift) -> None:
 
 def _laws(left: Axes, right: Axes, drift: Drift) -> tuple[list[Any], list[str]]:
     handles, texts = [], []
-    for number, law in enumerate(drift.laws):
+    for number, law in enumerate(shown_laws(drift)):
         colour, dashes = style.PALETTE[number % len(style.PALETTE)], style.DASHES[number % len(style.DASHES)]
         for axes, inverse in ((left, True), (right, False)):
             x, sizes = _grid(axes, inverse)
@@ -116,7 +126,7 @@ def _grid(axes: Axes, inverse: bool) -> tuple[FloatArray, FloatArray]:
 def _asymptotes(left: Axes, drift: Drift) -> None:
     """The limits of the bounded laws side by side in the strip left of 1/L = 0, each in the colour of its law."""
     low, _ = left.get_xlim()
-    bounded = [(number, law.limit) for number, law in enumerate(drift.laws) if law.limit is not None]
+    bounded = [(number, law.limit) for number, law in enumerate(shown_laws(drift)) if law.limit is not None]
     if len(drift.sizes):
         left.axvline(0.0, color=style.FAINT, linewidth=0.6, zorder=1)
     for order, (number, limit) in enumerate(bounded, start=1):
@@ -142,7 +152,7 @@ def _limits(left: Axes, right: Axes, drift: Drift) -> None:
         return
     bottom, top = style.spread(drift.positions, _sd(drift))
     reach = 1.2 * max(top - bottom, 1e-9 * abs(top))  # a limit far away must not flatten the points
-    for law in drift.laws:
+    for law in shown_laws(drift):
         if law.limit is not None:
             bottom = min(bottom, max(law.limit.low68, bottom - reach))
             top = max(top, min(law.limit.high68, top + reach))

@@ -7,6 +7,7 @@ from functools import partial
 from typing import TYPE_CHECKING
 
 from driftline import numerals
+from driftline.drift import limit_text
 
 if TYPE_CHECKING:
     from driftline.analysis import Analysis
@@ -131,8 +132,8 @@ def drift(analysis: Analysis) -> Table:
             law.formula,
             "yes" if law.bounded else "no",
             numerals.probability(law.probability),
-            numerals.short(law.limit),
-            numerals.bracket(law.limit),
+            numerals.MISSING if law.limit is None else limit_text(law),
+            numerals.MISSING if law.limit is None or law.one_sided else numerals.bracket(law.limit),
             numerals.fixed(law.chi2_per_dof, 2),
         )
         for law in laws
