@@ -64,7 +64,7 @@ def driftline() -> None:
 @click.option("--smallest-size", type=float, metavar="L", help="Leave out sizes below this one.")
 @click.option("--seed", type=int, metavar="N", help="Seed of the random numbers [default: 0].")
 @click.option("--quick", is_flag=True, default=None, help="A first look: shorter chains, fewer refits.")
-@click.option("--jobs", type=int, metavar="N", help="Worker processes [default: 1]; the numbers stay the same.")
+@click.option("--jobs", type=int, metavar="N", help="Worker processes [default: all cores]; same numbers.")
 @click.option("--force", is_flag=True, help="Replace an earlier output folder.")
 def analyse(path: Path, config: Path | None, out: Path | None, force: bool, **options: Any) -> None:
     """The whole job, from curves to a verdict.
@@ -77,7 +77,7 @@ def analyse(path: Path, config: Path | None, out: Path | None, force: bool, **op
 
     folder = default_folder(path) if out is None else out
     options["ansatze"] = options["ansatze"] or None
-    settings = Settings.resolve(config, options)
+    settings = Settings.resolve(config, options, {"jobs": _cores()})
     check_folder(folder, force=force)
     _analyse(path, settings, folder, force)
 
@@ -111,6 +111,12 @@ def ansatze(path: Path | None) -> None:
 
         curves = read(path)
     click.echo(listing(curves), nl=False)
+
+
+def _cores() -> int:
+    """Processor cores that this process may use."""
+    affinity = getattr(os, "sched_getaffinity", None)  # not on every system
+    return len(affinity(0)) if affinity else os.cpu_count() or 1
 
 
 def _analyse(path: Path, settings: Any, folder: Path, force: bool) -> None:

@@ -71,7 +71,12 @@ class Settings:
             object.__setattr__(self, name, check(getattr(self, name), name))
 
     @classmethod
-    def resolve(cls, file: str | Path | None = None, options: Mapping[str, Any] | None = None) -> Settings:
+    def resolve(
+        cls,
+        file: str | Path | None = None,
+        options: Mapping[str, Any] | None = None,
+        defaults: Mapping[str, Any] | None = None,
+    ) -> Settings:
         """Defaults, overridden by the TOML `file`, overridden by the command line's `options`.
 
         Parameters
@@ -80,13 +85,15 @@ class Settings:
             TOML file with any of the fields of `Settings` as keys; the labels as a table ``[labels]``.
         options : mapping, optional
             Fields by name; those that are None count as not given.
+        defaults : mapping, optional
+            Fields whose defaults differ from those of `Settings`, already checked.
 
         Raises
         ------
         ConfigurationError
             If the file cannot be read or a key or value cannot be used; the text names the file or option.
         """
-        chosen = {} if file is None else _read_toml(Path(file))
+        chosen = {**(defaults or {}), **({} if file is None else _read_toml(Path(file)))}
         for name, value in (options or {}).items():
             if value is not None:
                 chosen[name] = _CHECKS[name](
