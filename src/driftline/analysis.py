@@ -10,6 +10,7 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from driftline.collapse import CollapseFit, Comparison, fit_collapse, weigh
+from driftline.costs import Cost, collapse_costs
 from driftline.crossings import Crossings, find_crossings
 from driftline.curves import Curves
 from driftline.drift import Drift, fit_drift
@@ -67,6 +68,7 @@ class Analysis:
     stability: tuple[StabilityRow, ...]
     verdict: Verdict
     timing: dict[str, float] = field(default_factory=dict)
+    costs: dict[str, tuple[Cost, ...]] = field(default_factory=dict)
 
 
 def analyse(curves: Curves, *, settings: Settings | None = None, progress: Progress | None = None) -> Analysis:
@@ -95,7 +97,7 @@ def analyse(curves: Curves, *, settings: Settings | None = None, progress: Progr
     tell = progress or (lambda _text, _fraction: None)
     timing: dict[str, float] = {}
     used = chosen.select(curves.relabel(**chosen.labels) if chosen.labels else curves)
-    for_crossings, for_collapse, for_stability = np.random.default_rng(chosen.seed).spawn(3)
+    for_crossings, for_collapse, for_stability, for_costs = np.random.default_rng(chosen.seed).spawn(4)
     with _timed(timing, "crossings"):
         tell("finding crossings", 0.0)
         crossings = find_crossings(used, draws=chosen.draws, seed=for_crossings)
@@ -103,6 +105,7 @@ def analyse(curves: Curves, *, settings: Settings | None = None, progress: Progr
         separation = separation_test(crossings)
     with _timed(timing, "collapse"):
         comparison = _compare(used, chosen, for_collapse, _within(tell, "crossings", "collapse"))
+        costs = _costs(comparison, for_costs)
     basis = headline_basis(comparison)
     with _timed(timing, "stability"):
         stability = _stability(used, basis, chosen, for_stability, _within(tell, "collapse", "stability"))
@@ -110,7 +113,7 @@ def analyse(curves: Curves, *, settings: Settings | None = None, progress: Progr
     case = Case(used, crossings, drift, separation, comparison, basis, stability)
     tell("judging", 1.0)
     return Analysis(
-        used, chosen, crossings, drift, separation, comparison, crossover, stability, judge(case), timing
+        used, chosen, crossings, drift, separation, comparison, crossover, stability, judge(case), timing, costs
     )  # fmt: skip
 
 
@@ -139,6 +142,12 @@ def _compare(curves: Curves, settings: Settings, rng: np.random.Generator, tell:
     ]
     fits = run_tasks(tasks, settings.jobs, tell)
     return Comparison(tuple(fits), weigh(fits))
+
+
+def _costs(comparison: Comparison, rng: np.random.Generator) -> dict[str, tuple[Cost, ...]]:
+    """Cost functions of the literature by ansatz: for the report, never for the verdict."""
+    pairs = zip(comparison.fits, rng.spawn(len(comparison.fits)), strict=True)
+    return {fit.ansatz.name: collapse_costs(fit, seed=stream) for fit, stream in pairs}
 
 
 def headline_basis(comparison: Comparison) -> tuple[CollapseFit, ...]:
