@@ -63,6 +63,10 @@ class Ansatz:
         """What it would mean if this form were true."""
         return self.form.hypothesis
 
+    def on(self, curves: Curves) -> Ansatz:
+        """The same ansatz with the priors that suit other curves."""
+        return compose(self.name, curves, (self.form,))
+
     @property
     def formula(self) -> str:
         """One line for people."""
@@ -105,8 +109,17 @@ class Ansatz:
         return np.asarray(np.exp(exponent * np.log(size / typical_size(sizes))))
 
 
-def parse_ansatz(name: str, curves: Curves) -> Ansatz:
+def parse_ansatz(name: str, curves: Curves, forms: Iterable[Form] = ()) -> Ansatz:
     """The ansatz of this name with priors that suit these curves.
+
+    Parameters
+    ----------
+    name : str
+        Parts joined by colons.
+    curves : Curves
+        Measured data.
+    forms : iterable of Form, optional
+        Forms of the user's own that the name may begin with.
 
     Raises
     ------
@@ -122,10 +135,18 @@ def parse_ansatz(name: str, curves: Curves) -> Ansatz:
     >>> [p.name for p in parse_ansatz("power-law:corrected", curves).parameters]
     ['W_c', 'nu', 'omega']
     """
-    check_ansatz_name(name)
+    ansatz = compose(name, curves, forms)
+    ansatz.form.check(curves)
+    return ansatz
+
+
+def compose(name: str, curves: Curves, forms: Iterable[Form] = ()) -> Ansatz:
+    """As `parse_ansatz`, without the check that a form of the user's own is defined on these curves."""
+    own = {form.name: form for form in forms}
+    check_ansatz_name(name, own.values())
     first, *rest = name.split(":")
     trajectory = TRAJECTORIES[next((part for part in rest if part in TRAJECTORIES), FIXED)]
-    form = Critical(LENGTHS[first], trajectory) if first in LENGTHS else FORMS[first]
+    form = Critical(LENGTHS[first], trajectory) if first in LENGTHS else {**own, **FORMS}[first]
     corrected = CORRECTED in rest
     amplitude = next((part for part in rest if _is_amplitude(part)), None)
     exponent = float(amplitude.partition("=")[2]) if amplitude and "=" in amplitude else None
@@ -157,10 +178,10 @@ def _kappa() -> Parameter:
     return Parameter("kappa_A", r"\kappa_A", Normal(0.0, AMPLITUDE_SD), "exponent of the amplitude")
 
 
-def check_ansatz_name(name: str) -> None:
+def check_ansatz_name(name: str, forms: Iterable[Form] = ()) -> None:
     """Raise ConfigurationError if `parse_ansatz` would not understand this name."""
     first, *rest = name.split(":")
-    known = [*LENGTHS, *FORMS]
+    known = [*LENGTHS, *FORMS, *(form.name for form in forms)]
     if first not in known:
         raise ConfigurationError(
             f"ansatz {name!r} must begin with a scaled variable ({', '.join(known)})" + _suggestion(first, known)

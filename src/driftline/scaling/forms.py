@@ -62,6 +62,9 @@ class Form(ABC):
         """Factor from x to the x of the label, for axes that people read."""
         return 1.0
 
+    def check(self, curves: Curves) -> None:  # noqa: B027 - most forms are right by construction
+        """Raise ConfigurationError if x cannot be computed for these curves."""
+
 
 def typical_size(sizes: FloatArray) -> float:
     """Geometric mean of the smallest and largest size: the unit of size inside scaled variables."""

@@ -178,11 +178,23 @@ class Posterior:
 
     def positions(self, z: FloatArray) -> FloatArray:
         """Positions u in [0, 1] of all points on the axis of the scaling function, shape (batch, points)."""
+        return self._axis(z)[0]
+
+    def _axis(self, z: FloatArray) -> tuple[FloatArray, NDArray[np.bool_]]:
+        """Positions, and for each row whether they make an axis, shape (batch,).
+
+        They make none where x is not finite or the same for all points, which a form of the user's own may give; such
+        positions are all zero, so that what follows stays defined, and the row has no likelihood.
+        """
         size, disorder = self._points
         x = self.ansatz.scaled(z, size, disorder, self.curves.sizes)
-        low = x.min(axis=1, keepdims=True)
-        u: FloatArray = (x - low) / (x.max(axis=1, keepdims=True) - low)
-        return u
+        low, high = x.min(axis=1, keepdims=True), x.max(axis=1, keepdims=True)
+        with np.errstate(invalid="ignore", over="ignore"):
+            span = high - low  # finite only if every x is
+        sound = np.isfinite(span) & (span > 0)
+        if not sound.all():
+            x, low, span = np.where(sound, x, 0.0), np.where(sound, low, 0.0), np.where(sound, span, 1.0)
+        return (x - low) / span, sound[:, 0]
 
     def targets(self, amplitude: FloatArray | None) -> FloatArray:
         """Data minus the prior mean of the model, in units of their range, shape (batch or 1, points).
@@ -249,18 +261,21 @@ class Posterior:
         return np.where(sound, total, -np.inf)
 
     def _banded(self, z: FloatArray) -> tuple[FloatArray, FloatArray]:
-        """s^2 Q and ln det(M + s^2 P) for independent points."""
+        """s^2 Q and ln det(M + s^2 P) for independent points; Q is NaN where the positions make no axis."""
         size, sizes = self._points[0], self.curves.sizes
         correction, amplitude = self.ansatz.correction(z, size, sizes), self.ansatz.amplitude(z, size, sizes)
-        return solve_batch(
-            self.positions(z), correction, amplitude, self.targets(amplitude), np.asarray(self._whitener),
+        u, sound = self._axis(z)
+        quadratic, log_det = solve_batch(
+            u, correction, amplitude, self.targets(amplitude), np.asarray(self._whitener),
             *self._nuisance(z), self.function.roughness_band, self.function.line, self.correction_sd,
         )  # fmt: skip
+        return np.where(sound, quadratic, np.nan), log_det
 
     def _dense(self, z: FloatArray) -> tuple[FloatArray, FloatArray]:
         """The same by dense algebra, whatever the covariance of the points."""
         diagonal = np.diagonal(_cholesky(self.system(z)), axis1=1, axis2=2)
-        return diagonal[:, -1] ** 2, 2 * np.sum(np.log(diagonal[:, :-1]), axis=1)
+        quadratic = np.where(self._axis(z)[1], diagonal[:, -1] ** 2, np.nan)
+        return quadratic, 2 * np.sum(np.log(diagonal[:, :-1]), axis=1)
 
     def coefficients(self, z: FloatArray) -> tuple[FloatArray, FloatArray]:
         """Posterior mean and covariance of c, in units of the range of y, at one vector `z`, shape (dimension,)."""

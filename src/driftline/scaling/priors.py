@@ -95,7 +95,8 @@ class _Logarithmic(Prior):
     """Mixin: the coordinate is the natural logarithm of the parameter."""
 
     def value(self, z: FloatArray) -> FloatArray:
-        return np.exp(z)
+        with np.errstate(over="ignore"):  # far in the tails of a broad prior: infinite, and then impossible
+            return np.exp(z)
 
     def coordinate(self, value: FloatArray) -> FloatArray:
         return np.log(value)
