@@ -3,8 +3,8 @@
 Which truth to take: `PowerLawTruth` for a real transition, with or without a correction to scaling; `LinearDriftTruth`
 and `LogDriftTruth` for a crossover that runs away with size, `InverseDriftTruth` for one that converges as 1/L;
 `KosterlitzThoulessTruth` for a transition with an exponentially growing length; `FiniteLengthTruth` where every state
-is localised and small samples only look extended; `SizeIndependentTruth` where size does nothing. Each takes any
-`ScalingFunction`.
+is localised and small samples only look extended; `SizeRatioTruth` and `DepartureTruth` for a crossover that moves out
+with size without a single crossing; `SizeIndependentTruth` where size does nothing. Each takes any `ScalingFunction`.
 """
 
 from __future__ import annotations
@@ -166,6 +166,35 @@ class FiniteLengthTruth(Truth):
     def value(self, size: float, disorder: FloatArray) -> FloatArray:
         ratio = self.W_0 / np.asarray(disorder, dtype=np.float64)
         return self.scaling(np.log(size) - self.c * ratio**self.alpha)
+
+
+@dataclass(frozen=True)
+class SizeRatioTruth(Truth):
+    """y = F(W/L - ratio): the crossover disorder grows in proportion to the size, and no two curves cross.
+
+    The default scale of F is in units of W/L.
+    """
+
+    ratio: float = 0.36
+    scaling: ScalingFunction = field(default_factory=lambda: Logistic(scale=0.08))
+
+    def value(self, size: float, disorder: FloatArray) -> FloatArray:
+        return self.scaling(np.asarray(disorder, dtype=np.float64) / size - self.ratio)
+
+
+@dataclass(frozen=True)
+class DepartureTruth(Truth):
+    """y = F(W - W_0 - rate L): every size leaves a common plateau at its own disorder, and no two curves cross.
+
+    Curves of all sizes are the same but for a shift, so a larger size lies above a smaller one wherever they differ.
+    """
+
+    W_0: float = 1.0
+    rate: float = 0.2
+    scaling: ScalingFunction = field(default_factory=lambda: Gompertz(scale=1.0))
+
+    def value(self, size: float, disorder: FloatArray) -> FloatArray:
+        return self.scaling(np.asarray(disorder, dtype=np.float64) - self.W_0 - self.rate * size)
 
 
 @dataclass(frozen=True)
