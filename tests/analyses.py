@@ -7,6 +7,7 @@ import numpy as np
 from driftline.analysis import Analysis, Crossover
 from driftline.cautions import Caution
 from driftline.collapse import CollapsedPoints, CollapseFit, Comparison, FitQuality, SamplerHealth, weigh
+from driftline.costs import COST_FUNCTIONS, Cost
 from driftline.crossings import Crossing, Crossings
 from driftline.curves import Curve, Curves, Labels
 from driftline.drift import LAWS, Drift, LawFit
@@ -143,6 +144,8 @@ CAUTION = Caution(
     {"probability_bounded": 0.8},
 )
 
+COSTS = tuple(Cost(name, 1.25, Interval.of_normal(1.0, 0.1), 1.25) for name in COST_FUNCTIONS)
+
 
 def made_analysis(
     curves=None, *, code="transition-supported", names=("power-law", "power-law:corrected"), warnings=(CAUTION,),
@@ -173,4 +176,5 @@ def made_analysis(
             warnings=tuple(warnings),
         ),
         timing={"crossings": 0.5, "collapse": 4.0},
+        costs=dict.fromkeys(names, COSTS),
     )

@@ -11,7 +11,9 @@ import numpy as np
 import pytest
 from analyses import OPENING, made_analysis, made_curves
 
+from driftline.costs import COST_FUNCTIONS, Cost
 from driftline.errors import ConfigurationError
+from driftline.inference.intervals import Interval
 from driftline.report.configuration import to_toml
 from driftline.report.folder import MARK, check_folder, default_folder, output_folder
 from driftline.report.page import page
@@ -61,6 +63,7 @@ SCHEMA = {
             "fit": {"chi2_per_dof": NUMBER, "p_value": NUMBER, "noise_scale": NUMBER, "max_residual": NUMBER},
             "held_out": {"log_score": MAYBE, "chi2_per_point": MAYBE},
             "sampler": {"effective_samples": NUMBER, "autocorrelation": MAYBE, "converged": FLAG},
+            "costs": [{"name": TEXT, "value": NUMBER, "floor": INTERVAL}],
         }
     ],
     "crossover": {"disorder": {**INTERVAL, "systematic": MAYBE}, "nu": INTERVAL, "basis": [TEXT]},
@@ -161,11 +164,29 @@ def test_tables_hold_the_same_numbers_as_the_result():
     """Each table has a row for each entry, intervals and lists spread over columns."""
     analysis = made_analysis()
     made = tables(analysis)
-    assert list(made) == ["crossings", "drift", "ansatze", "stability", "collapsed-points"]
+    assert list(made) == ["crossings", "drift", "ansatze", "stability", "costs", "collapsed-points"]
     assert made["crossings"][0]["size_1"] == 6.0
     assert made["crossings"][0]["disorder_median"] == analysis.crossings.pairs[0].disorder.median
     assert made["ansatze"][1]["parameters_W_c_low95"] == analysis.comparison.fits[1].parameters["W_c"].low95
     assert len(made["collapsed-points"]) == 2 * analysis.curves.points
+    assert not any(name.startswith("costs") for name in made["ansatze"][0])
+    assert len(made["costs"]) == 2 * len(COST_FUNCTIONS)
+    (cost, *_) = analysis.costs["power-law"]
+    assert made["costs"][0] == {
+        "ansatz": "power-law", "cost": cost.name, "value": cost.value, "ratio": cost.ratio,
+        **{f"floor_{name}": limit for name, limit in cost.floor.to_dict().items()},
+    }  # fmt: skip
+
+
+def test_costs_that_are_not_defined_are_null_and_shown_as_a_dash(tmp_path):
+    """Sizes that do not overlap leave null in the result, an empty cell in the table and a dash on the page."""
+    analysis = made_analysis()
+    nothing = Interval(*[math.nan] * 5)
+    analysis.costs["power-law"] = (Cost("houdayer-hartmann", math.nan, nothing, math.nan),)
+    empty = {"name": "houdayer-hartmann", "value": None, "floor": dict.fromkeys(INTERVAL)}
+    assert json.loads(to_json(analysis))["collapse"][0]["costs"] == [empty]
+    assert tables(analysis)["costs"][0]["value"] is None
+    assert "<tr><td>power-law</td><td>- (-)</td></tr>" in page(analysis, tmp_path)
 
 
 @pytest.fixture(scope="module")
@@ -180,7 +201,8 @@ def test_the_folder_is_complete(folder):
     """Every file of the contract is there, none is empty, and no temporary one is left beside it."""
     names = {str(path.relative_to(folder)) for path in folder.rglob("*") if path.is_file()}
     figures = {f"figures/{name}.{kind}" for name in ("curves", "drift", "collapse") for kind in ("pdf", "png")}
-    sheets = {f"tables/{name}.csv" for name in ("crossings", "drift", "ansatze", "stability", "collapsed-points")}
+    stems = ("crossings", "drift", "ansatze", "stability", "costs", "collapsed-points")
+    sheets = {f"tables/{name}.csv" for name in stems}
     assert names == figures | sheets | {
         "result.json", "summary.txt", "report.html", "analysis.toml", "posterior.h5",
     }  # fmt: skip

@@ -23,6 +23,8 @@ if TYPE_CHECKING:
     from driftline.collapse import Comparison as Comparison
     from driftline.collapse import compare_ansatze as compare_ansatze
     from driftline.collapse import fit_collapse as fit_collapse
+    from driftline.costs import Cost as Cost
+    from driftline.costs import collapse_costs as collapse_costs
     from driftline.crossings import Crossing as Crossing
     from driftline.crossings import Crossings as Crossings
     from driftline.crossings import find_crossings as find_crossings
@@ -48,6 +50,7 @@ if TYPE_CHECKING:
 _HOMES = {
     "analysis": ("Analysis", "Crossover", "analyse"),
     "collapse": ("CollapseFit", "Comparison", "compare_ansatze", "fit_collapse"),
+    "costs": ("Cost", "collapse_costs"),
     "crossings": ("Crossing", "Crossings", "find_crossings"),
     "curves": ("Curve", "Curves", "Labels"),
     "drift": ("Drift", "fit_drift"),

@@ -42,7 +42,7 @@ def page(analysis: Analysis, figures: Path) -> str:
     name = escape(analysis.curves.labels.observable)
     tables = (
         rows.crossover(analysis), rows.collapse(analysis), rows.crossings(analysis), rows.drift(analysis),
-        rows.stability(analysis),
+        rows.stability(analysis), rows.costs(analysis),
     )  # fmt: skip
     body = [
         f"<h1>Finite-size crossover of the {name}</h1>",

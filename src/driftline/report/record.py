@@ -23,6 +23,7 @@ from driftline.report.base import Writer
 if TYPE_CHECKING:
     from driftline.analysis import Analysis, Crossover
     from driftline.collapse import CollapseFit
+    from driftline.costs import Cost
     from driftline.curves import Curves
     from driftline.settings import Settings
 
@@ -52,7 +53,10 @@ def record(analysis: Analysis) -> dict[str, Any]:
         "config": _config(analysis.settings),
         "crossings": _plain(analysis.crossings.to_dict()),
         "drift": _plain(analysis.drift.to_dict()),
-        "collapse": [_collapse(*pair) for pair in zip(comparison.fits, comparison.probabilities, strict=True)],
+        "collapse": [
+            _collapse(fit, probability, analysis.costs.get(fit.ansatz.name, ()))
+            for fit, probability in zip(comparison.fits, comparison.probabilities, strict=True)
+        ],
         "crossover": _crossover(analysis.crossover),
         "stability": _plain(
             [
@@ -82,8 +86,9 @@ def tables(analysis: Analysis) -> dict[str, list[dict[str, Any]]]:
     return {
         "crossings": [_flat(row) for row in result["crossings"]],
         "drift": [_flat(row) for row in result["drift"]["laws"]],
-        "ansatze": [_flat(row) for row in result["collapse"]],
+        "ansatze": [_flat({name: cell for name, cell in row.items() if name != "costs"}) for row in result["collapse"]],
         "stability": [_flat(row) for row in result["stability"]],
+        "costs": [row for name, costs in analysis.costs.items() for row in _costs(name, costs)],
         "collapsed-points": [row for fit in analysis.comparison.fits for row in _points(fit)],
     }
 
@@ -117,6 +122,7 @@ _FIRST_COLUMNS = {
     "drift": ("name", "bounded", "log_evidence", "probability"),
     "ansatze": ("ansatz", "hypothesis", "log_evidence", "log_evidence_error", "probability"),
     "stability": ("ansatz", "smallest_size", "window_1", "window_2"),
+    "costs": ("ansatz", "cost", "value", "ratio"),
     "collapsed-points": ("ansatz", "size", "disorder", "x", "y", "error", "fitted", "residual"),
 }
 
@@ -147,7 +153,7 @@ def _config(settings: Settings) -> dict[str, Any]:
     return {name: _plain(getattr(settings, name)) for name in names}
 
 
-def _collapse(fit: CollapseFit, probability: float) -> dict[str, Any]:
+def _collapse(fit: CollapseFit, probability: float, costs: Sequence[Cost]) -> dict[str, Any]:
     quality, sampler, held_out = fit.quality, fit.sampler, fit.held_out
     entry = {
         "ansatz": fit.ansatz.name,
@@ -159,6 +165,7 @@ def _collapse(fit: CollapseFit, probability: float) -> dict[str, Any]:
         "fit": {name: getattr(quality, name) for name in ("chi2_per_dof", "p_value", "noise_scale", "max_residual")},
         "held_out": {name: getattr(held_out, name, None) for name in ("log_score", "chi2_per_point")},
         "sampler": {name: getattr(sampler, name) for name in ("effective_samples", "autocorrelation", "converged")},
+        "costs": [{"name": cost.name, "value": cost.value, "floor": cost.floor} for cost in costs],
     }
     return {name: _plain(value) for name, value in entry.items()}
 
@@ -222,6 +229,12 @@ def _flat(row: Mapping[str, Any]) -> dict[str, Any]:
         else:
             cells[name] = value
     return cells
+
+
+def _costs(ansatz: str, costs: Sequence[Cost]) -> Iterable[dict[str, Any]]:
+    for cost in costs:
+        cells = {"ansatz": ansatz, "cost": cost.name, "value": cost.value, "ratio": cost.ratio, "floor": cost.floor}
+        yield _flat(_plain(cells))
 
 
 def _points(fit: CollapseFit) -> Iterable[dict[str, Any]]:

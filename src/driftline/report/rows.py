@@ -176,6 +176,17 @@ def stability(analysis: Analysis) -> Table:
     return Table("Stability", ("ansatz", "smallest size", f"{name} range", f"{name}_c", "95 %", "p"), rows)
 
 
+def costs(analysis: Analysis) -> Table:
+    """One row for each ansatz: the cost functions of the literature, each with its multiple of the noise floor."""
+    rows = tuple(
+        (name, *(f"{numerals.significant(cost.value)} ({numerals.fixed(cost.ratio, 2)})" for cost in found))
+        for name, found in analysis.costs.items()
+    )
+    names = next((tuple(cost.name for cost in found) for found in analysis.costs.values()), ())
+    heading = "Cost functions of the literature, for comparison only (in brackets: multiple of what noise alone gives)"
+    return Table(heading, ("ansatz", *names), rows)
+
+
 def data(analysis: Analysis) -> str:
     """One sentence on what was analysed and how to repeat it."""
     curves, labels = analysis.curves, analysis.curves.labels
