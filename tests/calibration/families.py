@@ -15,8 +15,18 @@ import numpy as np
 
 from driftline import Curves, Labels
 from driftline.simulate import (
-    DepartureTruth, FiniteLengthTruth, Gompertz, KosterlitzThoulessTruth, LinearDriftTruth, LogDriftTruth, Logistic,
-    PowerLawTruth, SizeIndependentTruth, SizeRatioTruth, Truth, simulate,
+    DepartureTruth,
+    FiniteLengthTruth,
+    Gompertz,
+    KosterlitzThoulessTruth,
+    LinearDriftTruth,
+    LogDriftTruth,
+    Logistic,
+    PowerLawTruth,
+    SizeIndependentTruth,
+    SizeRatioTruth,
+    Truth,
+    simulate,
 )  # fmt: skip
 
 HIGH, LOW = 0.53, 0.39
