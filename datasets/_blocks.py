@@ -12,7 +12,7 @@ import csv
 import os
 from collections.abc import Callable
 from concurrent.futures import ProcessPoolExecutor, as_completed
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from pathlib import Path
 
 for name in ("OPENBLAS_NUM_THREADS", "OMP_NUM_THREADS", "MKL_NUM_THREADS"):
@@ -42,6 +42,8 @@ class Study:
         Names, symbols and reference values: attributes of curves.h5, comment lines at the top of curves.csv.
     grain : int
         Disorders enter the seed as whole numbers, in units of 1/grain.
+    reported : dict
+        ``{size: size in the curves}``, where the two differ; blocks are counted, seeded and stored by whole numbers.
     """
 
     folder: Path
@@ -51,6 +53,7 @@ class Study:
     disorders: dict[int, tuple[float, ...]]
     labels: dict[str, str | float]
     grain: int = 1_000_000
+    reported: dict[int, float] = field(default_factory=dict)
 
     @property
     def blocks(self):
@@ -60,7 +63,8 @@ class Study:
     def block(self, size, disorder, number):
         """One block: realisations, mean, and sum of squared deviations of the values."""
         realisations = self.plan[size][0]
-        rng = np.random.default_rng([self.seed, size, round(self.grain * disorder), number])
+        place = round(self.grain * disorder) % 2**64  # a seed cannot be negative
+        rng = np.random.default_rng([self.seed, size, place, number])
         values = np.array([self.sample(size, disorder, rng) for _ in range(realisations)])
         return size, disorder, number, realisations, values.mean(), np.sum((values - values.mean()) ** 2)
 
@@ -116,19 +120,22 @@ def combine(blocks):
     return rows
 
 
-def write(folder, rows, labels):
-    """Write curves.csv and curves.h5 into `folder`, each under a temporary name first."""
-    table = folder / "curves.csv.part"
-    with table.open("w", newline="\n") as file:
+def write(folder, rows, labels, *, stem="curves", covariances=None):
+    """Write <stem>.csv and <stem>.h5 into `folder`, each under a temporary name first.
+
+    `covariances` holds the covariance of the means of a size, {size: array}; only the HDF5 file has a place for it.
+    """
+    table = folder / f"{stem}.csv.part"
+    with table.open("w", encoding="utf-8", newline="\n") as file:
         file.writelines(f"# {name}: {value}\n" for name, value in labels.items())
         file.write("size,disorder,mean,error,samples\n")
         for size, disorder, mean, error, samples in rows:
             file.write(f"{size},{disorder:g},{mean:.8f},{error:.8f},{samples}\n")
-    table.replace(folder / "curves.csv")
+    table.replace(folder / f"{stem}.csv")
 
     import h5py
 
-    store = folder / "curves.h5.part"
+    store = folder / f"{stem}.h5.part"
     with h5py.File(store, "w") as file:
         file.attrs.update(labels)
         for size in sorted({row[0] for row in rows}):
@@ -136,7 +143,9 @@ def write(folder, rows, labels):
             group = file.create_group(f"curves/{size}")
             for name, values in zip(("disorder", "mean", "error", "samples"), columns, strict=True):
                 group[name] = values.astype(int) if name == "samples" else values
-    store.replace(folder / "curves.h5")
+            if covariances is not None:
+                group["covariance"] = covariances[size]
+    store.replace(folder / f"{stem}.h5")
 
 
 def main(study, description):
@@ -147,4 +156,5 @@ def main(study, description):
     options = parser.parse_args()
     if not options.write:
         compute(study, options.workers)
-    write(study.folder, combine(read_blocks(study.blocks)), study.labels)
+    rows = combine(read_blocks(study.blocks))
+    write(study.folder, [(study.reported.get(row[0], row[0]), *row[1:]) for row in rows], study.labels)
