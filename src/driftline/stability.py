@@ -81,8 +81,14 @@ def _window(curves: Curves, centre: float, kept: float) -> tuple[float, float]:
     """Window of a part of the range, as near to `centre` as the range allows."""
     low, high = curves.disorder_range
     width = kept * (high - low)
-    start = min(max(centre - width / 2, low), high - width)
-    return start, start + width
+    # an end of the range is taken as it is: computed, it may lie within rounding of it and cut the outermost points off
+    if kept == 1:
+        return low, high
+    if centre - width / 2 <= low:
+        return low, low + width
+    if centre + width / 2 >= high:
+        return high - width, high
+    return centre - width / 2, centre + width / 2
 
 
 def _possible(curves: Curves, cut: Cut) -> bool:
