@@ -7,6 +7,7 @@ import signal
 from collections.abc import Callable, Mapping, Sequence
 from concurrent.futures import ProcessPoolExecutor, as_completed
 from dataclasses import dataclass
+from multiprocessing.process import BaseProcess
 from typing import Any
 
 Progress = Callable[[str, float], None]
@@ -42,15 +43,16 @@ def run_tasks(tasks: Sequence[Task], jobs: int, progress: Progress) -> list[Any]
             progress(task.text, i / len(tasks))
             results.append(task())
         return results
+    others = frozenset(multiprocessing.active_children())
     with ProcessPoolExecutor(min(jobs, len(tasks)), initializer=_leave_interrupts_to_parent) as pool:
-        futures = {pool.submit(task): i for i, task in enumerate(tasks)}
-        progress(f"{len(tasks)} fits on {min(jobs, len(tasks))} processes", 0.0)
         try:
+            futures = {pool.submit(task): i for i, task in enumerate(tasks)}
+            progress(f"{len(tasks)} fits on {min(jobs, len(tasks))} processes", 0.0)
             for done, future in enumerate(as_completed(futures), 1):
                 progress(tasks[futures[future]].text, done / len(tasks))
                 future.result()  # an error ends the whole at once, not after the slowest task
         except BaseException:
-            _end_workers(pool)
+            _end_workers(pool, others)
             raise
         return [future.result() for future in futures]
 
@@ -60,7 +62,9 @@ def _leave_interrupts_to_parent() -> None:
     signal.signal(signal.SIGINT, signal.SIG_IGN)
 
 
-def _end_workers(pool: ProcessPoolExecutor) -> None:
+def _end_workers(pool: ProcessPoolExecutor, others: frozenset[BaseProcess]) -> None:
+    """End the processes of the pool, but not `others`, which a program that uses this package may have started."""
     pool.shutdown(wait=False, cancel_futures=True)
     for child in multiprocessing.active_children():
-        child.terminate()
+        if child not in others:
+            child.terminate()
