@@ -9,7 +9,7 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 
 from driftline import numerals
-from driftline.cautions import CROSSES, ESTABLISHED, Case, Caution, cautions
+from driftline.cautions import CROSSES, ESTABLISHED, POOR_P, Case, Caution, cautions
 from driftline.scaling.forms import SizeIndependent
 
 __all__ = ["Case", "Caution", "Verdict", "judge"]
@@ -66,7 +66,7 @@ def _decide(case: Case, failed: tuple[str, ...], drift: float | None) -> tuple[s
     if not failed:
         return "transition-supported", _transition_statement(case)
     if _without_size(case) >= ESTABLISHED:
-        return "size-independent", "The curves of all sizes are the same within their errors."
+        return "size-independent", _size_independent_statement(case)
     if drift is not None and drift >= ESTABLISHED and (case.drift.probability_bounded or 0.0) < CONTRADICTED:
         return "drifting", _drift_statement(case, drift)
     return "undecided", "The data neither support a critical disorder nor establish a drift."
@@ -74,8 +74,12 @@ def _decide(case: Case, failed: tuple[str, ...], drift: float | None) -> tuple[s
 
 def probability_of_transition(case: Case) -> float | None:
     """From the evidences of the collapse if rival hypotheses were fitted, else from the laws of the drift."""
-    collapse = case.comparison.probability("transition")
-    return collapse if collapse is not None else case.drift.probability_bounded
+    return case.comparison.probability("transition") if _compared(case) else case.drift.probability_bounded
+
+
+def _compared(case: Case) -> bool:
+    """Whether forms of more than one hypothesis were fitted, so that their evidences say something."""
+    return case.comparison.probability("transition") is not None
 
 
 def probability_of_drift(case: Case) -> float | None:
@@ -85,7 +89,9 @@ def probability_of_drift(case: Case) -> float | None:
 
 
 def _without_size(case: Case) -> float:
-    """Probability of the form in which size does nothing."""
+    """Probability of the form in which size does nothing; 0 unless it was compared with other hypotheses."""
+    if not _compared(case):
+        return 0.0
     pairs = zip(case.comparison.fits, case.comparison.probabilities, strict=True)
     return float(sum(p for fit, p in pairs if isinstance(fit.ansatz.form, SizeIndependent)))
 
@@ -95,16 +101,21 @@ def transition_conditions(
 ) -> list[tuple[bool, str]]:
     """Each condition of `transition-supported` with the reason to give if it does not hold."""
     codes = {caution.code: caution for caution in warnings}
+    models = "forms with a critical disorder" if _compared(case) else "laws of the crossings with a limit"
     crossing = sum(pair.probability >= CROSSES for pair in case.crossings.adjacent)
     pairs = len(case.crossings.adjacent)
     conditions = [
         (
             probability is not None and probability >= ESTABLISHED,
             "no rival form was fitted, so nothing was compared" if probability is None else
-            f"forms with a critical disorder hold {probability:.3f} of the probability; {ESTABLISHED} are asked for",
+            f"{models} hold {probability:.3f} of the probability; {ESTABLISHED} are asked for",
         ),
         (crossing == pairs, f"{crossing} of {pairs} pairs of neighbouring sizes cross inside the common window"),
         (case.headline is not None, "no form with a critical disorder was fitted"),
+        (
+            case.headline is None or any(row.smallest_size > case.curves.sizes[0] for row in case.stability),
+            "too few sizes or disorders to see whether W_c stays without the smallest size",
+        ),
     ]  # fmt: skip
     blocking = (
         "ONE_SIDED", "CROSSING_AT_REFERENCE", "DRIFT_UNBOUNDED", "POOR_FIT", "SIZE_UNSTABLE", "OUTSIDE_RANGE",
@@ -127,6 +138,12 @@ def _transition_statement(case: Case) -> str:
 def _drift_statement(case: Case, drift: float) -> str:
     rate = case.drift.rate_per_site
     speed = f" by {numerals.median(rate)} per unit of size, {numerals.bracket(rate)} (95 %)" if rate else ""
-    return (
-        f"The crossover moves with size{speed}; forms without a critical disorder hold {drift:.3f} of the probability."
-    )
+    models = "forms without a critical disorder" if _compared(case) else "laws of the crossings without a limit"
+    return f"The crossover moves with size{speed}; {models} hold {drift:.3f} of the probability."
+
+
+def _size_independent_statement(case: Case) -> str:
+    fits = [fit for fit in case.comparison.fits if isinstance(fit.ansatz.form, SizeIndependent)]
+    if max(fit.quality.p_value for fit in fits) >= POOR_P:
+        return "The curves of all sizes are the same within their errors."
+    return "The form in which size does nothing describes the curves best, but misses them by more than their errors."
