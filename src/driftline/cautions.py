@@ -86,7 +86,7 @@ def few_sizes(case: Case) -> Caution | None:
         return None
     return Caution(
         "FEW_SIZES",
-        f"only {count} sizes, so at most {count - 1} crossings of neighbouring sizes",
+        f"only {count} sizes, so at most {count - 1} crossing{'s' * (count > 2)} of neighbouring sizes",
         f"add sizes; {ENOUGH_SIZES} are the least from which a drift and its law can be told apart",
         {"sizes": count},
     )
@@ -375,7 +375,8 @@ def plateau_mismatch(case: Case) -> Caution | None:
     off = abs(value - labels.ergodic_value)
     if apart > 2 or off < PLATEAU_SIGMAS * error or off < PLATEAU_SHARE * distance:
         return None
-    blocks = labels.observable == "gap-ratio" and abs(value - TWO_BLOCKS) < PLATEAU_SIGMAS * error
+    name = labels.observable.lower()  # "gap-ratio", "mean gap ratio"
+    blocks = "gap" in name and "ratio" in name and abs(value - TWO_BLOCKS) < PLATEAU_SIGMAS * error
     return Caution(
         "PLATEAU_MISMATCH",
         f"at the weakest disorder the two largest sizes agree on {numerals.plus_minus(value, error)}, not on the "
