@@ -36,7 +36,7 @@ SCHEMA = {
     "seed": NUMBER,
     "config": {
         "ansatze": [TEXT], "window": None, "smallest_size": MAYBE, "quick": FLAG, "labels": {...: TEXT},
-        "draws": NUMBER,
+        "draws": NUMBER, "forms": {...: {"x": TEXT, "hypothesis": TEXT, "parameters": {...: {...: TEXT}}}},
     },
     "crossings": [
         {

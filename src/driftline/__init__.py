@@ -44,6 +44,11 @@ if TYPE_CHECKING:
     from driftline.report.record import record as record
     from driftline.report.summary import summary as summary
     from driftline.report.writers import write_report as write_report
+    from driftline.scaling.expression import ExpressionForm as ExpressionForm
+    from driftline.scaling.priors import LogNormal as LogNormal
+    from driftline.scaling.priors import LogUniform as LogUniform
+    from driftline.scaling.priors import Normal as Normal
+    from driftline.scaling.priors import Uniform as Uniform
     from driftline.settings import Settings as Settings
     from driftline.verdict import Verdict as Verdict
 
@@ -63,6 +68,8 @@ _HOMES = {
     "report.record": ("record",),
     "report.summary": ("summary",),
     "report.writers": ("write_report",),
+    "scaling.expression": ("ExpressionForm",),
+    "scaling.priors": ("LogNormal", "LogUniform", "Normal", "Uniform"),
     "settings": ("Settings",),
     "verdict": ("Verdict",),
 }

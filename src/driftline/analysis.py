@@ -135,7 +135,7 @@ def _compare(curves: Curves, settings: Settings, rng: np.random.Generator, tell:
     names = settings.ansatze
     if names == DEFAULT_ANSATZE:  # what the user asked for by name must run or be refused; the default set adapts
         names = applicable(names, curves)
-    forms = [parse_ansatz(name, curves) for name in names]  # all names are checked before any work
+    forms = [parse_ansatz(name, curves, settings.forms) for name in names]  # all names are checked before any work
     tasks = [
         Task(f"collapse {form.name}", fit_collapse, (curves, form), {"seed": stream, "quick": settings.quick})
         for form, stream in zip(forms, rng.spawn(len(forms)), strict=True)
@@ -153,9 +153,10 @@ def _costs(comparison: Comparison, rng: np.random.Generator) -> dict[str, tuple[
 def headline_basis(comparison: Comparison) -> tuple[CollapseFit, ...]:
     """The fits behind the headline: transition forms with correction, else plain ones, else none.
 
-    Forms that carry no weight in the average are left out, so that nothing is said about their stability.
+    Forms that carry no weight in the average are left out, so that nothing is said about their stability; so are forms
+    of the user's own without a critical disorder W_c to average.
     """
-    transition = [fit for fit in comparison.fits if fit.ansatz.hypothesis == "transition"]
+    transition = [fit for fit in comparison.fits if fit.ansatz.hypothesis == "transition" and "W_c" in fit.names]
     candidates = [fit for fit in transition if fit.ansatz.corrected] or transition
     best = max((fit.log_evidence for fit in candidates), default=0.0)
     return tuple(fit for fit in candidates if fit.log_evidence > best + np.log(LEAST_WEIGHT))
@@ -166,7 +167,7 @@ def _stability(
 ) -> tuple[StabilityRow, ...]:
     pairs = [(fit, cut) for fit in basis for cut in cuts(curves, fit.parameters["W_c"].median, quick=settings.quick)]
     tasks = [
-        Task(f"stability of {fit.ansatz.name}", refit, (curves, fit.ansatz.name, cut, stream), {})
+        Task(f"stability of {fit.ansatz.name}", refit, (curves, fit.ansatz, cut, stream), {})
         for (fit, cut), stream in zip(pairs, rng.spawn(len(pairs)), strict=True)
     ]
     return tuple(run_tasks(tasks, settings.jobs, tell))

@@ -97,20 +97,23 @@ def inspect(path: Path) -> None:
 
 @driftline.command()
 @click.argument("path", type=click.Path(path_type=Path), required=False)
-def ansatze(path: Path | None) -> None:
+@click.option("--config", type=click.Path(path_type=Path), metavar="FILE", help="TOML file with forms of your own.")
+def ansatze(path: Path | None, config: Path | None) -> None:
     """List the scaling ansätze.
 
     With formula, parameters and priors; if PATH is given, the priors for the curves in it.
     """
     from driftline.report.listing import listing
+    from driftline.settings import Settings
 
+    settings = Settings.resolve(config)
     if path is None:
         curves = None
     else:
         from driftline.readers import read
 
-        curves = read(path)
-    click.echo(listing(curves), nl=False)
+        curves = settings.select(read(path, **settings.labels))
+    click.echo(listing(curves, settings.forms), nl=False)
 
 
 def _cores() -> int:

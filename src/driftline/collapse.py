@@ -8,7 +8,7 @@ full model with tau sampled; the physical parameters are inferred with tau held 
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass, replace
 from typing import Any
 
@@ -23,6 +23,7 @@ from driftline.inference.modes import find_modes
 from driftline.inference.sampling import WALKERS, run_chain
 from driftline.scaling.ansatz import Ansatz, parse_ansatz
 from driftline.scaling.defaults import DEFAULT_ANSATZE
+from driftline.scaling.forms import Form
 from driftline.scaling.likelihood import TAU_PRIOR, Posterior
 from driftline.sensitivity import PRIOR_SETS, PriorShift
 
@@ -205,6 +206,7 @@ def fit_collapse(
     seed: int | np.random.Generator | None = 0,
     quick: bool = False,
     extras: bool = True,
+    forms: Iterable[Form] = (),
     progress: Progress | None = None,
 ) -> CollapseFit:
     """Fit one ansatz: posterior of its parameters, evidence, quality.
@@ -221,13 +223,15 @@ def fit_collapse(
         Leave the chain out; evidence and posterior then come from adaptive importance sampling alone.
     extras : bool
         Also predict the largest size from the smaller ones and compare sets of priors.
+    forms : iterable of Form
+        Forms of your own (`ExpressionForm`) that the name may begin with.
     progress : callable, optional
         Called with (text, fraction done).
 
     Raises
     ------
     ConfigurationError
-        If the name of the ansatz is not understood.
+        If the name of the ansatz is not understood, or a form of your own is not defined on these curves.
 
     Examples
     --------
@@ -243,7 +247,7 @@ def fit_collapse(
     True
     """
     rng = np.random.default_rng(seed)
-    form = parse_ansatz(ansatz, curves) if isinstance(ansatz, str) else ansatz
+    form = parse_ansatz(ansatz, curves, forms) if isinstance(ansatz, str) else ansatz
     target = Posterior(curves, form)
     tell = progress or (lambda _text, _fraction: None)
     tell(f"{form.name}: searching", 0.0)
@@ -345,7 +349,7 @@ def _result(
     values = held.values(physical.places)
     parameters = {name: Interval.of_draws(values[:, i], physical.weights) for i, name in enumerate(names)}
     parameters["tau"] = Interval.of_draws(TAU_PRIOR.value(draws.places[:, -2]), draws.weights)
-    centre = np.array([Interval.of_draws(physical.places[:, i], physical.weights).median for i in range(len(names))])
+    centre = _centre(held, physical)
     points, function = _collapsed(held, centre)
     return CollapseFit(
         ansatz=form,
@@ -363,6 +367,16 @@ def _result(
         function_mean=function[1],
         function_sd=function[2],
     )
+
+
+def _centre(held: Posterior, physical: WeightedDraws) -> FloatArray:
+    """Coordinates of the posterior median, shape (dimension,)."""
+    columns = physical.places.T
+    median = np.array([Interval.of_draws(column, physical.weights).median for column in columns])
+    if np.isfinite(held(median[None])[0]):
+        return median
+    # a form of the user's own may be undefined between two parts of the posterior: then the likeliest draw
+    return np.asarray(physical.places[np.argmax(held(physical.places))])
 
 
 def _judged(health: SamplerHealth, draws: WeightedDraws, physical: WeightedDraws) -> SamplerHealth:
@@ -458,13 +472,14 @@ def compare_ansatze(
     *,
     seed: int | np.random.Generator | None = 0,
     quick: bool = False,
+    forms: Iterable[Form] = (),
     progress: Progress | None = None,
 ) -> Comparison:
     """Fit several ansätze and weigh them by their evidence.
 
     Parameters
     ----------
-    curves, seed, quick, progress
+    curves, seed, quick, forms, progress
         As for `fit_collapse`.
     ansatze : sequence of str, optional
         Names; the default set pairs a fixed with a linearly drifting critical disorder, each plain and corrected.
@@ -475,11 +490,12 @@ def compare_ansatze(
         If a name is not understood.
     """
     names = tuple(ansatze or DEFAULT_ANSATZE)
-    forms = [parse_ansatz(name, curves) for name in names]  # all names are checked before any work
-    streams = np.random.default_rng(seed).spawn(len(forms))  # one stream each: a fit does not depend on its neighbours
+    own = tuple(forms)
+    parsed = [parse_ansatz(name, curves, own) for name in names]  # all names are checked before any work
+    streams = np.random.default_rng(seed).spawn(len(parsed))  # one stream each: a fit does not depend on its neighbours
     fits = []
-    for i, (form, stream) in enumerate(zip(forms, streams, strict=True)):
-        step = None if progress is None else _part(progress, i, len(forms))
+    for i, (form, stream) in enumerate(zip(parsed, streams, strict=True)):
+        step = None if progress is None else _part(progress, i, len(parsed))
         fits.append(fit_collapse(curves, form, seed=stream, quick=quick, progress=step))
     return Comparison(tuple(fits), weigh(fits))
 

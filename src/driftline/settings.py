@@ -18,7 +18,9 @@ from driftline.scaling.defaults import DEFAULT_ANSATZE
 
 if TYPE_CHECKING:
     from driftline.curves import Curves
+    from driftline.scaling.expression import ExpressionForm
 
+FORMS_KEY = "ansatz"  # in a TOML file, where a form is a table [ansatz.NAME]
 MIN_DRAWS = 200  # the 95 % interval then still has five draws in each tail
 
 
@@ -45,6 +47,9 @@ class Settings:
         Fields of `driftline.Labels` that replace what the data file says.
     draws : int
         Joint posterior draws of the smoothed curves behind crossings and drift.
+    forms : tuple of ExpressionForm
+        Scaling forms of the user's own, which `ansatze` may name. A mapping of tables by name, as in a TOML file, is
+        understood as well.
 
     Raises
     ------
@@ -65,10 +70,12 @@ class Settings:
     jobs: int = 1
     labels: Mapping[str, Any] = field(default_factory=dict)
     draws: int = 2000
+    forms: tuple[ExpressionForm, ...] = ()
 
     def __post_init__(self) -> None:
         for name, check in _CHECKS.items():
             object.__setattr__(self, name, check(getattr(self, name), name))
+        _check_ansatz_names(self.ansatze, self.forms, "ansatze")
 
     @classmethod
     def resolve(
@@ -82,7 +89,8 @@ class Settings:
         Parameters
         ----------
         file : path, optional
-            TOML file with any of the fields of `Settings` as keys; the labels as a table ``[labels]``.
+            TOML file with any of the fields of `Settings` as keys; the labels as a table ``[labels]``, each form of the
+            user's own as a table ``[ansatz.NAME]``.
         options : mapping, optional
             Fields by name; those that are None count as not given.
         defaults : mapping, optional
@@ -96,9 +104,10 @@ class Settings:
         chosen = {**(defaults or {}), **({} if file is None else _read_toml(Path(file)))}
         for name, value in (options or {}).items():
             if value is not None:
-                chosen[name] = _CHECKS[name](
-                    value, f"option --{'ansatz' if name == 'ansatze' else name}".replace("_", "-")
-                )
+                where = f"option --{'ansatz' if name == 'ansatze' else name}".replace("_", "-")
+                chosen[name] = _CHECKS[name](value, where)
+                if name == "ansatze":
+                    _check_ansatz_names(chosen[name], chosen.get("forms", ()), where)
         return cls(**chosen)
 
     def select(self, curves: Curves) -> Curves:
@@ -147,16 +156,22 @@ def _read_toml(path: Path) -> dict[str, Any]:
         raise ConfigurationError(f"{path}: is not UTF-8 text at byte {reason.start + 1}; save it as UTF-8") from reason
     except tomllib.TOMLDecodeError as reason:
         raise ConfigurationError(f"{path}: is not valid TOML: {reason}") from reason
+    known = {FORMS_KEY if name == "forms" else name: name for name in _CHECKS}
     chosen = {}
-    for name, value in content.items():
-        if name not in _CHECKS:
-            raise ConfigurationError(f"{path}: unknown key {name!r}; {suggestion(name, _CHECKS)}")
-        chosen[name] = _CHECKS[name](value, f"{path}, {name}")
+    for key, value in content.items():
+        if key not in known:
+            raise ConfigurationError(f"{path}: unknown key {key!r}; {suggestion(key, known)}")
+        chosen[known[key]] = _CHECKS[known[key]](value, f"{path}, {key}")
+    _check_ansatz_names(chosen.get("ansatze", ()), chosen.get("forms", ()), f"{path}, ansatze")
     return chosen
 
 
 def _number(value: Any, where: str) -> float:
-    if isinstance(value, bool) or not isinstance(value, int | float) or not math.isfinite(value):
+    try:
+        finite = isinstance(value, int | float) and not isinstance(value, bool) and math.isfinite(value)
+    except OverflowError:  # TOML knows whole numbers of any length
+        finite = False
+    if not finite:
         raise ConfigurationError(f"{where}: must be a finite number, not {value!r}")
     return float(value)
 
@@ -170,7 +185,7 @@ def _whole(value: Any, where: str, *, least: int) -> int:
 
 
 def _ansatze(value: Any, where: str) -> tuple[str, ...]:
-    if isinstance(value, str) or not isinstance(value, Iterable):
+    if isinstance(value, str | Mapping) or not isinstance(value, Iterable):
         raise ConfigurationError(f"{where}: must be a list of names, not {value!r}")
     names = tuple(value)
     for name in names:
@@ -178,19 +193,27 @@ def _ansatze(value: Any, where: str) -> tuple[str, ...]:
             raise ConfigurationError(f"{where}: must be a list of names, but holds {name!r}")
         if names.count(name) > 1:
             raise ConfigurationError(f"{where}: {name!r} is given twice; give each ansatz once")
-        _check_ansatz_name(name, where)
     if not names:
         raise ConfigurationError(f"{where}: is empty; give at least one ansatz or leave the key out")
     return names
 
 
-def _check_ansatz_name(name: str, where: str) -> None:
+def _check_ansatz_names(names: Iterable[str], forms: tuple[ExpressionForm, ...], where: str) -> None:
     from driftline.scaling.ansatz import check_ansatz_name  # numpy comes with it, so only where it is needed
 
-    try:
-        check_ansatz_name(name)
-    except ConfigurationError as reason:
-        raise ConfigurationError(f"{where}: {reason}") from reason
+    for name in names:
+        try:
+            check_ansatz_name(name, forms)
+        except ConfigurationError as reason:
+            raise ConfigurationError(f"{where}: {reason}") from reason
+
+
+def _forms(value: Any, where: str) -> tuple[ExpressionForm, ...]:
+    if isinstance(value, Mapping | tuple | list) and not value:
+        return ()
+    from driftline.scaling.tables import read_forms  # numpy comes with it, so only where it is needed
+
+    return read_forms(value, where)
 
 
 def _window(value: Any, where: str) -> tuple[float, float] | None:
@@ -257,4 +280,5 @@ _CHECKS: dict[str, Callable[[Any, str], Any]] = {
     "jobs": lambda value, where: _whole(value, where, least=1),
     "labels": _labels,
     "draws": lambda value, where: _whole(value, where, least=MIN_DRAWS),
+    "forms": _forms,
 }

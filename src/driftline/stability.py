@@ -16,6 +16,7 @@ from driftline.collapse import CollapseFit, fit_collapse
 from driftline.curves import MIN_DISORDERS, Curves
 from driftline.errors import InputError
 from driftline.inference.intervals import Interval
+from driftline.scaling.ansatz import Ansatz
 
 #: Parts of the disorder range that the windows keep, around the crossover; the first is everything.
 WINDOWS = (1.0, 0.8, 0.6)
@@ -99,11 +100,11 @@ def _possible(curves: Curves, cut: Cut) -> bool:
     return all(curve.disorder.size > MIN_DISORDERS for curve in part.curves)
 
 
-def refit(curves: Curves, ansatz: str, cut: Cut, seed: int | np.random.Generator) -> StabilityRow:
+def refit(curves: Curves, ansatz: Ansatz, cut: Cut, seed: int | np.random.Generator) -> StabilityRow:
     """Fit `ansatz` to one part of the data, by importance sampling alone."""
     part = curves.select(smallest_size=cut.smallest_size, window=cut.window)
-    fit = fit_collapse(part, ansatz, seed=seed, quick=True, extras=False)
-    return StabilityRow(ansatz, cut.smallest_size, cut.window, fit.parameters["W_c"], fit.quality.p_value)
+    fit = fit_collapse(part, ansatz.on(part), seed=seed, quick=True, extras=False)
+    return StabilityRow(ansatz.name, cut.smallest_size, cut.window, fit.parameters["W_c"], fit.quality.p_value)
 
 
 def systematic(full: CollapseFit, rows: Sequence[StabilityRow]) -> float | None:

@@ -7,10 +7,12 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from driftline.report.base import Writer
+from driftline.scaling.tables import form_table
 from driftline.settings import Settings
 
 if TYPE_CHECKING:
     from driftline.analysis import Analysis
+    from driftline.scaling.expression import ExpressionForm
 
 
 def to_toml(settings: Settings) -> str:
@@ -26,7 +28,20 @@ def to_toml(settings: Settings) -> str:
     ]
     if settings.labels:
         lines += ["", "[labels]", *(f"{name} = {_value(value)}" for name, value in settings.labels.items())]
+    for form in settings.forms:
+        lines += ["", *_form(form)]
     return "\n".join(lines) + "\n"
+
+
+def _form(form: ExpressionForm) -> list[str]:
+    """A form of the user's own as a table; its names are bare keys of TOML."""
+    table = form_table(form)
+    lines = [f"[ansatz.{form.name}]", *(f"{key} = {_text(table[key])}" for key in ("x", "hypothesis"))]
+    if table["parameters"]:
+        lines += [f"[ansatz.{form.name}.parameters]"]
+    for name, prior in table["parameters"].items():
+        lines.append(f"{name} = {{ {', '.join(f'{key} = {_value(value)}' for key, value in prior.items())} }}")
+    return lines
 
 
 class ConfigurationFile(Writer):

@@ -3,34 +3,48 @@
 from __future__ import annotations
 
 import textwrap
+from collections.abc import Sequence
 
 import numpy as np
 
 from driftline.curves import Curve, Curves
+from driftline.errors import ConfigurationError
 from driftline.report.summary import WIDTH
-from driftline.scaling.ansatz import available, parse_ansatz
+from driftline.scaling.ansatz import available, compose, parse_ansatz
+from driftline.scaling.forms import Form
 
 EXAMPLE = "Priors that depend on the data are shown for sizes 8 to 16 and disorders from 1 to 11; give PATH for yours."
 
 
-def listing(curves: Curves | None = None) -> str:
+def listing(curves: Curves | None = None, forms: Sequence[Form] = ()) -> str:
     """Every ansatz with formula, parameters and priors, as text.
 
     Parameters
     ----------
     curves : Curves, optional
         Data that the priors refer to; without them a made-up grid is used, and said so.
+    forms : sequence of Form
+        Forms of the user's own, listed last.
     """
     lines = [] if curves is not None else [*textwrap.wrap(EXAMPLE, WIDTH), ""]
-    for name in available():
-        ansatz = parse_ansatz(name, curves or _example())
-        lines.append(f"{name}  ({ansatz.hypothesis})")
-        lines += textwrap.wrap(ansatz.formula, WIDTH, initial_indent="  ", subsequent_indent="    ")
-        for each in ansatz.parameters:
-            text = f"{each.name:6} {each.prior.describe()} ({each.meaning})"
-            lines += textwrap.wrap(text, WIDTH, initial_indent="  ", subsequent_indent=" " * 9, break_on_hyphens=False)
-        lines.append("")
+    for name in available(forms):
+        lines += [*_entry(name, curves, forms), ""]
     return "\n".join(lines)
+
+
+def _entry(name: str, curves: Curves | None, forms: Sequence[Form]) -> list[str]:
+    try:
+        # a form of the user's own need not be defined on a made-up grid, so only on real data it is tried
+        ansatz = compose(name, _example(), forms) if curves is None else parse_ansatz(name, curves, forms)
+    except ConfigurationError as reason:
+        text = f"not for these data: {reason}"
+        return [name, *textwrap.wrap(text, WIDTH, initial_indent="  ", subsequent_indent="    ")]
+    lines = [f"{name}  ({ansatz.hypothesis})"]
+    lines += textwrap.wrap(ansatz.formula, WIDTH, initial_indent="  ", subsequent_indent="    ")
+    for each in ansatz.parameters:
+        text = f"{each.name:6} {each.prior.describe()} ({each.meaning})"
+        lines += textwrap.wrap(text, WIDTH, initial_indent="  ", subsequent_indent=" " * 9, break_on_hyphens=False)
+    return lines
 
 
 def _example() -> Curves:

@@ -19,6 +19,7 @@ import numpy as np
 
 from driftline.inference.intervals import Interval
 from driftline.report.base import Writer
+from driftline.scaling.tables import form_table
 
 if TYPE_CHECKING:
     from driftline.analysis import Analysis, Crossover
@@ -149,8 +150,9 @@ def _input(curves: Curves) -> dict[str, Any]:
 
 def _config(settings: Settings) -> dict[str, Any]:
     """The settings that can change a number; the seed stands beside them, and the number of workers changes none."""
-    names = (part.name for part in fields(settings) if part.name not in ("seed", "jobs"))
-    return {name: _plain(getattr(settings, name)) for name in names}
+    names = (part.name for part in fields(settings) if part.name not in ("seed", "jobs", "forms"))
+    config = {name: _plain(getattr(settings, name)) for name in names}
+    return {**config, "forms": {form.name: form_table(form) for form in settings.forms}}
 
 
 def _collapse(fit: CollapseFit, probability: float, costs: Sequence[Cost]) -> dict[str, Any]:

@@ -214,10 +214,11 @@ def _suggestion(word: str, choices: list[str]) -> str:
     return f"; did you mean {close[0]!r}?" if close else ""
 
 
-def available() -> tuple[str, ...]:
+def available(forms: Iterable[Form] = ()) -> tuple[str, ...]:
     """Every combination of scaled variable and correction on offer, simplest first; any takes `amplitude` as well."""
     drifts = ["", *(f":{name}" for name in TRAJECTORIES if name != FIXED)]
-    variables = [f"{length}{drift}" for length in LENGTHS for drift in drifts] + list(FORMS)
+    variables = [f"{length}{drift}" for length in LENGTHS for drift in drifts]
+    variables += [*FORMS, *(form.name for form in forms)]
     return tuple(f"{variable}{tail}" for variable in variables for tail in ("", f":{CORRECTED}"))
 
 

@@ -60,8 +60,9 @@ class Kind:
 
     def numbers(self, prior: Prior) -> dict[str, float]:
         """The user's numbers of a prior, by key."""
-        parts = zip(self.keys, self.fields, self.logged, strict=True)
-        return {key: _unlogged(getattr(prior, f)) if logged else getattr(prior, f) for key, f, logged in parts}
+        kept = [float(getattr(prior, field)) for field in self.fields]
+        parts = zip(self.keys, kept, self.logged, strict=True)
+        return {key: _unlogged(number) if logged else number for key, number, logged in parts}
 
 
 KINDS: dict[str, Kind] = {
