@@ -1,0 +1,142 @@
+"""The verdict that a raw row would get under other thresholds, and the false alarms and power that follow.
+
+The rules are those of `driftline.verdict` and `driftline.cautions`, read off the numbers of a row; a test compares the
+two at the thresholds in use.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, replace
+
+from families import FAMILIES
+from scipy.special import ndtri
+
+from driftline.cautions import ESTABLISHED, POOR_P, UNSTABLE_P
+from driftline.separation import THRESHOLD
+from driftline.verdict import CONTRADICTED
+
+#: Warnings that stand in the way of `transition-supported` and depend on no threshold varied here.
+ALWAYS_BLOCKING = ("OUTSIDE_RANGE", "PRIOR_LIMITED", "SAMPLER_NOT_CONVERGED")
+Row = Mapping[str, str]
+
+
+@dataclass(frozen=True)
+class Thresholds:
+    """What the verdict asks for.
+
+    Parameters
+    ----------
+    transition, drift, none : float
+        Posterior probability from which each family counts as established.
+    unbounded : float
+        Probability of the unbounded laws of the crossings from which they forbid a transition.
+    contradicted : float
+        Probability of the bounded laws from which they contradict a drift.
+    resolved : float
+        Standard deviations of size dependence on either side.
+    """
+
+    transition: float = ESTABLISHED
+    drift: float = ESTABLISHED
+    none: float = ESTABLISHED
+    unbounded: float = ESTABLISHED
+    contradicted: float = CONTRADICTED
+    resolved: float = THRESHOLD
+
+
+IN_USE = Thresholds()
+
+
+def number(row: Row, name: str) -> float | None:
+    """A column as a number; None where it is empty."""
+    return float(row[name]) if row[name] else None
+
+
+def rejudge(row: Row, thresholds: Thresholds = IN_USE) -> str:
+    """Code of the verdict."""
+    transition, drift, without = probabilities(row)
+    if transition >= thresholds.transition and not _obstacles(row, thresholds):
+        return "transition-supported"
+    if without >= thresholds.none:
+        return "size-independent"
+    bounded = number(row, "p_bounded")
+    if drift >= thresholds.drift and (bounded or 0.0) < thresholds.contradicted:
+        return "drifting"
+    return "undecided"
+
+
+def probabilities(row: Row) -> tuple[float, float, float]:
+    """Transition, drift (no critical disorder at any finite value) and size independence."""
+    transition, without = float(row["p_transition"]), size_independent(row)
+    return transition, max(0.0, 1 - transition - without), without
+
+
+def size_independent(row: Row) -> float:
+    """Probability of the form in which size does nothing: its share of the hypothesis without critical disorder."""
+    own, other = float(row["lz_size-independent"]), number(row, "lz_finite-length")
+    share = 1.0 if other is None else 1 / (1 + 2.718281828459045 ** min(other - own, 700.0))
+    return float(row["p_none"]) * share
+
+
+def _obstacles(row: Row, thresholds: Thresholds) -> list[str]:
+    """What forbids a transition, whatever its probability."""
+    z = float(row["z_below"]), float(row["z_above"])
+    p_value, bounded = number(row, "p_value"), number(row, "p_bounded")
+    found = [code for code in ALWAYS_BLOCKING if code in row["warnings"].split()]
+    if z[0] * z[1] >= 0 or min(abs(z[0]), abs(z[1])) < thresholds.resolved:
+        found.append("ONE_SIDED")
+    if row["crossing"] != row["pairs"]:
+        found.append("NO_CROSSING")
+    if bounded is not None and bounded <= 1 - thresholds.unbounded:
+        found.append("DRIFT_UNBOUNDED")
+    if p_value is None or p_value < POOR_P:
+        found.append("POOR_FIT")
+    if _size_unstable(row):
+        found.append("SIZE_UNSTABLE")
+    return found
+
+
+def _size_unstable(row: Row) -> bool:
+    """Whether W_c moves without the smallest size, or could not be seen not to."""
+    worst, refits = number(row, "size_z"), len(row["basis"].split())  # one refit without the smallest size for each
+    return worst is None or abs(worst) > float(ndtri(1 - UNSTABLE_P / (2 * refits)))
+
+
+LADDER = (0.5, 0.6, 0.7, 0.8, 0.9, 0.95, 0.98, 0.99)
+
+
+@dataclass(frozen=True)
+class Rates:
+    """Counts of one threshold: (how many, of how many)."""
+
+    threshold: float
+    false_transition: tuple[int, int]
+    false_drift: tuple[int, int]
+    power_transition: tuple[int, int]
+    power_drift: tuple[int, int]
+
+
+def rates(rows: Iterable[Row], thresholds: Thresholds, threshold: float = float("nan")) -> Rates:
+    """False alarms and power of all rows together."""
+    kinds = {"transition": [], "drift": [], "finite": [], "none": []}
+    for row in rows:
+        kinds[FAMILIES[row["family"]].kind].append(rejudge(row, thresholds))
+    no_transition = kinds["drift"] + kinds["finite"] + kinds["none"]
+    real = kinds["transition"]
+    return Rates(
+        threshold,
+        (no_transition.count("transition-supported"), len(no_transition)),
+        (real.count("drifting"), len(real)),
+        (real.count("transition-supported"), len(real)),
+        (kinds["drift"].count("drifting"), len(kinds["drift"])),
+    )  # fmt: skip
+
+
+def ladder(rows: list[Row], thresholds: Thresholds = IN_USE, **which: bool) -> list[Rates]:
+    """Rates as the probability asked for climbs from one half to 0.99.
+
+    `which` names the fields of `Thresholds` that climb; by default the probability of every family.
+    """
+    climbing = which or dict.fromkeys(("transition", "drift", "none", "unbounded"), True)
+    return [rates(rows, replace(thresholds, **dict.fromkeys(climbing, step)), step) for step in LADDER]
