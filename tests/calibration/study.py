@@ -43,8 +43,8 @@ SETTINGS = Settings(quick=True)
 MIDDLE_CELLS = [(MIDDLE_NOISE, LARGE_GRID), *((MIDDLE_NOISE, grid) for grid in GRIDS if grid != LARGE_GRID)]
 OTHER_CELLS = [(noise, grid) for grid in GRIDS for noise in NOISES if noise != MIDDLE_NOISE]
 STAGES = [
-    (20, MIDDLE_CELLS[:1]), (20, MIDDLE_CELLS[1:]), (10, OTHER_CELLS), (50, MIDDLE_CELLS), (100, MIDDLE_CELLS),
-    (40, OTHER_CELLS),
+    (8, MIDDLE_CELLS[:1]), (4, MIDDLE_CELLS[1:]), (3, OTHER_CELLS), (20, MIDDLE_CELLS), (10, OTHER_CELLS),
+    (50, MIDDLE_CELLS), (20, OTHER_CELLS), (100, MIDDLE_CELLS), (40, OTHER_CELLS),
 ]  # fmt: skip
 HYPOTHESES = ("transition", "drift", "none")
 ENDS = ("median", "low68", "high68", "low95", "high95")
