@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 
-from driftline.analysis import Analysis, Crossover
-from driftline.cautions import Caution
+from driftline.analysis import Analysis, Crossover, headline_basis
+from driftline.cautions import Case, Caution
 from driftline.collapse import CollapsedPoints, CollapseFit, Comparison, FitQuality, SamplerHealth, weigh
 from driftline.costs import COST_FUNCTIONS, Cost
 from driftline.crossings import Crossing, Crossings
@@ -13,6 +15,7 @@ from driftline.curves import Curve, Curves, Labels
 from driftline.drift import LAWS, Drift, LawFit
 from driftline.inference.intervals import Interval
 from driftline.scaling.ansatz import parse_ansatz
+from driftline.separation import Separation
 from driftline.settings import Settings
 from driftline.smoothing import SmoothCurve
 from driftline.stability import StabilityRow
@@ -27,6 +30,8 @@ LABELS = Labels(
     localised_value=0.3863,
     dimension=3.0,
 )
+#: Without reference values nothing can be said about a plateau
+UNREFERENCED = replace(LABELS, ergodic_value=None, localised_value=None)
 OPENING = "Warning: no evidence of a transition in these data."
 
 
@@ -178,3 +183,42 @@ def made_analysis(
         timing={"crossings": 0.5, "collapse": 4.0},
         costs=dict.fromkeys(names, COSTS),
     )
+
+
+def separation(below=5.0, above=-6.0, *, flat=None, at_reference=False):
+    """Outcome of the separation test with these significances around 16.5."""
+    resolved = flat is None
+    return Separation(below, above, 15.0, 18.0, 16.5, below * above < 0, resolved, flat, at_reference)
+
+
+def collapse(name="power-law:corrected", log_evidence=250.0, *, curves=None):
+    """`made_fit` with the noise scale 1.00(8) among its intervals."""
+    fit = made_fit(made_curves() if curves is None else curves, name, log_evidence=log_evidence)
+    return replace(fit, parameters={**fit.parameters, "s": Interval.of_normal(1.0, 0.08)})
+
+
+def moved(shift, error, *, ansatz="power-law:corrected", smallest=8.0, window=(13.0, 20.0)):
+    """A refit whose W_c differs by `shift` from that of `made_fit`."""
+    return StabilityRow(ansatz, smallest, window, Interval.of_normal(16.53 + shift, error), 0.3)
+
+
+def case(*, sizes=(6, 8, 10, 12, 14), labels=UNREFERENCED, curves=None, fits=None, probability_bounded=0.97, **given):
+    """What the verdict is made from: a transition at 16.53(12) without a flaw, but for the changes asked for.
+
+    `probability_bounded`, `rate_per_site` and `deciding_size` change the drift; all else are fields of `Case`.
+    """
+    curves = made_curves(sizes, labels=labels) if curves is None else curves
+    crossings = given.pop("crossings", None) or made_crossings(curves)
+    drift = replace(
+        made_drift(crossings, note="" if len(crossings.adjacent) > 1 else "a single crossing"),
+        probability_bounded=probability_bounded,
+        **{name: given.pop(name) for name in ("rate_per_site", "deciding_size") if name in given},
+    )
+    if fits is None:
+        names = {"power-law:corrected": 250.0, "power-law:linear-drift:corrected": 240.0, "size-independent": 200.0}
+        fits = tuple(collapse(name, value, curves=curves) for name, value in names.items())
+    comparison = Comparison(fits, weigh(fits))
+    basis = headline_basis(comparison)
+    stability = tuple(moved(-0.03, 0.2, ansatz=fit.ansatz.name) for fit in basis)
+    usual = {"separation": separation(), "basis": basis, "stability": stability}
+    return Case(curves=curves, crossings=crossings, drift=drift, comparison=comparison, **{**usual, **given})

@@ -275,8 +275,9 @@ def prior_limited(case: Case) -> Caution | None:
         return None
     return Caution(
         "PRIOR_LIMITED",
-        f"{' and '.join(named)} of {fit.ansatz.name} is known hardly better than before the data",
-        "do not quote it; more sizes or smaller errors are needed",
+        f"{' and '.join(named)} of {fit.ansatz.name} {'are' if len(named) > 1 else 'is'} known hardly better than "
+        "before the data",
+        "do not quote a value; more sizes or smaller errors are needed",
         {name: fit.parameters[name].sd for name in named},
     )
 
