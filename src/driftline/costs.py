@@ -250,6 +250,10 @@ def collapse_costs(
     again, so a floor lies higher than that of refitted sets by about the part of the degrees of freedom that the
     parameters take up, a few in a hundred.
 
+    A floor also holds what lines between neighbours miss of the bend of the curve, so that of a chi-squared-like cost
+    exceeds 1 on a coarse grid. A ratio near 1 says that the points scatter about their own curve as noise does; where
+    the sizes hardly overlap in x, a wrong form can do that as well. This is why no verdict rests on it.
+
     Examples
     --------
     >>> from driftline.collapse import fit_collapse
