@@ -12,6 +12,9 @@ from typing import Any
 
 Progress = Callable[[str, float], None]
 
+#: Seconds to wait for a process that was told to end; usually it takes milliseconds.
+PATIENCE = 5.0
+
 
 @dataclass(frozen=True, eq=False)
 class Task:
@@ -65,6 +68,8 @@ def _leave_interrupts_to_parent() -> None:
 def _end_workers(pool: ProcessPoolExecutor, others: frozenset[BaseProcess]) -> None:
     """End the processes of the pool, but not `others`, which a program that uses this package may have started."""
     pool.shutdown(wait=False, cancel_futures=True)
-    for child in multiprocessing.active_children():
-        if child not in others:
-            child.terminate()
+    workers = [child for child in multiprocessing.active_children() if child not in others]
+    for worker in workers:
+        worker.terminate()
+    for worker in workers:
+        worker.join(PATIENCE)
