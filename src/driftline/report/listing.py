@@ -44,7 +44,8 @@ def _entry(name: str, curves: Curves | None, forms: Sequence[Form]) -> list[str]
     for each in ansatz.parameters:
         text = f"{each.name:6} {each.prior.describe()} ({each.meaning})"
         lines += textwrap.wrap(text, WIDTH, initial_indent="  ", subsequent_indent=" " * 9, break_on_hyphens=False)
-    return lines
+    source = f"source: {ansatz.form.source}"
+    return lines + textwrap.wrap(source, WIDTH, initial_indent="  ", subsequent_indent="    ")
 
 
 def _example() -> Curves:

@@ -213,5 +213,5 @@ def _check_prior(form: str, name: str, prior: Prior) -> None:
         ends = prior.value(prior.quantile(np.array([0.001, 0.999])))
     if not (np.isfinite(ends).all() and ends[0] < ends[1]):
         raise ConfigurationError(
-            f"form {form!r}: parameter {name!r}: the prior ({prior.describe()}) is not a distribution of some width"
+            f"form {form!r}: parameter {name!r}: the prior ({prior.describe()}) has no width, or no finite ends"
         )
