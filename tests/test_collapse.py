@@ -14,7 +14,7 @@ from driftline.errors import ConfigurationError
 from driftline.scaling.ansatz import applicable, available, parse_ansatz
 from driftline.scaling.defaults import DEFAULT_ANSATZE
 from driftline.scaling.function import SplineFunction
-from driftline.simulate import Gompertz, LinearDriftTruth, PowerLawTruth, simulate
+from driftline.simulate import Gompertz, InverseDriftTruth, LinearDriftTruth, PowerLawTruth, simulate
 
 SIZES, GRID, ERROR = (8, 10, 12, 14, 16, 18), np.linspace(2.0, 8.0, 21), 0.003
 PLAIN = PowerLawTruth(W_c=5.0, nu=1.0, scaling=Gompertz(scale=8.0))
@@ -243,3 +243,19 @@ def test_length_forms_need_positive_disorder() -> None:
             parse_ansatz(name, shifted)
     assert "size-ratio" not in applicable(DEFAULT_ANSATZE, shifted)
     assert "power-law" in applicable(DEFAULT_ANSATZE, shifted)
+
+
+def test_limit_of_a_converging_trajectory() -> None:
+    """With W_c(L) = a + b/L the reported critical disorder is the limit a, not the value at the middle size."""
+    truth = InverseDriftTruth(W_c=5.0, nu=1.0, scaling=Gompertz(scale=8.0), shift=-8.0)
+    data = [simulate(SIZES, GRID, truth, ERROR, 300 + seed) for seed in range(10)]
+    fits = [fit_collapse(curves, "power-law:inverse-drift", quick=True, extras=False) for curves in data]
+    z = np.array([(fit.parameters["W_c"].median - 5.0) / fit.parameters["W_c"].sd for fit in fits])
+    middle = np.array([fit.parameters["W_mid"].median for fit in fits])
+    assert abs(z.mean()) < 3.3 / np.sqrt(10)  # mean of 10 standard normals: 1e-3 false alarm
+    assert np.all(middle < 4.8)  # at L = 13 the trajectory stands at 5 - 8/13 = 4.38
+    # by hand: W_c = W_mid + D (0 - 1/13) / (1/18 - 1/8)
+    fit = fits[0]
+    np.testing.assert_allclose(
+        fit.draws("W_c"), fit.draws("W_mid") + fit.draws("D") * (-1 / 13) / (1 / 18 - 1 / 8), rtol=1e-12
+    )

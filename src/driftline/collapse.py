@@ -344,9 +344,8 @@ def _result(
     held: Posterior, draws: WeightedDraws, physical: WeightedDraws, health: SamplerHealth, rng: np.random.Generator
 ) -> CollapseFit:
     form = held.ansatz
-    samples = held.values(physical.resample(POSTERIOR_DRAWS, rng))
-    names = tuple(p.name for p in held.parameters)
-    values = held.values(physical.places)
+    names, samples = _reported(held, physical.resample(POSTERIOR_DRAWS, rng))
+    _, values = _reported(held, physical.places)
     parameters = {name: Interval.of_draws(values[:, i], physical.weights) for i, name in enumerate(names)}
     parameters["tau"] = Interval.of_draws(TAU_PRIOR.value(draws.places[:, -2]), draws.weights)
     centre = _centre(held, physical)
@@ -377,6 +376,13 @@ def _centre(held: Posterior, physical: WeightedDraws) -> FloatArray:
         return median
     # a form of the user's own may be undefined between two parts of the posterior: then the likeliest draw
     return np.asarray(physical.places[np.argmax(held(physical.places))])
+
+
+def _reported(held: Posterior, z: FloatArray) -> tuple[tuple[str, ...], FloatArray]:
+    """Names and values, shape (n, names), of the sampled parameters and of what the form derives from them."""
+    derived = held.ansatz.form.derived(held.curves.sizes, held.ansatz.values(z))
+    names = (*(p.name for p in held.parameters), *derived)
+    return names, np.column_stack([held.values(z), *derived.values()])
 
 
 def _judged(health: SamplerHealth, draws: WeightedDraws, physical: WeightedDraws) -> SamplerHealth:

@@ -58,6 +58,10 @@ class Form(ABC):
             Parameter values by name.
         """
 
+    def derived(self, sizes: FloatArray, values: Mapping[str, FloatArray]) -> dict[str, FloatArray]:
+        """Quantities to report that follow from the parameters, each of shape (batch, 1)."""
+        return {}
+
     def unit(self, sizes: FloatArray, values: Mapping[str, float]) -> float:
         """Factor from x to the x of the label, for axes that people read."""
         return 1.0
@@ -108,6 +112,10 @@ class Critical(Form):
     ) -> FloatArray:
         delta = disorder - self.trajectory.critical(size, sizes, values)
         return self.length.scaled(delta, size / typical_size(sizes), values)
+
+    def derived(self, sizes: FloatArray, values: Mapping[str, FloatArray]) -> dict[str, FloatArray]:
+        limit = self.trajectory.limit(sizes, values)
+        return {} if limit is None else {"W_c": limit}
 
     def unit(self, sizes: FloatArray, values: Mapping[str, float]) -> float:
         return self.length.unit(typical_size(sizes), values)

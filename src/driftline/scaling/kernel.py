@@ -14,6 +14,9 @@ of the block -I turns A into A + U U^T (matrix-determinant lemma).  Several time
 
 from __future__ import annotations
 
+from collections.abc import Callable
+from typing import Any
+
 import numpy as np
 from numba import njit
 
@@ -22,6 +25,14 @@ from driftline.curves import FloatArray
 BAND = 4  # cubic B-splines: four overlap
 RANK = 2  # constant and linear part
 TERMS = 2  # constant and linear part of the correction
+
+
+def _compiled(function: Callable[..., Any]) -> Callable[..., Any]:
+    """Machine code of `function`, kept on disk for the next run where there is a place to keep it."""
+    try:
+        return njit(cache=True, nogil=True, error_model="numpy")(function)
+    except RuntimeError:  # neither the package nor the home directory can be written: compile anew each time
+        return njit(nogil=True, error_model="numpy")(function)
 
 
 def solve_batch(
@@ -56,7 +67,7 @@ def solve_batch(
     )  # fmt: skip
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@_compiled
 def _solve_batch(u, correction, amplitude, y, root, log_tau, log_s, roughness, line, correction_sd):  # type: ignore[no-untyped-def]
     batch, points = u.shape
     count = line.shape[0]

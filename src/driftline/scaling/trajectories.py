@@ -1,6 +1,6 @@
 """How the critical disorder moves with size: W_c(L).
 
-Every moving trajectory is W_c(L) = W_c + D g(L), where W_c is the value at the middle size, D is the total shift
+Every moving trajectory is W_c(L) = W_mid + D g(L), where W_mid is the value at the middle size, D is the total shift
 from the smallest to the largest measured size, and g rises by one between them.  All share one prior for D, so that
 their evidences compare fairly.  Adding a trajectory is one entry in `TRAJECTORIES`.
 """
@@ -45,12 +45,16 @@ class Trajectory(ABC):
         increasing order, which define the middle and the total shift.
         """
 
+    def limit(self, sizes: FloatArray, values: Mapping[str, FloatArray]) -> FloatArray | None:
+        """W_c of the infinite system, shape (batch, 1), where it is finite and no parameter itself; else None."""
+        return None
 
-def critical_disorder(curves: Curves) -> Parameter:
-    """The parameter W_c: uniform over the measured range widened by a quarter on each side."""
+
+def _location(curves: Curves) -> Uniform:
+    """Prior of a disorder: uniform over the measured range widened by a quarter on each side."""
     low, high = curves.disorder_range
     margin = MARGIN * (high - low)
-    return Parameter("W_c", "W_c", Uniform(low - margin, high + margin), "critical disorder")
+    return Uniform(low - margin, high + margin)
 
 
 @dataclass(frozen=True)
@@ -62,7 +66,7 @@ class Fixed(Trajectory):
     hypothesis = "transition"
 
     def parameters(self, curves: Curves) -> tuple[Parameter, ...]:
-        return (critical_disorder(curves),)
+        return (Parameter("W_c", "W_c", _location(curves), "critical disorder"),)
 
     def critical(self, size: FloatArray, sizes: FloatArray, values: Mapping[str, FloatArray]) -> FloatArray:
         return values["W_c"]
@@ -70,22 +74,32 @@ class Fixed(Trajectory):
 
 @dataclass(frozen=True)
 class Drifting(Trajectory):
-    """W_c(L) = W_c + D [h(L) - h(L_mid)] / [h(L_max) - h(L_min)], with L_mid the middle of the measured sizes."""
+    """W_c(L) = W_mid + D [h(L) - h(L_mid)] / [h(L_max) - h(L_min)], with L_mid the middle of the measured sizes."""
 
     name: str
     formula: str
     hypothesis: Hypothesis
     shape: Callable[[FloatArray], FloatArray]
+    shape_at_infinity: float | None = None
 
     def parameters(self, curves: Curves) -> tuple[Parameter, ...]:
         low, high = curves.disorder_range
         shift = Parameter("D", "D", Normal(0.0, SHIFT_SD * (high - low)), "shift of W_c from smallest to largest size")
-        return (critical_disorder(curves), shift)
+        middle = Parameter("W_mid", r"W_\mathrm{mid}", _location(curves), "critical disorder of the middle size")
+        return (middle, shift)
 
     def critical(self, size: FloatArray, sizes: FloatArray, values: Mapping[str, FloatArray]) -> FloatArray:
+        return self._at(self.shape(size), sizes, values)
+
+    def limit(self, sizes: FloatArray, values: Mapping[str, FloatArray]) -> FloatArray | None:
+        if self.shape_at_infinity is None:
+            return None
+        return self._at(np.array([self.shape_at_infinity]), sizes, values)
+
+    def _at(self, shape: FloatArray, sizes: FloatArray, values: Mapping[str, FloatArray]) -> FloatArray:
         first, last = self.shape(sizes[[0, -1]])
         middle = self.shape(np.array([(sizes[0] + sizes[-1]) / 2]))[0]
-        return np.asarray(values["W_c"] + values["D"] * (self.shape(size) - middle) / (last - first))
+        return np.asarray(values["W_mid"] + values["D"] * (shape - middle) / (last - first))
 
 
 def _identity(size: FloatArray) -> FloatArray:
@@ -96,7 +110,7 @@ TRAJECTORIES: dict[str, Trajectory] = {
     trajectory.name: trajectory
     for trajectory in (
         Fixed(),
-        Drifting("inverse-drift", "W_c(L) = a + b/L", "transition", np.reciprocal),
+        Drifting("inverse-drift", "W_c(L) = a + b/L", "transition", np.reciprocal, 0.0),
         Drifting("log-drift", "W_c(L) = a + b ln L", "drift", np.log),
         Drifting("linear-drift", "W_c(L) = a + b L", "drift", _identity),
     )
