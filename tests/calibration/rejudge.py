@@ -6,7 +6,7 @@ two at the thresholds in use.
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, replace
 
 from families import FAMILIES
@@ -103,40 +103,34 @@ def _size_unstable(row: Row) -> bool:
     return worst is None or abs(worst) > float(ndtri(1 - UNSTABLE_P / (2 * refits)))
 
 
-LADDER = (0.5, 0.6, 0.7, 0.8, 0.9, 0.95, 0.98, 0.99)
+LADDER = (0.05, 0.1, 0.2, 0.3, 0.4, 0.5, 0.6, 0.7, 0.8, 0.9, 0.95, 0.98, 0.99)
 
 
 @dataclass(frozen=True)
 class Rates:
-    """Counts of one threshold: (how many, of how many)."""
+    """Counts at one setting of the thresholds: (how many, of how many)."""
 
-    threshold: float
     false_transition: tuple[int, int]
     false_drift: tuple[int, int]
     power_transition: tuple[int, int]
     power_drift: tuple[int, int]
 
 
-def rates(rows: Iterable[Row], thresholds: Thresholds, threshold: float = float("nan")) -> Rates:
+def rates(rows: Iterable[Row], thresholds: Thresholds) -> Rates:
     """False alarms and power of all rows together."""
-    kinds = {"transition": [], "drift": [], "finite": [], "none": []}
+    kinds: dict[str, list[str]] = {"transition": [], "drift": [], "finite": [], "none": []}
     for row in rows:
         kinds[FAMILIES[row["family"]].kind].append(rejudge(row, thresholds))
     no_transition = kinds["drift"] + kinds["finite"] + kinds["none"]
-    real = kinds["transition"]
+    real, drifts = kinds["transition"], kinds["drift"]
     return Rates(
-        threshold,
         (no_transition.count("transition-supported"), len(no_transition)),
         (real.count("drifting"), len(real)),
         (real.count("transition-supported"), len(real)),
-        (kinds["drift"].count("drifting"), len(kinds["drift"])),
-    )  # fmt: skip
+        (drifts.count("drifting"), len(drifts)),
+    )
 
 
-def ladder(rows: list[Row], thresholds: Thresholds = IN_USE, **which: bool) -> list[Rates]:
-    """Rates as the probability asked for climbs from one half to 0.99.
-
-    `which` names the fields of `Thresholds` that climb; by default the probability of every family.
-    """
-    climbing = which or dict.fromkeys(("transition", "drift", "none", "unbounded"), True)
-    return [rates(rows, replace(thresholds, **dict.fromkeys(climbing, step)), step) for step in LADDER]
+def ladder(rows: Sequence[Row], *names: str, base: Thresholds = IN_USE) -> dict[float, Rates]:
+    """Rates as the thresholds called `names` climb together, all others being those of `base`."""
+    return {step: rates(rows, replace(base, **dict.fromkeys(names, step))) for step in LADDER}

@@ -8,12 +8,13 @@ from __future__ import annotations
 import csv
 from collections import Counter
 from collections.abc import Callable, Iterable, Sequence
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
 import study
 from families import FAMILIES, GRIDS, MIDDLE_NOISE, NOISES, Cell
-from rejudge import IN_USE, Row, ladder, number, rejudge
+from rejudge import IN_USE, LADDER, Row, ladder, number, rejudge
 
 FOLDER = Path(__file__).parent
 VERDICTS = ("transition-supported", "drifting", "undecided", "size-independent", "insufficient-data")
@@ -133,31 +134,43 @@ def confusion_table(found: dict[Cell, list[Row]]) -> str:
     return table(head, lines)
 
 
-def threshold_table(rows: list[Row]) -> str:
-    """False alarms and power as all probabilities asked for climb together."""
-    head = ["probability asked for", "false `transition-supported`", "false `drifting`",
-            "power for transitions", "power for drifts"]  # fmt: skip
+#: A contradiction of a drift by the crossings that is asked to be as well established as everything else.
+SOUND = replace(IN_USE, contradicted=0.95)
+
+
+def threshold_table(rows: Sequence[Row]) -> str:
+    """False alarms and power as one probability asked for climbs, the others held."""
+    head = ["probability asked for", "false `transition-supported`", "its power", "false `drifting`", "its power",
+            "the same if contradicted from 0.95: false `drifting`", "power"]  # fmt: skip
+    transition, drift = ladder(rows, "transition"), ladder(rows, "drift")
+    sound = ladder(rows, "drift", base=SOUND)
     lines = [
-        [f"{r.threshold:g}", *(f"{rate_text(c)} of {c[1]}" for c in
-         (r.false_transition, r.false_drift, r.power_transition, r.power_drift))]
-        for r in ladder(rows)
+        [f"{step:g}", *(rate_text(count) for count in (
+            transition[step].false_transition, transition[step].power_transition, drift[step].false_drift,
+            drift[step].power_drift, sound[step].false_drift, sound[step].power_drift))]
+        for step in transition
     ]  # fmt: skip
     return table(head, lines)
 
 
-def family_ladder_table(rows: list[Row]) -> str:
-    """Power of every family as the probability asked for climbs."""
-    found = {name: [row for row in rows if row["family"] == name] for name in FAMILIES}
-    head, lines = ["family", "sets"], []
-    for name, own in found.items():
-        kind = FAMILIES[name].kind
-        steps = ladder(own)
-        head = ["family", "right verdict", "sets", *(f"{step.threshold:g}" for step in steps)]
-        pick = {"transition": "power_transition", "drift": "power_drift"}.get(kind, "false_transition")
-        label = {"transition": "transition-supported", "drift": "drifting"}.get(kind, "false transition-supported")
-        shares = [getattr(step, pick) for step in steps]
+#: By kind of truth: the verdict counted, the threshold that climbs, and the count of `Rates`.
+COUNTED = {
+    "transition": ("transition-supported", "transition", "power_transition"),
+    "drift": ("drifting", "drift", "power_drift"),
+    "finite": ("false transition-supported", "transition", "false_transition"),
+    "none": ("false transition-supported", "transition", "false_transition"),
+}
+
+
+def family_ladder_table(rows: Sequence[Row]) -> str:
+    """Share of one verdict in every family as the probability asked for it climbs."""
+    lines = []
+    for name, family in FAMILIES.items():
+        own = [row for row in rows if row["family"] == name]
+        label, climbs, pick = COUNTED[family.kind]
+        shares = [getattr(step, pick) for step in ladder(own, climbs, base=SOUND).values()]
         lines.append([name, label, str(len(own)), *(f"{a / b:.2f}" if b else "-" for a, b in shares)])
-    return table(head, lines)
+    return table(["family", "verdict", "sets", *(f"{step:g}" for step in LADDER)], lines)
 
 
 def verdict_on(count: Count, limit: float, *, least: bool) -> str:
@@ -249,7 +262,8 @@ def results(rows: list[Row]) -> str:
         "\"Wrong\" is `drifting` for a true transition and `transition-supported` for anything else.",
         "## Which probability to ask for", f"All sets at noise {MIDDLE_NOISE:g}:", threshold_table(middle),
         "All noise levels:", threshold_table(rows),
-        f"Families at noise {MIDDLE_NOISE:g}, share of the verdict named, by the probability asked for:",
+        f"Families at noise {MIDDLE_NOISE:g}, share of the verdict named, by the probability asked for (crossings "
+        "contradict a drift from 0.95 on):",
         family_ladder_table(middle),
     ]) + "\n"  # fmt: skip
 
