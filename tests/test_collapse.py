@@ -247,7 +247,8 @@ def test_length_forms_need_positive_disorder() -> None:
 
 def test_limit_of_a_converging_trajectory() -> None:
     """With W_c(L) = a + b/L the reported critical disorder is the limit a, not the value at the middle size."""
-    truth = InverseDriftTruth(W_c=5.0, nu=1.0, scaling=Gompertz(scale=8.0), shift=-8.0)
+    # not nu = 1, where a shift of 8/L is the same as a shift of the scaling function: (W - 5 + 8/L) L = (W - 5) L + 8
+    truth = InverseDriftTruth(W_c=5.0, nu=2.0, scaling=Gompertz(scale=2.5), shift=-8.0)
     data = [simulate(SIZES, GRID, truth, ERROR, 300 + seed) for seed in range(10)]
     fits = [fit_collapse(curves, "power-law:inverse-drift", quick=True, extras=False) for curves in data]
     z = np.array([(fit.parameters["W_c"].median - 5.0) / fit.parameters["W_c"].sd for fit in fits])
@@ -259,3 +260,12 @@ def test_limit_of_a_converging_trajectory() -> None:
     np.testing.assert_allclose(
         fit.draws("W_c"), fit.draws("W_mid") + fit.draws("D") * (-1 / 13) / (1 / 18 - 1 / 8), rtol=1e-12
     )
+
+
+def test_constant_observable_is_no_accident() -> None:
+    """Exactly equal means at every point are fitted without failing, and no form can be told from another."""
+    flat = Curves([Curve(L, GRID, np.full(GRID.size, 0.5), np.full(GRID.size, ERROR)) for L in (8, 12, 16)])
+    fit = fit_collapse(flat, "power-law", quick=True)
+    assert np.isfinite(fit.log_evidence)
+    assert fit.quality.p_value > 0.99  # no scatter at all
+    assert "W_c" in fit.prior_limited

@@ -179,8 +179,17 @@ def test_drifting_whatever_undecided_crossings_say(bounded: float | None) -> Non
 
 
 def test_drift_contradicted_by_the_crossings_is_undecided() -> None:
-    """Collapse says drift, crossings say limit: undecided."""
-    assert judge(case(fits=fits(230.0, 250.0), probability_bounded=0.5)).code == "undecided"
+    """Collapse says drift, crossings establish a limit: undecided; crossings that only lean to one do not count."""
+    assert judge(case(fits=fits(230.0, 250.0), probability_bounded=0.95)).code == "undecided"
+    assert judge(case(fits=fits(230.0, 250.0), probability_bounded=0.94)).code == "drifting"
+
+
+def test_no_drift_without_size_dependence() -> None:
+    """Where no dependence on size is resolved, evidence for a drifting form is not a drift."""
+    made = case(fits=fits(230.0, 250.0), probability_bounded=0.3)
+    flat = replace(made.separation, z_below=2.9, z_above=-2.9, separated=False)
+    assert judge(replace(made, separation=flat)).code == "undecided"
+    assert judge(replace(made, separation=replace(flat, z_above=-3.1))).code == "drifting"
 
 
 def test_drift_needs_its_probability() -> None:

@@ -25,6 +25,7 @@ CROSSES = 0.5
 ESTABLISHED = 0.95
 POOR_P = 0.01
 UNSTABLE_P = 0.01
+MATTERS = 0.01  # posterior probability from which a form can move a headline or a verdict
 UNDERSTATED_FROM = 1.1
 ASSUMED_INDEPENDENT_BELOW = 0.85
 PLATEAU_SIGMAS = 5.0
@@ -314,8 +315,12 @@ def exponent_limit(curves: Curves) -> tuple[float, str] | None:
 
 @rule
 def sampler_not_converged(case: Case) -> Caution | None:
-    """A sampler did not reach the length it needs."""
-    bad: Sequence[CollapseFit] = [fit for fit in case.comparison.fits if not fit.sampler.converged]
+    """The sampler of a form that matters did not reach the length it needs.
+
+    A form that the data exclude by far often has an awkward posterior; its numbers enter nothing.
+    """
+    pairs = zip(case.comparison.fits, case.comparison.probabilities, strict=True)
+    bad: Sequence[CollapseFit] = [fit for fit, p in pairs if not fit.sampler.converged and p >= MATTERS]
     if not bad:
         return None
     named = "; ".join(f"{fit.ansatz.name}: {fit.sampler.note}" for fit in bad)

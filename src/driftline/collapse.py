@@ -17,6 +17,7 @@ from scipy.special import logsumexp
 from scipy.stats import chi2
 
 from driftline.curves import MIN_SIZES, Curves, FloatArray
+from driftline.errors import ConfigurationError
 from driftline.inference.importance import Mixture, WeightedDraws, adapt, fit_mixture, sample_until
 from driftline.inference.intervals import Interval
 from driftline.inference.modes import find_modes
@@ -312,6 +313,11 @@ def _prior_shifts(
 
 def _adapted(target: Posterior, rng: np.random.Generator) -> tuple[Mixture, WeightedDraws]:
     modes = find_modes(target, target.from_unit, target.dimension, rng)
+    if not modes:
+        raise ConfigurationError(
+            f"ansatz {target.ansatz.name!r} is impossible for these data at every point of its priors that was tried; "
+            "leave it out or change its priors"
+        )
     return adapt(target, Mixture.of_modes(modes), rng)
 
 
@@ -389,7 +395,7 @@ def _judged(health: SamplerHealth, draws: WeightedDraws, physical: WeightedDraws
     """Add the effective sizes of both importance samples to the health of the chain."""
     notes = []
     if not health.converged:
-        notes.append(f"the chain of {health.autocorrelation:.0f} steps autocorrelation is too short")
+        notes.append(f"the chain is too short for its autocorrelation time of {health.autocorrelation:.0f} steps")
     for what, sample in (("evidence", draws), ("parameters", physical)):
         if sample.effective < EFFECTIVE_LEAST:
             notes.append(f"importance sampling of the {what} has only {sample.effective:.0f} effective draws")

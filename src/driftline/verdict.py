@@ -11,13 +11,14 @@ from dataclasses import dataclass, field
 from driftline import numerals
 from driftline.cautions import CROSSES, ESTABLISHED, POOR_P, Case, Caution, cautions
 from driftline.scaling.forms import SizeIndependent
+from driftline.separation import THRESHOLD
 
 __all__ = ["Case", "Caution", "Verdict", "judge"]
 
 NO_EVIDENCE = "Warning: no evidence of a transition in these data."
 FINITE_SIZES = "Finite sizes alone do not decide the thermodynamic limit."
-#: Crossings that move under a law with a limit, with this probability, contradict a drift seen by the collapse alone.
-CONTRADICTED = 0.5
+#: A drift seen by the collapse is contradicted by crossings only if these establish a limit; a few crossings rarely do.
+CONTRADICTED = ESTABLISHED
 LEAST_SIZES = 3  # two sizes have one crossing, which cannot be seen to drift or to stay
 
 
@@ -67,9 +68,15 @@ def _decide(case: Case, failed: tuple[str, ...], drift: float | None) -> tuple[s
         return "transition-supported", _transition_statement(case)
     if _without_size(case) >= ESTABLISHED:
         return "size-independent", _size_independent_statement(case)
-    if drift is not None and drift >= ESTABLISHED and (case.drift.probability_bounded or 0.0) < CONTRADICTED:
+    contradicted = (case.drift.probability_bounded or 0.0) >= CONTRADICTED
+    if drift is not None and drift >= ESTABLISHED and not contradicted and _size_matters(case):
         return "drifting", _drift_statement(case, drift)
     return "undecided", "The data neither support a critical disorder nor establish a drift."
+
+
+def _size_matters(case: Case) -> bool:
+    """Whether any dependence on size is resolved; without one, evidence between forms is about their flexibility."""
+    return max(abs(case.separation.z_below), abs(case.separation.z_above)) >= THRESHOLD
 
 
 def probability_of_transition(case: Case) -> float | None:

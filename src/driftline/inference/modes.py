@@ -52,12 +52,19 @@ def find_modes(log_density: LogDensity, from_unit: LogDensity, dimension: int, r
         Number of coordinates.
     rng : numpy.random.Generator
         Scrambles the Sobol sequence of the scan.
+
+    Returns
+    -------
+    list of Mode
+        Empty if the density vanishes at every point of the scan.
     """
     unit = qmc.Sobol(dimension, rng=rng).random_base2(SCAN_POWER)
     unit = np.clip(unit, 1e-9, 1 - 1e-9)  # scrambled points may touch the edge, where quantiles are infinite
     places = from_unit(unit)
     values = _in_chunks(log_density, places)
     chosen = _spread_out(unit, values)
+    if not chosen:
+        return []
     width = np.ptp(from_unit(np.array([[0.16] * dimension, [0.84] * dimension])), axis=0) / 2
     found = _climb(log_density, places[chosen], values[chosen], width)
     return _distinct(found)

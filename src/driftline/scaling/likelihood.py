@@ -257,7 +257,7 @@ class Posterior:
         log_det_prior = self.function.log_det_precision(log_tau) - 2 * terms * np.log(self.correction_sd)
         scale = 2 * (self.points - self.function.count - terms) * log_s
         total = -0.5 * (quadratic * np.exp(-2 * log_s) + log_det - log_det_prior + scale + self._constant)
-        sound = np.isfinite(total) & (quadratic > 0)  # else rounding has eaten the number
+        sound = np.isfinite(total) & (quadratic >= 0)  # below zero rounding has eaten the number
         return np.where(sound, total, -np.inf)
 
     def _banded(self, z: FloatArray) -> tuple[FloatArray, FloatArray]:
