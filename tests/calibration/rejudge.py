@@ -61,7 +61,8 @@ def rejudge(row: Row, thresholds: Thresholds = IN_USE) -> str:
     if without >= thresholds.none:
         return "size-independent"
     bounded = number(row, "p_bounded")
-    if drift >= thresholds.drift and (bounded or 0.0) < thresholds.contradicted:
+    size_matters = max(abs(float(row["z_below"])), abs(float(row["z_above"]))) >= thresholds.resolved
+    if drift >= thresholds.drift and (bounded or 0.0) < thresholds.contradicted and size_matters:
         return "drifting"
     return "undecided"
 
