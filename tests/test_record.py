@@ -109,7 +109,7 @@ def test_result_keeps_the_contract():
     result = json.loads(to_json(made_analysis()))
     assert differences(result, SCHEMA) == []
     assert result["schema"] == "driftline-result/1"
-    assert list(result["software"]["packages"]) == ["numpy", "scipy", "lmfit", "emcee"]
+    assert list(result["software"]["packages"]) == ["numpy", "scipy", "lmfit", "emcee", "numba"]
 
 
 def test_the_contract_check_can_fail():

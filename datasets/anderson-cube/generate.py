@@ -27,7 +27,7 @@ import scipy.linalg
 FRACTION = 0.1  # of the levels, those closest to E = 0: |E| < 0.9, where the mobility edge is flat
 DISORDERS = (13.0, 14.0, 14.5, 15.0, 15.5, 16.0, 16.5, 17.0, 17.5, 18.0, 18.5, 19.0, 20.0)
 # size: (realisations a block, blocks); a pass through all sizes and disorders computes one block of each
-PLAN = {6: (1400, 4), 8: (580, 4), 10: (300, 4), 12: (60, 3), 14: (20, 5)}
+PLAN = {6: (1400, 4), 8: (580, 4), 10: (300, 4), 12: (60, 3), 14: (20, 7)}
 
 
 @cache

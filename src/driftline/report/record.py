@@ -29,7 +29,7 @@ if TYPE_CHECKING:
     from driftline.settings import Settings
 
 SCHEMA = "driftline-result/1"
-PACKAGES = ("numpy", "scipy", "lmfit", "emcee")  # those whose version can change a number
+PACKAGES = ("numpy", "scipy", "lmfit", "emcee", "numba")  # those whose version can change a number
 LIMITS = tuple(part.name for part in fields(Interval))
 
 
