@@ -3,6 +3,7 @@
     python tests/calibration/study.py                       everything that is missing, most useful cells first
     python tests/calibration/study.py --stop-after 600      the same for ten minutes
     python tests/calibration/study.py --part 0 --parts 2    half of it, for a second process beside the first
+    python tests/calibration/study.py --family kt --grid 8-18 --noise 0.003     some cells only
 
 Each data set leaves one row in ``raw/<family>.csv``: the verdict and the numbers behind it, so that thresholds can be
 changed afterwards without a new run (`rejudge.py`).  Rows are appended as they come and never written twice; a run
@@ -19,7 +20,7 @@ import hashlib
 import os
 import sys
 import time
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
 from pathlib import Path
 from unittest import mock
 
@@ -174,11 +175,21 @@ def append(entry: dict[str, str], folder: Path = RAW) -> None:
         writer.writerow(entry)
 
 
-def run(part: int, parts: int, seconds: float, folder: Path = RAW) -> int:
-    """Make the missing rows of one part of the study; returns how many were made."""
+def run(
+    part: int = 0,
+    parts: int = 1,
+    seconds: float = float("inf"),
+    folder: Path = RAW,
+    only: Mapping[str, object] | None = None,
+) -> int:
+    """Make the missing rows of one part of the study; returns how many were made.
+
+    `only` maps names of fields of `Cell` to the value that they must have.
+    """
     done = {identity(entry) for entry in read_rows(folder)}
     stop, made = time.monotonic() + seconds, 0
-    for number, (cell, seed) in enumerate(dict.fromkeys(jobs())):
+    chosen = [job for job in dict.fromkeys(jobs()) if all(getattr(job[0], k) == v for k, v in (only or {}).items())]
+    for number, (cell, seed) in enumerate(chosen):
         if time.monotonic() > stop:
             break
         if number % parts == part and (cell, seed) not in done:
@@ -193,8 +204,12 @@ def main() -> None:
     parser.add_argument("--part", type=int, default=0)
     parser.add_argument("--parts", type=int, default=1)
     parser.add_argument("--stop-after", type=float, default=float("inf"), metavar="SECONDS")
+    parser.add_argument("--family", choices=FAMILIES)
+    parser.add_argument("--noise", type=float, choices=NOISES)
+    parser.add_argument("--grid", choices=GRIDS)
     chosen = parser.parse_args()
-    print(run(chosen.part, chosen.parts, chosen.stop_after), "data sets", file=sys.stderr)
+    only = {name: getattr(chosen, name) for name in ("family", "noise", "grid") if getattr(chosen, name) is not None}
+    print(run(chosen.part, chosen.parts, chosen.stop_after, only=only), "data sets", file=sys.stderr)
 
 
 if __name__ == "__main__":

@@ -210,7 +210,10 @@ def targets(found: dict[Cell, list[Row]]) -> list[tuple[str, Count, float, bool]
 
 
 #: Why a target is missed, by the beginning of its text.
-REASONS: dict[str, str] = {}
+REASONS: dict[str, str] = {
+    "power for nu-1": "a drift law with a shift near zero describes a transition nearly as well, and Occam's factor "
+    "against it is only about 4 to 10, so that the probability of a transition seldom passes 0.9",
+}
 
 
 def reason(text: str) -> str:
