@@ -45,7 +45,7 @@ def test_transition_supported() -> None:
     assert verdict.code == "transition-supported"
     assert verdict.statement == (
         "The data support a transition: curves separate on both sides of a crossing, and forms with a critical "
-        "disorder describe them best, with W_c in [16.29, 16.77] (95 %). Finite sizes alone do not decide the "
+        "disorder describe them best, with W_c in [16.34, 16.70] (95 %). Finite sizes alone do not decide the "
         "thermodynamic limit."
     )
     assert (verdict.reasons, verdict.warnings) == ((), ())
@@ -95,7 +95,7 @@ BLOCKED: dict[str, tuple[Case, str]] = {
     ),
     "outside the range": (
         beyond(6),
-        "OUTSIDE_RANGE: W_c in [16.29, 16.77] (95 %) reaches beyond the measured disorders 13 to 20 with probability "
+        "OUTSIDE_RANGE: W_c in [16.34, 16.70] (95 %) reaches beyond the measured disorders 13 to 20 with probability "
         "0.06",
     ),
     "set by the prior": (
@@ -281,7 +281,7 @@ def test_every_other_verdict_opens_with_the_warning() -> None:
 def test_statement_uses_the_symbol_of_the_disorder() -> None:
     """The critical value carries the user's symbol."""
     labels = replace(LABELS, ergodic_value=None, disorder_symbol="V")
-    assert "with V_c in [16.29, 16.77]" in judge(case(labels=labels)).statement
+    assert "with V_c in [16.34, 16.70]" in judge(case(labels=labels)).statement
 
 
 def test_without_a_rate_the_statement_has_none() -> None:

@@ -9,7 +9,7 @@ from dataclasses import dataclass, field
 
 import numpy as np
 
-from driftline.collapse import CollapseFit, Comparison, fit_collapse, weigh
+from driftline.collapse import CollapseFit, Comparison, averaged, fit_collapse, weigh
 from driftline.costs import Cost, collapse_costs
 from driftline.crossings import Crossings, find_crossings
 from driftline.curves import Curves
@@ -181,15 +181,8 @@ def _crossover(basis: Sequence[CollapseFit], stability: Sequence[StabilityRow]) 
     known = [(w, value) for w, value in extra if value is not None]
     with_exponent = [fit for fit in basis if "nu" in fit.names]
     return Crossover(
-        disorder=_averaged(basis, "W_c"),
+        disorder=averaged(basis, "W_c"),
         systematic=float(np.sqrt(sum(w * v**2 for w, v in known) / sum(w for w, _ in known))) if known else None,
-        nu=_averaged(with_exponent, "nu") if with_exponent else None,
+        nu=averaged(with_exponent, "nu") if with_exponent else None,
         basis=tuple(fit.ansatz.name for fit in basis),
     )
-
-
-def _averaged(fits: Sequence[CollapseFit], name: str) -> Interval:
-    """Interval of one parameter over all fits, each weighted by its evidence."""
-    counts = [len(fit.samples) for fit in fits]
-    weights = np.repeat(np.array(weigh(fits)) / counts, counts)
-    return Interval.of_draws(np.concatenate([fit.draws(name) for fit in fits]), weights)

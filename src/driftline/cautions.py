@@ -317,10 +317,13 @@ def exponent_limit(curves: Curves) -> tuple[float, str] | None:
 def sampler_not_converged(case: Case) -> Caution | None:
     """The sampler of a form that matters did not reach the length it needs.
 
-    A form that the data exclude by far often has an awkward posterior; its numbers enter nothing.
+    A form that the data exclude by far often has an awkward posterior; unless it is in the headline, its numbers enter
+    nothing.
     """
     pairs = zip(case.comparison.fits, case.comparison.probabilities, strict=True)
-    bad: Sequence[CollapseFit] = [fit for fit, p in pairs if not fit.sampler.converged and p >= MATTERS]
+    bad: Sequence[CollapseFit] = [
+        fit for fit, p in pairs if not fit.sampler.converged and (p >= MATTERS or fit in case.basis)
+    ]
     if not bad:
         return None
     named = "; ".join(f"{fit.ansatz.name}: {fit.sampler.note}" for fit in bad)

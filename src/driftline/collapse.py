@@ -190,7 +190,11 @@ class Comparison:
     probabilities: tuple[float, ...]
 
     def __getitem__(self, name: str) -> CollapseFit:
-        return next(fit for fit in self.fits if fit.ansatz.name == name)
+        """The fit of the ansatz of this name; KeyError if there is none."""
+        for fit in self.fits:
+            if fit.ansatz.name == name:
+                return fit
+        raise KeyError(name)
 
     def probability(self, hypothesis: str) -> float | None:
         """Posterior probability of a hypothesis; None unless rivals of it were fitted as well."""
@@ -522,3 +526,10 @@ def weigh(fits: Sequence[CollapseFit]) -> tuple[float, ...]:
     prior = np.array([-np.log(hypotheses.count(h)) for h in hypotheses])
     logs = prior + np.array([fit.log_evidence for fit in fits])
     return tuple(float(p) for p in np.exp(logs - logsumexp(logs)))
+
+
+def averaged(fits: Sequence[CollapseFit], name: str) -> Interval:
+    """Interval of one parameter over all fits, each weighted by its evidence."""
+    counts = [len(fit.samples) for fit in fits]
+    weights = np.repeat(np.array(weigh(fits)) / counts, counts)
+    return Interval.of_draws(np.concatenate([fit.draws(name) for fit in fits]), weights)

@@ -10,6 +10,7 @@ from dataclasses import dataclass, field
 
 from driftline import numerals
 from driftline.cautions import CROSSES, ESTABLISHED, POOR_P, Case, Caution, cautions
+from driftline.collapse import averaged
 from driftline.scaling.forms import SizeIndependent
 from driftline.separation import THRESHOLD
 
@@ -133,9 +134,7 @@ def transition_conditions(
 
 
 def _transition_statement(case: Case) -> str:
-    fit = case.headline
-    assert fit is not None  # a condition of this verdict
-    wc = fit.parameters["W_c"]
+    wc = averaged(case.basis, "W_c")  # the headline; that there is a basis is a condition of this verdict
     return (
         "The data support a transition: curves separate on both sides of a crossing, and forms with a critical "
         f"disorder describe them best, with {case.curves.labels.disorder_symbol}_c in {numerals.bracket(wc)} (95 %)."
