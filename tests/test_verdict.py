@@ -95,7 +95,7 @@ BLOCKED: dict[str, tuple[Case, str]] = {
     ),
     "outside the range": (
         beyond(6),
-        "OUTSIDE_RANGE: W_c in [16.34, 16.70] (95 %) reaches beyond the measured disorders 13 to 20 with probability "
+        "OUTSIDE_RANGE: W_c in [16.29, 16.77] (95 %) reaches beyond the measured disorders 13 to 20 with probability "
         "0.06",
     ),
     "set by the prior": (
