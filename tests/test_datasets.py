@@ -20,8 +20,11 @@ import scipy.stats
 from driftline.curves import Labels
 
 DATASETS = Path(__file__).parents[1] / "datasets"
-FOLDERS = ("anderson-cube", "anderson-square", "demo-clock-wall", "quasiperiodic-chain")
-LEVEL_FOLDERS = ("anderson-cube", "anderson-square")
+FOLDERS = (
+    "anderson-cube", "anderson-square", "demo-clock-wall", "quasiperiodic-chain", "random-ising-chain",
+    "rosenzweig-porter",
+)  # fmt: skip
+LEVEL_FOLDERS = ("anderson-cube", "anderson-square", "rosenzweig-porter")
 POISSON = 2 * np.log(2) - 1  # Atas, Bogomolny, Giraud, Roux, PRL 110, 084101 (2013), exact
 SURMISE = 4 - 2 * np.sqrt(3)  # the same paper: 3 x 3 orthogonal matrices, exact
 ORTHOGONAL, ORTHOGONAL_ERROR = 0.5307, 0.0001  # the same paper, large matrices; number from memory
@@ -57,6 +60,12 @@ def curve_table(folder: str) -> np.ndarray[Any, Any]:
     return np.array([[float(v) for v in r.values()] for r in rows(DATASETS / folder / "curves.csv")])
 
 
+def block_size(folder: str) -> dict[float, int]:
+    """The whole number by which blocks are stored, for every size of the curves."""
+    study = generator(folder).STUDY
+    return {float(study.reported.get(size, size)): size for size in study.plan}
+
+
 @pytest.mark.parametrize("folder", FOLDERS)
 def test_generator_reproduces_a_stored_block(folder: str) -> None:
     """Recomputing the first stored block of the smallest size gives its numbers, and not those of any other block."""
@@ -83,9 +92,9 @@ def test_generator_reproduces_a_stored_block(folder: str) -> None:
 @pytest.mark.parametrize("folder", FOLDERS)
 def test_curves_pool_the_stored_blocks(folder: str) -> None:
     """Mean, standard error and samples of curves.csv follow from the blocks by the law of total variance."""
-    blocks = stored_blocks(folder)
+    blocks, whole = stored_blocks(folder), block_size(folder)
     for size, disorder, mean, error, samples in curve_table(folder):
-        done = np.array(blocks[int(size), disorder])
+        done = np.array(blocks[whole[size], disorder])
         # A running generator may have appended blocks since the curves were written; the curves hold the first ones
         used = done[: np.searchsorted(np.cumsum(done[:, 1]), samples) + 1]
         n, m, squares = used[:, 1], used[:, 2], used[:, 3]
@@ -112,10 +121,10 @@ def test_finished_runs_are_complete_and_precise(folder: str) -> None:
     assert finished or folder == "anderson-cube"  # the only run of hours
     if not finished:
         return
-    table = curve_table(folder)
+    table, whole = curve_table(folder), block_size(folder)
     assert len(table) == len(planned) * len(module.DISORDERS)
     for size, _, _, error, samples in table:
-        assert samples == planned[int(size)]
+        assert samples == planned[whole[size]]
         assert error <= promised_error(folder, size)
 
 
@@ -123,7 +132,10 @@ def promised_error(folder: str, size: float) -> float:
     """Largest standard error that the README of `folder` allows at `size`."""
     if folder == "anderson-cube":
         return 0.001 if size <= 10 else 0.002
-    return {"anderson-square": 0.0014, "demo-clock-wall": 0.0045, "quasiperiodic-chain": 0.005}[folder]
+    return {
+        "anderson-square": 0.0014, "demo-clock-wall": 0.0045, "quasiperiodic-chain": 0.005,
+        "random-ising-chain": 0.0025, "rosenzweig-porter": 0.002,
+    }[folder]  # fmt: skip
 
 
 @pytest.mark.parametrize("folder", FOLDERS)
@@ -144,13 +156,18 @@ def test_hdf5_and_csv_agree(folder: str) -> None:
             # the CSV is rounded to eight decimals
             assert np.allclose(group["mean"][:], part[:, 2], rtol=0, atol=0.51e-8)
             assert np.allclose(group["error"][:], part[:, 3], rtol=0, atol=0.51e-8)
-        attributes = {key: value if isinstance(value, str) else float(value) for key, value in file.attrs.items()}
+        attributes: dict[str, Any] = {
+            key: value if isinstance(value, str) else float(value) for key, value in file.attrs.items()
+        }
     written = dict(line.removeprefix("# ").split(": ", 1) for line in comments)
     assert {key: type(attributes[key])(value) for key, value in written.items()} == attributes
+    if attributes.get("dimension") == "none":  # as the readers spell it
+        attributes["dimension"] = None
     labels = Labels(**attributes)  # type: ignore[arg-type]
     expected = {
         "anderson-cube": (3.0, "quenched"), "anderson-square": (2.0, "quenched"),
         "demo-clock-wall": (2.0, "quenched"), "quasiperiodic-chain": (1.0, "quasiperiodic"),
+        "random-ising-chain": (1.0, "quenched"), "rosenzweig-porter": (None, "none"),
     }  # fmt: skip
     assert (labels.dimension, labels.disorder_kind) == expected[folder]
     if folder in LEVEL_FOLDERS:
