@@ -4,8 +4,9 @@
 
 Real symmetric N x N matrices: diagonal entries of variance 1, off-diagonal entries of standard deviation lambda
 N^(-gamma/2), all independent.  The strength lambda does not move gamma_c = 2; 0.4 puts the crossing in the middle
-between the two limits of the gap ratio, where sizes separate on both sides of it.  Every matrix is diagonalised in full (LAPACK, one thread); the half of its levels closest to E = 0
-gives one mean gap ratio, and the matrix is the unit of statistics.  The size in the curves is ln N.
+between the two limits of the gap ratio, where sizes separate on both sides of it.  Every matrix is diagonalised in full
+(LAPACK, one thread); the half of its levels closest to E = 0 gives one mean gap ratio, and the matrix is the unit of
+statistics.  The size in the curves is ln N.
 
     python generate.py                 compute what is missing, then write curves.csv and curves.h5
     python generate.py --write         only write the two files from blocks.csv
