@@ -83,7 +83,7 @@ def made_fit(curves, name="power-law:corrected", *, log_evidence=250.0):
     order = np.argsort(x)
     residual = np.random.default_rng(6).normal(size=x.size)
     ansatz = parse_ansatz(name, curves)
-    truth = {"W_c": (16.53, 0.12), "nu": (1.57, 0.05), "omega": (1.0, 0.5), "D": (0.3, 0.2)}
+    truth = {"W_c": (16.53, 0.12), "W_mid": (16.53, 0.12), "nu": (1.57, 0.05), "omega": (1.0, 0.5), "D": (0.3, 0.2)}
     names = (*(each.name for each in ansatz.parameters), "tau", "s")
     centres = np.array([truth.get(each, (1.0, 0.1)) for each in names])
     rng = np.random.default_rng(7)

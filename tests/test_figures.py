@@ -220,7 +220,7 @@ def test_collapse_shown_is_the_headline():
     analysis = made_analysis(names=("power-law:corrected", "power-law:linear-drift"))
     # the basis of the hand-built analysis is its last ansatz, which also has the highest evidence
     (caption,) = [figure.caption(analysis) for figure in FIGURES if figure.name == "collapse"]
-    assert caption.startswith("Collapse under power-law:linear-drift at the posterior median (W_c = 16.53(12), nu = ")
+    assert caption.startswith("Collapse under power-law:linear-drift at the posterior median (W_mid = 16.53(12), nu = ")
 
 
 @pytest.mark.parametrize("name", available())
