@@ -21,6 +21,7 @@ from pathlib import Path
 
 sys.path.insert(0, str(Path(__file__).parents[1]))
 import _blocks  # before numpy, which reads the number of threads when it is loaded
+from _levels import mean_gap_ratio
 
 # isort: split
 import numpy as np
@@ -40,15 +41,6 @@ def matrix(size, gamma, rng):
     entries *= STRENGTH * size ** (-gamma / 2)
     np.fill_diagonal(entries, diagonal)
     return entries
-
-
-def mean_gap_ratio(levels, count):
-    """Mean of min(d_n, d_n+1) / max(d_n, d_n+1) over the `count` levels closest to zero (Oganesyan, Huse 2007)."""
-    levels = np.sort(levels)
-    first = np.searchsorted(levels, 0.0) - count // 2
-    first = min(max(first, 0), levels.size - count)
-    gaps = np.diff(levels[first : first + count])
-    return np.mean(np.minimum(gaps[1:], gaps[:-1]) / np.maximum(gaps[1:], gaps[:-1]))
 
 
 def sample(size, disorder, rng):

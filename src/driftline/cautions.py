@@ -203,32 +203,27 @@ def poor_fit(case: Case) -> Caution | None:
 def size_unstable(case: Case) -> Caution | None:
     """W_c moves when the smallest size is dropped."""
     row = _worst(case, sizes=True)
-    if row is None:
-        return None
-    full = case.comparison[row.ansatz].parameters["W_c"]
-    return Caution(
-        "SIZE_UNSTABLE",
-        f"without sizes below {row.smallest_size:g}, W_c of {row.ansatz} moves by {row.shift(full):+.3g}, "
-        f"{abs(row.significance(full)):.1f} times the expected scatter",
+    return None if row is None else _unstable(
+        case, row, "SIZE_UNSTABLE", f"without sizes below {row.smallest_size:g}",
         "the smallest sizes are outside the scaling regime; leave them out (--smallest-size) and add larger ones",
-        {"shift": row.shift(full), "significance": row.significance(full)},
-    )
+    )  # fmt: skip
 
 
 @rule
 def window_unstable(case: Case) -> Caution | None:
     """W_c moves when the disorder window is narrowed."""
     row = _worst(case, sizes=False)
-    if row is None:
-        return None
-    full = case.comparison[row.ansatz].parameters["W_c"]
-    return Caution(
-        "WINDOW_UNSTABLE",
-        f"with disorders from {row.window[0]:.4g} to {row.window[1]:.4g} only, W_c of {row.ansatz} moves by "
-        f"{row.shift(full):+.3g}, {abs(row.significance(full)):.1f} times the expected scatter",
+    return None if row is None else _unstable(
+        case, row, "WINDOW_UNSTABLE", f"with disorders from {row.window[0]:.4g} to {row.window[1]:.4g} only",
         "fit a window around the crossing (--window), where the scaling form holds",
-        {"shift": row.shift(full), "significance": row.significance(full)},
-    )
+    )  # fmt: skip
+
+
+def _unstable(case: Case, row: StabilityRow, code: str, cut: str, action: str) -> Caution:
+    full = case.comparison[row.ansatz].parameters["W_c"]
+    shift, significance = row.shift(full), row.significance(full)
+    message = f"{cut}, W_c of {row.ansatz} moves by {shift:+.3g}, {abs(significance):.1f} times the expected scatter"
+    return Caution(code, message, action, {"shift": shift, "significance": significance})
 
 
 def _worst(case: Case, *, sizes: bool) -> StabilityRow | None:
