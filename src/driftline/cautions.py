@@ -203,20 +203,34 @@ def poor_fit(case: Case) -> Caution | None:
 def size_unstable(case: Case) -> Caution | None:
     """W_c moves when the smallest size is dropped."""
     row = _worst(case, sizes=True)
-    return None if row is None else _unstable(
-        case, row, "SIZE_UNSTABLE", f"without sizes below {row.smallest_size:g}",
-        "the smallest sizes are outside the scaling regime; leave them out (--smallest-size) and add larger ones",
-    )  # fmt: skip
+    return (
+        None
+        if row is None
+        else _unstable(
+            case,
+            row,
+            "SIZE_UNSTABLE",
+            f"without sizes below {row.smallest_size:g}",
+            "the smallest sizes are outside the scaling regime; leave them out (--smallest-size) and add larger ones",
+        )
+    )
 
 
 @rule
 def window_unstable(case: Case) -> Caution | None:
     """W_c moves when the disorder window is narrowed."""
     row = _worst(case, sizes=False)
-    return None if row is None else _unstable(
-        case, row, "WINDOW_UNSTABLE", f"with disorders from {row.window[0]:.4g} to {row.window[1]:.4g} only",
-        "fit a window around the crossing (--window), where the scaling form holds",
-    )  # fmt: skip
+    return (
+        None
+        if row is None
+        else _unstable(
+            case,
+            row,
+            "WINDOW_UNSTABLE",
+            f"with disorders from {row.window[0]:.4g} to {row.window[1]:.4g} only",
+            "fit a window around the crossing (--window), where the scaling form holds",
+        )
+    )
 
 
 def _unstable(case: Case, row: StabilityRow, code: str, cut: str, action: str) -> Caution:
