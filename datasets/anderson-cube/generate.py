@@ -10,7 +10,7 @@ statistics.  Seeded block by block and resumable, see ../_blocks.py.
     python generate.py --write         only write the two files from blocks.csv
     python generate.py --workers 1     with one process
 
-About an hour and a half on two cores.  Needs numpy and scipy; h5py for curves.h5.
+More than an hour on two cores.  Needs numpy and scipy; h5py for curves.h5.
 """
 
 import sys

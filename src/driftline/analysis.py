@@ -27,7 +27,7 @@ Progress = Callable[[str, float], None]
 
 #: Forms whose evidence is less than this part of the best one are left out of the headline average.
 LEAST_WEIGHT = 0.01
-#: Parts of the whole job, for the progress display: measured on six sizes by 21 disorders.
+#: Parts of the whole job, for the progress display: rough, for a full run.
 SHARES = {"crossings": 0.06, "collapse": 0.84, "stability": 0.10}
 
 

@@ -17,7 +17,7 @@ from driftline.curves import FloatArray
 
 LogDensity = Callable[[FloatArray], FloatArray]
 
-SCAN_POWER = 11  # 2^11 points: one in about 6 per axis of a five-dimensional prior
+SCAN_POWER = 11  # 2^11 points: between four and five to an axis of a five-dimensional prior
 CANDIDATES = 8
 ITERATIONS = 25
 STENCIL = 0.25  # of the current standard deviation

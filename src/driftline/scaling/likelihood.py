@@ -35,9 +35,10 @@ from driftline.scaling.priors import LOG_2PI, LogNormal, LogUniform
 CORRECTION_SD = 0.3
 CORRECTION_TERMS = 2
 
-#: tau is the scale of second differences of the coefficients in units of the range of y.  A logistic step over a third
-#: of the axis has 0.05; the ends are a straight line for all that data can tell and a step between two knots.  Ends are
-#: needed: below the lower one the normal matrix is too badly conditioned for double precision.
+#: tau is the scale of second differences of the coefficients in units of the range of y.  A logistic step whose rise
+#: from 10 to 90 % takes a third of the axis has 0.04 at most (0.096/w^2 times the squared knot spacing, w = 1/13).  The
+#: ends are a straight line for all that data can tell and a step between two knots.  Ends are needed: below the lower
+#: one the normal matrix is too badly conditioned for double precision.
 TAU_PRIOR = LogUniform.between(5e-4, 5.0)
 NOISE_PRIOR = LogNormal.around(1.0, 0.3)
 NUISANCE = (
