@@ -65,7 +65,7 @@ def code_version() -> str:
     root = Path(driftline.__file__).parent
     digest = hashlib.sha256()
     for path in sorted(root.rglob("*.py")):
-        if path.relative_to(root).parts[0] not in ("figures", "report", "readers", "cli.py"):
+        if path.relative_to(root).parts[0] not in ("figures", "report", "readers", "cli"):
             digest.update(path.read_bytes())
     return digest.hexdigest()[:8]
 

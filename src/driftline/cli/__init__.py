@@ -1,0 +1,62 @@
+"""The command line: parse, call the public functions, print. One file a command.
+
+Exit codes: 0 done, whatever the verdict; 1 bad input or configuration, with one sentence on standard error; 2 wrong
+usage; 130 interrupted. Any other exception is a bug of the program: it shows its traceback, and Python exits with 1.
+
+Everything numerical is imported inside the commands, so that ``--help`` is immediate.
+"""
+
+from __future__ import annotations
+
+import io
+import sys
+from collections.abc import Sequence
+
+import click
+
+from driftline.cli.lazy import LazyGroup
+from driftline.errors import DriftlineError
+
+DONE, BAD_INPUT, BAD_USAGE, INTERRUPTED = 0, 1, 2, 130
+
+#: The commands in the order in which the help lists them: each is the function of its name in the module of its name.
+COMMANDS = ("analyse", "inspect", "ansatze")
+
+
+def main(argv: Sequence[str] | None = None) -> int:
+    """Run the command line and return the exit code.
+
+    Parameters
+    ----------
+    argv : sequence of str, optional
+        Arguments without the program's name; those of the process by default.
+    """
+    _survive_odd_encodings()
+    try:
+        with driftline.make_context("driftline", list(sys.argv[1:] if argv is None else argv)) as context:
+            driftline.invoke(context)
+    except click.exceptions.Exit as finished:
+        return finished.exit_code
+    except click.ClickException as wrong:
+        wrong.show()
+        return wrong.exit_code
+    except DriftlineError as wrong:
+        click.echo(f"driftline: {wrong}", err=True)
+        return BAD_INPUT
+    except (KeyboardInterrupt, click.Abort):
+        click.echo("driftline: interrupted, nothing was written", err=True)
+        return INTERRUPTED
+    return DONE
+
+
+@click.group(cls=LazyGroup, package=__name__, names=COMMANDS, context_settings={"help_option_names": ["-h", "--help"]})
+@click.version_option(package_name="driftline", prog_name="driftline", message="%(prog)s %(version)s")
+def driftline() -> None:
+    """Finite-size crossovers of disordered systems: locate, collapse, compare, judge."""
+
+
+def _survive_odd_encodings() -> None:
+    """Write a question mark where the terminal's encoding lacks a character, rather than stop."""
+    for stream in (sys.stdout, sys.stderr):
+        if isinstance(stream, io.TextIOWrapper):
+            stream.reconfigure(errors="replace")
