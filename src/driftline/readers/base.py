@@ -60,6 +60,8 @@ class Contents:
         Number of data rows (points) read.
     notes : sequence of str
         What was ignored or rearranged, one sentence each.
+    realisations : sequence of mapping
+        What raw values showed, as `driftline.readers.samples.Sampled.record` gives it; empty for averaged data.
     """
 
     curves: Sequence[Curve]
@@ -67,6 +69,7 @@ class Contents:
     columns: Mapping[str, str]
     rows: int
     notes: Sequence[str] = ()
+    realisations: Sequence[Mapping[str, Any]] = ()
 
 
 class Layout(ABC):
@@ -108,6 +111,7 @@ class Layout(ABC):
             "columns": dict(found.columns),
             "rows": found.rows,
             "notes": list(found.notes),
+            **({"realisations": [dict(size) for size in found.realisations]} if found.realisations else {}),
         }
         with located(place):
             curves = Curves(found.curves, Labels(**found.labels), origin)  # type: ignore[arg-type]
