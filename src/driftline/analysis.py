@@ -5,7 +5,8 @@ from __future__ import annotations
 import time
 from collections.abc import Callable, Iterator, Sequence
 from contextlib import contextmanager
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, fields
+from typing import Any
 
 import numpy as np
 
@@ -16,12 +17,14 @@ from driftline.curves import Curves
 from driftline.drift import Drift, fit_drift
 from driftline.inference.intervals import Interval
 from driftline.parallel import Task, run_tasks
+from driftline.plain import attributes, plain
 from driftline.scaling.ansatz import applicable, parse_ansatz
 from driftline.scaling.defaults import DEFAULT_ANSATZE
 from driftline.separation import Separation, separation_test
 from driftline.settings import Settings
 from driftline.stability import StabilityRow, cuts, refit, systematic
 from driftline.verdict import Case, Verdict, judge
+from driftline.versions import software
 
 Progress = Callable[[str, float], None]
 
@@ -29,6 +32,9 @@ Progress = Callable[[str, float], None]
 LEAST_WEIGHT = 0.01
 #: Parts of the whole job, for the progress display: rough, for a full run.
 SHARES = {"crossings": 0.06, "collapse": 0.84, "stability": 0.10}
+#: Of the layout of `result.json`.
+SCHEMA = "driftline-result/1"
+_NOTHING = dict.fromkeys(part.name for part in fields(Interval))
 
 
 @dataclass(frozen=True)
@@ -53,6 +59,11 @@ class Crossover:
     nu: Interval | None
     basis: tuple[str, ...]
 
+    def to_dict(self) -> dict[str, Any]:
+        """The object ``crossover`` of `result.json`."""
+        disorder = {**plain(self.disorder), "systematic": plain(self.systematic)}
+        return {"disorder": disorder, "nu": plain(self.nu), "basis": list(self.basis)}
+
 
 @dataclass(frozen=True, eq=False)
 class Analysis:
@@ -69,6 +80,40 @@ class Analysis:
     verdict: Verdict
     timing: dict[str, float] = field(default_factory=dict)
     costs: dict[str, tuple[Cost, ...]] = field(default_factory=dict)
+
+    def to_dict(self) -> dict[str, Any]:
+        """The content of `result.json` as plain dicts, lists, numbers, text and None.
+
+        Keys are in the order of the file; `timing` is the last, and the only part that differs between two equal runs.
+        """
+        return {
+            "schema": SCHEMA,
+            "software": software(),
+            "input": _input(self.curves),
+            "seed": self.settings.seed,
+            "config": self.settings.to_dict(),
+            "crossings": self.crossings.to_dict(),
+            "drift": self.drift.to_dict(),
+            "collapse": self.comparison.to_dict(self.costs),
+            "crossover": self.crossover.to_dict() if self.crossover else _no_crossover(),
+            "stability": plain(self.stability),
+            "verdict": self.verdict.to_dict(),
+            "timing": plain(self.timing),
+        }
+
+
+def _no_crossover() -> dict[str, Any]:
+    """The same keys as `Crossover.to_dict`, all null."""
+    return {"disorder": {**_NOTHING, "systematic": None}, "nu": {**_NOTHING}, "basis": []}
+
+
+def _input(curves: Curves) -> dict[str, Any]:
+    return {
+        "path": curves.origin.get("path"),
+        "sha256": curves.origin.get("sha256"),
+        **attributes(curves, "sizes", "points", "disorder_range"),
+        "observable": curves.labels.observable,
+    }
 
 
 def analyse(curves: Curves, *, settings: Settings | None = None, progress: Progress | None = None) -> Analysis:

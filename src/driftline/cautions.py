@@ -7,6 +7,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
+from typing import Any
 
 import numpy as np
 from scipy.special import ndtri
@@ -16,6 +17,7 @@ from driftline.collapse import CollapseFit, Comparison
 from driftline.crossings import Crossings
 from driftline.curves import Curves
 from driftline.drift import Drift
+from driftline.plain import plain
 from driftline.separation import Separation
 from driftline.stability import StabilityRow
 
@@ -44,6 +46,11 @@ class Caution:
     message: str
     action: str
     numbers: dict[str, float] = field(default_factory=dict)
+
+    def to_dict(self) -> dict[str, Any]:
+        """This warning as `result.json` holds it: finding and remedy in one message."""
+        message = f"{self.message}. What to do: {self.action}."
+        return {"code": self.code, "message": message, "numbers": plain(self.numbers)}
 
 
 @dataclass(frozen=True, eq=False)

@@ -8,9 +8,10 @@ full model with tau sampled; the physical parameters are inferred with tau held 
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Sequence
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import dataclass, replace
-from typing import Any
+from types import MappingProxyType
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from scipy.special import logsumexp
@@ -22,11 +23,15 @@ from driftline.inference.importance import Mixture, WeightedDraws, adapt, fit_mi
 from driftline.inference.intervals import Interval
 from driftline.inference.modes import find_modes
 from driftline.inference.sampling import WALKERS, run_chain
+from driftline.plain import attributes, plain
 from driftline.scaling.ansatz import Ansatz, parse_ansatz
 from driftline.scaling.defaults import DEFAULT_ANSATZE
 from driftline.scaling.forms import Form
 from driftline.scaling.likelihood import TAU_PRIOR, Posterior
 from driftline.sensitivity import PRIOR_SETS, PriorShift
+
+if TYPE_CHECKING:
+    from driftline.costs import Cost
 
 Progress = Callable[[str, float], None]
 
@@ -158,28 +163,27 @@ class CollapseFit:
         )
         return "\n".join(lines)
 
-    def to_dict(self) -> dict[str, Any]:
-        """The entry of ``collapse[]`` in result.json, without the probability, which needs the other ansätze."""
-        q, s = self.quality, self.sampler
+    def to_dict(self, *, probability: float | None = None, costs: Sequence[Cost] = ()) -> dict[str, Any]:
+        """This fit as an entry of ``collapse`` in `result.json`.
+
+        Parameters
+        ----------
+        probability : float, optional
+            Posterior probability of the ansatz, which only a comparison knows.
+        costs : sequence of Cost, optional
+            From `collapse_costs`, which a fit alone does not compute.
+        """
         return {
             "ansatz": self.ansatz.name,
             "hypothesis": self.ansatz.hypothesis,
-            "log_evidence": self.log_evidence,
-            "log_evidence_error": self.log_evidence_error,
-            "parameters": {name: interval.to_dict() for name, interval in self.parameters.items()},
-            "fit": {
-                "chi2_per_dof": q.chi2_per_dof, "p_value": q.p_value,
-                "noise_scale": q.noise_scale, "max_residual": q.max_residual,
-            },
-            "held_out": {
-                "log_score": None if self.held_out is None else self.held_out.log_score,
-                "chi2_per_point": None if self.held_out is None else self.held_out.chi2_per_point,
-            },
-            "sampler": {
-                "effective_samples": s.effective_samples, "autocorrelation": s.autocorrelation,
-                "converged": s.converged,
-            },
-        }  # fmt: skip
+            **attributes(self, "log_evidence", "log_evidence_error"),
+            "probability": plain(probability),
+            "parameters": plain(self.parameters),
+            "fit": attributes(self.quality, "chi2_per_dof", "p_value", "noise_scale", "max_residual"),
+            "held_out": attributes(self.held_out, "log_score", "chi2_per_point"),
+            "sampler": attributes(self.sampler, "effective_samples", "autocorrelation", "converged"),
+            "costs": plain(costs),
+        }
 
 
 @dataclass(frozen=True, eq=False)
@@ -202,6 +206,11 @@ class Comparison:
             return None
         pairs = zip(self.fits, self.probabilities, strict=True)
         return float(sum(p for fit, p in pairs if fit.ansatz.hypothesis == hypothesis))
+
+    def to_dict(self, costs: Mapping[str, Sequence[Cost]] = MappingProxyType({})) -> list[dict[str, Any]]:
+        """The list ``collapse`` of `result.json`; `costs` are those of each ansatz by name, where computed."""
+        pairs = zip(self.fits, self.probabilities, strict=True)
+        return [fit.to_dict(probability=p, costs=costs.get(fit.ansatz.name, ())) for fit, p in pairs]
 
 
 def fit_collapse(

@@ -10,6 +10,7 @@ from __future__ import annotations
 
 from abc import ABC, abstractmethod
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
@@ -18,6 +19,7 @@ from scipy.sparse import csr_array
 from driftline.collapse import CollapseFit
 from driftline.curves import FloatArray
 from driftline.inference.intervals import Interval
+from driftline.plain import attributes
 
 IntArray = npt.NDArray[np.intp]
 
@@ -46,6 +48,10 @@ class Cost:
     value: float
     floor: Interval
     ratio: float
+
+    def to_dict(self) -> dict[str, Any]:
+        """This cost as `result.json` holds it."""
+        return attributes(self, "name", "value", "floor")
 
 
 @dataclass(frozen=True)

@@ -29,6 +29,7 @@ import numpy.typing as npt
 from driftline.curves import Curves, FloatArray, Labels
 from driftline.errors import InputError
 from driftline.inference.intervals import Interval
+from driftline.plain import attributes
 from driftline.smoothing import SmoothCurve, smooth_curves
 
 #: Below this probability of a crossing nothing is said about where it is.
@@ -80,13 +81,7 @@ class Crossing:
 
     def to_dict(self) -> dict[str, Any]:
         """This crossing as `result.json` holds it."""
-        intervals = {name: getattr(self, name) for name in ("disorder", "value", "inverse_nu")}
-        return {
-            "sizes": list(self.sizes),
-            "probability": self.probability,
-            "separated": self.separated,
-            **{name: None if value is None else value.to_dict() for name, value in intervals.items()},
-        }
+        return attributes(self, "sizes", "probability", "separated", "disorder", "value", "inverse_nu")
 
 
 @dataclass(frozen=True, eq=False)

@@ -35,6 +35,7 @@ from driftline.crossings import Crossing, Crossings
 from driftline.curves import FloatArray
 from driftline.errors import ConfigurationError
 from driftline.inference.intervals import Interval
+from driftline.plain import attributes
 
 #: Laws fitted by default: four that stay bounded, three that do not.
 DEFAULT_LAWS = ("constant", "inverse", "inverse-power", "kt", "logarithmic", "linear", "power")
@@ -358,15 +359,8 @@ class LawFit:
 
     def to_dict(self) -> dict[str, Any]:
         """This law as `result.json` holds it."""
-        return {
-            "name": self.name,
-            "bounded": self.bounded,
-            "log_evidence": self.log_evidence,
-            "probability": self.probability,
-            "parameters": {name: interval.to_dict() for name, interval in self.parameters.items()},
-            "limit": None if self.limit is None else self.limit.to_dict(),
-            "limit_one_sided": self.one_sided,
-        }
+        found = attributes(self, "name", "bounded", "log_evidence", "probability", "parameters", "limit")
+        return {**found, "limit_one_sided": self.one_sided}
 
 
 @dataclass(frozen=True, eq=False)
@@ -412,13 +406,7 @@ class Drift:
 
     def to_dict(self) -> dict[str, Any]:
         """The object `drift` of `result.json`."""
-        return {
-            "source": self.source,
-            "laws": [law.to_dict() for law in self.laws],
-            "probability_bounded": self.probability_bounded,
-            "rate_per_site": None if self.rate_per_site is None else self.rate_per_site.to_dict(),
-            "deciding_size": self.deciding_size,
-        }
+        return attributes(self, "source", "laws", "probability_bounded", "rate_per_site", "deciding_size")
 
     def summary(self) -> str:
         """The laws as a table of at most 80 columns, with what follows from them."""

@@ -110,6 +110,17 @@ class Settings:
                     _check_ansatz_names(chosen[name], chosen.get("forms", ()), where)
         return cls(**chosen)
 
+    def to_dict(self) -> dict[str, Any]:
+        """The object ``config`` of `result.json`: the settings that can change a number.
+
+        The seed stands beside it there, and the number of workers changes none.
+        """
+        from driftline.plain import attributes  # numpy comes with them, so only where they are needed
+        from driftline.scaling.tables import form_table
+
+        names = (part.name for part in fields(self) if part.name not in ("seed", "jobs", "forms"))
+        return {**attributes(self, *names), "forms": {form.name: form_table(form) for form in self.forms}}
+
     def select(self, curves: Curves) -> Curves:
         """The part of `curves` that window and smallest size leave.
 

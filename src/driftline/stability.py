@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 
@@ -16,6 +17,7 @@ from driftline.collapse import CollapseFit, fit_collapse
 from driftline.curves import MIN_DISORDERS, Curves
 from driftline.errors import InputError
 from driftline.inference.intervals import Interval
+from driftline.plain import attributes
 from driftline.scaling.ansatz import Ansatz
 
 #: Parts of the disorder range that the windows keep, around the crossover; the first is everything.
@@ -60,6 +62,10 @@ class StabilityRow:
     def significance(self, full: Interval) -> float:
         """Change over its expected scatter."""
         return self.shift(full) / self.scatter(full)
+
+    def to_dict(self) -> dict[str, Any]:
+        """This refit as an entry of ``stability`` in `result.json`."""
+        return attributes(self, "ansatz", "smallest_size", "window", "disorder", "p_value")
 
 
 def cuts(curves: Curves, centre: float, *, quick: bool = False) -> tuple[Cut, ...]:

@@ -7,10 +7,12 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, field
+from typing import Any
 
 from driftline import numerals
 from driftline.cautions import CROSSES, ESTABLISHED, POOR_P, Case, Caution, cautions
 from driftline.collapse import averaged
+from driftline.plain import attributes
 from driftline.scaling.forms import SizeIndependent
 from driftline.separation import THRESHOLD
 
@@ -49,6 +51,11 @@ class Verdict:
     probability_drift: float | None
     warnings: tuple[Caution, ...] = ()
     false_alarm: dict[str, float] = field(default_factory=dict)
+
+    def to_dict(self) -> dict[str, Any]:
+        """The object ``verdict`` of `result.json`."""
+        known = ("code", "statement", "probability_transition", "probability_drift", "warnings", "false_alarm")
+        return attributes(self, *known)
 
 
 def judge(case: Case) -> Verdict:
