@@ -13,7 +13,8 @@ from hypothesis import strategies as st
 
 from driftline.curves import Curves
 from driftline.errors import ConfigurationError, InputError
-from driftline.readers import read, table
+from driftline.readers import read
+from driftline.readers.guard import MAX_TEXT
 from driftline.readers.write import replacing, write_csv, write_hdf5
 
 HEADER = "size,disorder,mean,error\n"
@@ -179,7 +180,7 @@ def test_whole_table(csv_fault, content, text):
         (b"\xef\xbb\xbfsize\r\xff", ", line 2: byte 0xff is not valid UTF-8; save the file as UTF-8"),
         (b"\x89PNG\r\n\x1a\n\0\0\0\rIHDR", ", line 3: there is a zero byte, so this is binary data or UTF-16; "
          "save the table as text in UTF-8"),
-        (b"\x1f\x8b\x08\0rest", ": the file is compressed with gzip; unpack it first"),
+        (b"\x1f\x8b\x08\0rest", ": the gzip file is truncated or damaged; copy or pack it again"),
         (b"PK\x03\x04rest", ": the file is a zip archive or a spreadsheet; save the table as CSV"),
     ],
 )  # fmt: skip
@@ -238,10 +239,10 @@ def test_file_that_may_not_be_read(tmp_path, monkeypatch):
     path.write_text(HEADER + EIGHT + TWELVE)
 
     def refuse(reason: OSError):
-        def opened(self, *args, **kwargs):
+        def opened(*args, **kwargs):
             raise reason
 
-        monkeypatch.setattr(Path, "open", opened)
+        monkeypatch.setattr(os, "open", opened)
 
     refuse(PermissionError(13, "Permission denied"))
     assert fault(path) == "run.csv: the file may not be read; check its permissions"
@@ -253,7 +254,7 @@ def test_huge_table_is_refused_before_it_is_read(tmp_path):
     """A sparse file beyond the limit is refused by its size alone."""
     path = tmp_path / "run.csv"
     with path.open("wb") as stream:
-        stream.truncate(table.MAX_BYTES + 1)
+        stream.truncate(MAX_TEXT + 1)
     expected = (
         "run.csv: the file is larger than 500 MB; a summary has one row per size and disorder, so average over "
         "realisations first"
@@ -422,7 +423,7 @@ def test_hdf5_of_absurd_shape_is_refused_before_it_is_read(h5_fault):
 
         return change
 
-    text = "run.h5: the file declares 3000000000012 numbers, but a summary of at most 10000000 can be read"
+    text = "run.h5, /curves/8/disorder: the dataset declares 1000000000000 numbers, but at most 10000000 can be read"
     assert h5_fault(declared((10**12,), (1000,))) == text
     text = "run.h5, /curves/8/disorder: a chunk of more than 10000000 numbers is too large to be read"
     assert h5_fault(declared((5,), (10**8,))) == text

@@ -7,21 +7,21 @@ of where the numbers came from) is done here once.
 from __future__ import annotations
 
 import hashlib
+import io
 import math
 import re
 from abc import ABC, abstractmethod
-from collections.abc import Iterable, Iterator, Mapping, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from contextlib import contextmanager
 from dataclasses import dataclass, fields
 from difflib import get_close_matches
 from pathlib import Path
-from typing import Any, ClassVar
+from typing import Any, ClassVar, cast
 
 from driftline.curves import LARGEST, Curve, Curves, Labels
 from driftline.errors import InputError
-
-#: Most numbers one summary may hold. Real ones hold hundreds; the limit keeps a hostile file from filling the memory.
-MAX_NUMBERS = 10_000_000
+from driftline.readers.guard.files import opened
+from driftline.wording import listed, shown
 
 NEEDED = ("size", "disorder", "mean", "error")
 OPTIONAL = ("samples",)
@@ -96,17 +96,17 @@ class Layout(ABC):
             If the file cannot be used.
         """
 
-    def fingerprint(self, path: Path) -> str:
+    def fingerprint(self, path: Path, place: str) -> str:
         """SHA-256 of what is read, in hexadecimal."""
-        with path.open("rb") as stream:
-            return hashlib.file_digest(stream, "sha256").hexdigest()
+        with opened(path, place) as stream:
+            return hashlib.file_digest(cast("io.BufferedReader", stream), "sha256").hexdigest()
 
     def read(self, path: Path, place: str, labels: Mapping[str, Any]) -> Curves:
         """The curves at `path`, with `labels` put over those of the file and the origin recorded."""
         found = self.contents(path, place)  # before the hash, which would take long on a file too large to be read
         origin = {
             "path": place,
-            "sha256": self.fingerprint(path),
+            "sha256": self.fingerprint(path, place),
             "layout": self.name,
             "columns": dict(found.columns),
             "rows": found.rows,
@@ -126,18 +126,6 @@ def located(place: str) -> Iterator[None]:
     except InputError as fault:
         inner = fault.where if fault.where not in (None, "curves", "labels") else None
         raise InputError(fault.problem, where=f"{place}, {inner}" if inner else place) from fault
-
-
-def shown(text: str, *, longest: int = 30) -> str:
-    """`text` in quotes, shortened, with unprintable characters escaped, for use inside a sentence."""
-    return repr(text if len(text) <= longest else text[: longest - 3] + "...")
-
-
-def listed(names: Iterable[str], *, most: int = 12) -> str:
-    """Names as a list for a sentence: commas, shortened names, and a count of what does not fit."""
-    every = [name if len(name) <= 30 and name.isprintable() else shown(name)[1:-1] for name in names]
-    rest = f" and {len(every) - most} more" if len(every) > most else ""
-    return ", ".join(every[:most]) + rest
 
 
 def number(text: str, where: str) -> float:

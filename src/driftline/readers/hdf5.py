@@ -14,9 +14,6 @@ links and storage that lead out of it are refused, and shapes are checked before
 
 from __future__ import annotations
 
-import math
-from collections.abc import Iterator
-from contextlib import contextmanager
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -27,17 +24,24 @@ from driftline.curves import Curve
 from driftline.errors import InputError
 from driftline.readers.base import (
     LABEL_NAMES,
-    MAX_NUMBERS,
     NUMERIC_LABELS,
     Contents,
     Layout,
     check_columns,
     label,
-    listed,
     located,
     number,
-    shown,
 )
+from driftline.readers.guard import (
+    MAX_NUMBERS,
+    attribute,
+    check_dataset,
+    hdf5_signed,
+    member,
+    open_hdf5,
+    refuse_foreign_values,
+)
+from driftline.wording import listed, shown
 
 if TYPE_CHECKING:
     import h5py  # imported inside the functions that need it: nobody else should wait for it
@@ -45,7 +49,6 @@ if TYPE_CHECKING:
 FORMAT = "driftline-curves/1"
 VECTORS = ("disorder", "mean", "error", "samples")
 MAX_SIZES = 10_000
-_SIGNATURE = b"\x89HDF\r\n\x1a\n"
 _SUFFIXES = (".h5", ".hdf5", ".hdf")
 
 
@@ -57,15 +60,11 @@ class Hdf5Layout(Layout):
 
     def recognises(self, path: Path) -> bool:
         """By the signature of HDF5, or by the name of a file that claims to be one."""
-        return _signed(path) or path.suffix.lower() in _SUFFIXES
+        return hdf5_signed(path, str(path)) or path.suffix.lower() in _SUFFIXES
 
     def contents(self, path: Path, place: str) -> Contents:
         """Read the file; see `Layout.contents`."""
-        import h5py
-
-        if not _signed(path):
-            raise InputError("the file is named as HDF5 but is not; give it the name of its format", where=place)
-        with _damage(place), h5py.File(path, "r") as file:
+        with open_hdf5(path, place) as file:
             labels, notes = _labels(file, place)
             groups = _groups(file, place)
             _check_total(groups, place)
@@ -78,34 +77,6 @@ class Hdf5Layout(Layout):
             used = [name for name in (*VECTORS, "covariance") if any(name in group for group in groups.values())]
         columns = {"size": "/curves/<size>", **{name: f"/curves/<size>/{name}" for name in used}}
         return Contents(curves, labels, columns, rows, notes)
-
-
-def _signed(path: Path) -> bool:
-    """Whether the signature stands at byte 0, 512, 1024, 2048, ... (HDF5 file format specification, III.A)."""
-    if not path.is_file():
-        return False
-    size, offset = path.stat().st_size, 0
-    with path.open("rb") as stream:
-        while offset < size:
-            stream.seek(offset)
-            if stream.read(len(_SIGNATURE)) == _SIGNATURE:
-                return True
-            offset = 2 * offset or 512
-    return False
-
-
-@contextmanager
-def _damage(place: str) -> Iterator[None]:
-    """Turn what h5py raises on a broken file into one sentence; it raises many kinds, depending on what is broken."""
-    try:
-        yield
-    except InputError:
-        raise
-    except (OSError, RuntimeError, KeyError, ValueError, TypeError, AttributeError, MemoryError) as reason:
-        if isinstance(reason, BlockingIOError):
-            raise InputError("another program is writing the file; try again when it is done", where=place) from reason
-        problem = "the HDF5 file is truncated or damaged; copy or write it again"
-        raise InputError(problem, where=place) from reason
 
 
 def _labels(file: h5py.File, place: str) -> tuple[dict[str, str | float | None], list[str]]:
@@ -125,22 +96,15 @@ def _labels(file: h5py.File, place: str) -> tuple[dict[str, str | float | None],
 
 def _attribute(file: h5py.File, name: str, where: str) -> str | float:
     kind = "a number" if name in NUMERIC_LABELS else "text"
-    handle = file.attrs.get_id(name)
-    if handle.shape != ():  # before reading: an attribute may declare any size
-        raise InputError(f"the attribute must be {kind}, not an array", where=where)
-    value = file.attrs[name]
-    if isinstance(value, bytes):
-        value = value.decode("utf-8")
-    if isinstance(value, str):
-        return value
-    if kind == "text" or not np.issubdtype(np.asarray(value).dtype, np.number) or np.iscomplexobj(value):
-        raise InputError(f"the attribute must be {kind}", where=where)
-    return float(value)
+    value = attribute(file, name, where, kind=kind)
+    if isinstance(value, float) and kind == "text":
+        raise InputError("the attribute must be text", where=where)
+    return value
 
 
 def _groups(file: h5py.File, place: str) -> dict[float, h5py.Group]:
     """Groups by size."""
-    top = _member(file, "curves", place, "/curves")
+    top = member(file, "curves", f"{place}, /curves")
     found = listed(file) or "nothing"
     if not _is_group(top):
         raise InputError(f"there is no group /curves; the file holds {found}", where=place)
@@ -152,7 +116,7 @@ def _groups(file: h5py.File, place: str) -> dict[float, h5py.Group]:
         size = _size(name, where)
         if size in groups:
             raise InputError(f"size {size:g} occurs twice; put its points into one group", where=where)
-        group = _member(top, name, place, f"/curves/{listed([name])}")
+        group = member(top, name, where)
         if not _is_group(group):
             raise InputError("this must be a group with the datasets of one size", where=where)
         groups[size] = group
@@ -175,19 +139,6 @@ def _is_group(item: Any) -> bool:
     return isinstance(item, h5py.Group)
 
 
-def _member(group: h5py.Group, name: str, place: str, shown_path: str) -> Any:
-    """The member of that name, or None; links are refused because they may lead to any other file or nowhere."""
-    import h5py
-
-    link = group.get(name, getlink=True)
-    if link is None:
-        return None
-    if not isinstance(link, h5py.HardLink):
-        problem = "this is a link to another place, which is not followed; store the data themselves"
-        raise InputError(problem, where=f"{place}, {shown_path}")
-    return group[name]
-
-
 def _check_total(groups: dict[float, h5py.Group], place: str) -> None:
     """Check every dataset, and how many numbers they declare together, before any of them is read."""
     total = 0
@@ -195,7 +146,7 @@ def _check_total(groups: dict[float, h5py.Group], place: str) -> None:
         where = f"{place}, {group.name}"
         check_columns(list(group), where, word="dataset", needed=VECTORS[:3])
         for name in (*VECTORS, "covariance"):
-            item = _member(group, name, place, f"{group.name}/{name}")
+            item = member(group, name, f"{place}, {group.name}/{name}")
             if item is not None:
                 total += _checked_dataset(item, name, f"{place}, {group.name}/{name}")
         lengths = {group[name].shape[0] for name in VECTORS if name in group}
@@ -213,18 +164,12 @@ def _checked_dataset(item: Any, name: str, where: str) -> int:
 
     if not isinstance(item, h5py.Dataset):
         raise InputError("this must be a dataset of numbers", where=where)
+    refuse_foreign_values(item, where)
     wanted = 2 if name == "covariance" else 1
     if item.shape is None or len(item.shape) != wanted:
         found = "nothing" if item.shape is None else f"an array of shape {item.shape}"
         raise InputError(f"this must be an array with {wanted} dimension{'s' * (wanted > 1)}, not {found}", where=where)
-    if item.dtype.kind not in "iuf":
-        raise InputError("this must be real numbers, not text, logical values or a compound type", where=where)
-    if item.external or item.is_virtual:
-        problem = "the values lie in another file, which is not followed; store the data themselves"
-        raise InputError(problem, where=where)
-    if math.prod(item.chunks or (1,)) > MAX_NUMBERS:
-        raise InputError(f"a chunk of more than {MAX_NUMBERS} numbers is too large to be read", where=where)
-    return math.prod(item.shape)
+    return check_dataset(item, where)
 
 
 def _curve(size: float, group: h5py.Group, place: str) -> tuple[Curve, list[str]]:

@@ -14,10 +14,9 @@ The standard library's csv module splits each line on its own: unlike a columnar
 
 from __future__ import annotations
 
-import codecs
 import csv
 import re
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
 
@@ -33,26 +32,14 @@ from driftline.readers.base import (
     Layout,
     check_columns,
     label,
-    listed,
     located,
     number,
-    shown,
     whole_number,
 )
+from driftline.readers.guard import MAX_NUMBERS, lines
+from driftline.wording import listed, shown
 
-MAX_BYTES = 500_000_000  # ten million rows of fifty characters
-MAX_LINE = 100_000  # characters; below the limit at which csv gives up on a field
-
-_LINE_END = re.compile(r"\r\n|\n|\r")  # str.splitlines would also split at form feeds and Unicode separators
 _LABEL = re.compile(r"#+\s*([A-Za-z_]\w*)\s*:(.*)", re.ASCII)
-_FOREIGN = (
-    (codecs.BOM_UTF32_LE, "is in UTF-32; save it as UTF-8"),  # before UTF-16, whose mark it begins with
-    (codecs.BOM_UTF32_BE, "is in UTF-32; save it as UTF-8"),
-    (codecs.BOM_UTF16_LE, "is in UTF-16; save it as UTF-8"),
-    (codecs.BOM_UTF16_BE, "is in UTF-16; save it as UTF-8"),
-    (b"\x1f\x8b", "is compressed with gzip; unpack it first"),
-    (b"PK\x03\x04", "is a zip archive or a spreadsheet; save the table as CSV"),
-)
 _SEPARATORS = ((";", "semicolons"), ("\t", "tabs"), (None, "blanks"))
 
 
@@ -68,7 +55,7 @@ class TableLayout(Layout):
 
     def contents(self, path: Path, place: str) -> Contents:
         """Read the table; see `Layout.contents`."""
-        table = _Table.of_lines(_lines(path, place), place)
+        table = _Table.of_lines(lines(path, place), place)
         points = [_point(table, row, place) for row in table.rows]
         _refuse_repeats(points, place)
         curves, notes = _curves(points, place)
@@ -89,9 +76,9 @@ class _Table:
     notes: list[str] = field(default_factory=list)
 
     @classmethod
-    def of_lines(cls, lines: Sequence[str], place: str) -> _Table:
+    def of_lines(cls, lines: Iterable[tuple[int, str]], place: str) -> _Table:
         table, comment, last = cls(place), (0, ""), 0
-        for count, line in enumerate(lines, start=1):
+        for count, line in lines:
             text = line.strip()
             if text.startswith("#"):
                 if not table.columns:
@@ -153,6 +140,9 @@ class _Table:
                 f"({listed(name or 'without a name' for name in self.columns)}); complete or remove the row",
                 where=f"{self.place}, line {count}",
             )
+        if len(self.rows) * len(cells) > MAX_NUMBERS:
+            problem = f"the table holds more than {MAX_NUMBERS} numbers; average over realisations first"
+            raise InputError(problem, where=self.place)
         self.rows.append((count, cells))
 
 
@@ -166,39 +156,7 @@ class _Point:
     samples: int | None
 
 
-def _lines(path: Path, place: str) -> list[str]:
-    if path.stat().st_size > MAX_BYTES:
-        raise InputError(
-            f"the file is larger than {MAX_BYTES / 1e6:.0f} MB; a summary has one row per size and disorder, so "
-            "average over realisations first",
-            where=place,
-        )
-    raw = path.read_bytes()
-    for mark, problem in _FOREIGN:
-        if raw.startswith(mark):
-            raise InputError(f"the file {problem}", where=place)
-    if (zero := raw.find(b"\0")) >= 0:
-        problem = "there is a zero byte, so this is binary data or UTF-16; save the table as text in UTF-8"
-        raise InputError(problem, where=f"{place}, line {_line_of(raw, zero)}")
-    try:
-        text = raw.decode("utf-8-sig")
-    except UnicodeDecodeError as reason:
-        offset = reason.start + (len(codecs.BOM_UTF8) if raw.startswith(codecs.BOM_UTF8) else 0)
-        raise InputError(
-            f"byte 0x{raw[offset]:02x} is not valid UTF-8; save the file as UTF-8",
-            where=f"{place}, line {_line_of(raw, offset)}",
-        ) from reason
-    return _LINE_END.split(text)
-
-
-def _line_of(raw: bytes, offset: int) -> int:
-    before = raw[:offset]
-    return 1 + before.count(b"\n") + before.count(b"\r") - before.count(b"\r\n")
-
-
 def _split(line: str, where: str) -> list[str]:
-    if len(line) > MAX_LINE:
-        raise InputError(f"the line is longer than {MAX_LINE} characters; this is not a summary table", where=where)
     try:
         return [cell.strip() for cell in next(csv.reader([line], strict=True, skipinitialspace=True))]
     except csv.Error as reason:
