@@ -14,7 +14,7 @@ from analyses import OPENING, made_analysis, made_curves
 import driftline
 from driftline import analysis as analysis_module
 from driftline.cli import main
-from driftline.progress import part, terminal_progress
+from driftline.progress import part
 from driftline.report import writers
 from driftline.report.summary import summary
 from driftline.simulate import PowerLawTruth, simulate
@@ -247,17 +247,6 @@ def test_bugs_are_not_hidden(data, monkeypatch):
         main(["analyse", str(data)])
 
 
-def test_colour_only_where_it_is_wanted(data, prepared, monkeypatch, capsys):
-    """A terminal gets colours, unless NO_COLOR is set."""
-    monkeypatch.setattr("click.utils.should_strip_ansi", lambda *_: False)
-    monkeypatch.delenv("NO_COLOR", raising=False)
-    assert main(["analyse", str(data)]) == 0
-    assert capsys.readouterr().out.startswith("\x1b[31m\x1b[1mWarning: no evidence")
-    monkeypatch.setenv("NO_COLOR", "1")
-    assert main(["analyse", str(data), "--force"]) == 0
-    assert "\x1b" not in capsys.readouterr().out
-
-
 def test_inspect_prints_what_is_read_and_writes_nothing(data, capsys):
     """The report on the input names file and sizes."""
     assert main(["inspect", data.name]) == 0
@@ -324,22 +313,6 @@ def test_the_written_configuration_reproduces_the_result(real):
     old, new = ((place / name / "result.json").read_text().split('"timing"')[0] for name in ("data-driftline", "again"))
     assert old == new
     assert len(old) > 1000
-
-
-def test_progress_only_on_a_terminal(monkeypatch, capsys):
-    """Standard error stays empty when nobody watches; on a terminal it says what is being done and how far it is."""
-    with terminal_progress() as progress:
-        assert progress is None
-    assert part(progress, 0.0, 0.5) is None
-    monkeypatch.setattr(sys.stderr, "isatty", lambda: True)
-    monkeypatch.setenv("FORCE_COLOR", "1")
-    monkeypatch.setenv("TERM", "xterm")
-    monkeypatch.setenv("COLUMNS", "100")
-    with terminal_progress() as progress:
-        part(progress, 0.2, 0.6)("finding crossings", 0.5)
-    out, err = capsys.readouterr()
-    assert out == ""
-    assert "finding crossings" in err
 
 
 def test_progress_of_a_part():

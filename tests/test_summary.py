@@ -5,7 +5,8 @@ from analyses import CAUTION, OPENING, made_analysis, made_curves
 
 from driftline.drift import LAWS
 from driftline.report import rows
-from driftline.report.summary import WIDTH, lines, summary
+from driftline.report.blocks import WIDTH, lines
+from driftline.report.summary import blocks, summary
 from driftline.scaling.ansatz import available
 
 
@@ -26,8 +27,8 @@ def test_headline_numbers():
     """Value with error in brackets, both intervals and the systematic part, on one line each."""
     # the quantiles of a normal distribution at 16 % and 2.5 % are 0.994 and 1.960 standard deviations away
     text = summary(made_analysis())
-    assert "  W_c (t)   16.53(12)  [16.41, 16.65]  [16.29, 16.77]  +-0.05\n" in text
-    assert "  nu        1.570(50)  [1.520, 1.620]  [1.472, 1.668]  -\n" in text
+    assert "  W_c (t)   16.53(12)   [16.41, 16.65]  [16.29, 16.77]  +-0.05\n" in text
+    assert "  nu         1.570(50)  [1.520, 1.620]  [1.472, 1.668]    -\n" in text
     assert "Crossover, from power-law:corrected\n" in text
 
 
@@ -35,9 +36,9 @@ def test_collapse_table_has_the_best_first():
     """Ansätze are ordered by evidence, which is given relative to the best."""
     text = summary(made_analysis())
     # e / (1 + e) = 0.731 from a difference of one in ln Z
-    assert "  power-law:corrected  0.0   0.73 " in text
+    assert "  power-law:corrected   0.0  0.73 " in text
     assert "  power-law            -1.0  0.27 " in text
-    assert text.index("  power-law:corrected  0.0") < text.index("  power-law            -1.0")
+    assert text.index("  power-law:corrected   0.0") < text.index("  power-law            -1.0")
 
 
 def test_warnings_say_what_to_do():
@@ -71,7 +72,7 @@ def test_no_crossing_at_all():
 def test_lines_and_text_agree():
     """What is coloured in the terminal is the same text as the file."""
     analysis = made_analysis()
-    assert "\n".join(line for _, line in lines(analysis)) + "\n" == summary(analysis)
+    assert "\n".join(line for _, line in lines(blocks(analysis))) + "\n" == summary(analysis)
 
 
 def test_symbols_as_plain_text():

@@ -9,12 +9,15 @@ Everything numerical is imported inside the commands, so that ``--help`` is imme
 from __future__ import annotations
 
 import io
+import os
 import sys
 from collections.abc import Sequence
 
 import click
 
+from driftline.cli.completion import complete
 from driftline.cli.lazy import LazyGroup
+from driftline.cli.screen import safe
 from driftline.errors import DriftlineError
 
 DONE, BAD_INPUT, BAD_USAGE, INTERRUPTED = 0, 1, 2, 130
@@ -32,20 +35,28 @@ def main(argv: Sequence[str] | None = None) -> int:
         Arguments without the program's name; those of the process by default.
     """
     _survive_odd_encodings()
+    if (answered := complete(driftline)) is not None:
+        return answered
     try:
         with driftline.make_context("driftline", list(sys.argv[1:] if argv is None else argv)) as context:
             driftline.invoke(context)
+        sys.stdout.flush()  # so that a full disk or a closed pipe shows here, not when the interpreter ends
     except click.exceptions.Exit as finished:
         return finished.exit_code
     except click.ClickException as wrong:
-        wrong.show()
+        shown = io.StringIO()
+        wrong.show(shown)
+        click.echo(safe(shown.getvalue()), err=True, nl=False)
         return wrong.exit_code
     except DriftlineError as wrong:
-        click.echo(f"driftline: {wrong}", err=True)
+        click.echo(f"driftline: {safe(str(wrong))}", err=True)
         return BAD_INPUT
     except (KeyboardInterrupt, click.Abort):
         click.echo("driftline: interrupted, nothing was written", err=True)
         return INTERRUPTED
+    except BrokenPipeError:
+        _stop_writing()  # whoever read the output has seen enough, as `head` does
+        return DONE
     return DONE
 
 
@@ -60,3 +71,8 @@ def _survive_odd_encodings() -> None:
     for stream in (sys.stdout, sys.stderr):
         if isinstance(stream, io.TextIOWrapper):
             stream.reconfigure(errors="replace")
+
+
+def _stop_writing() -> None:
+    """Send what is left of the output nowhere, or the interpreter would complain when it ends."""
+    os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import os
 from pathlib import Path
 from typing import Any
 
@@ -13,25 +12,43 @@ from driftline.cli.options import (
     config_option,
     cores,
     data_path,
+    examples,
+    force_option,
     jobs_option,
+    json_option,
+    out_option,
+    quick_option,
+    quiet_option,
     seed_option,
     selection_options,
 )
+from driftline.cli.screen import say, show, written
 
 WRITING_FROM = 0.93  # share of the wall time after which only files are written, for the progress bar
+EXAMPLES = examples(
+    "driftline analyse curves.csv",
+    "driftline analyse curves.h5 --quick --out first-look",
+    "driftline analyse curves.csv --window 14 19 --smallest-size 8",
+    "driftline analyse curves.csv --ansatz power-law --ansatz power-law:corrected",
+    "driftline analyse curves.csv --json | jq .verdict.code",
+)
 
 
-@click.command()
+@click.command(epilog=EXAMPLES)
 @data_path()
 @config_option()
-@click.option("--out", type=click.Path(path_type=Path), metavar="DIR", help="Output folder [default: NAME-driftline].")
+@out_option("Output folder [default: NAME-driftline].")
 @ansatz_option()
 @selection_options
 @seed_option()
-@click.option("--quick", is_flag=True, default=None, help="A first look: shorter chains, fewer refits.")
+@quick_option()
 @jobs_option()
-@click.option("--force", is_flag=True, help="Replace an earlier output folder.")
-def analyse(path: Path, config: Path | None, out: Path | None, force: bool, **options: Any) -> None:
+@force_option()
+@quiet_option()
+@json_option("Print result.json and nothing else; a folder is then written only if --out names one.")
+def analyse(
+    path: Path, config: Path | None, out: Path | None, force: bool, quiet: bool, as_json: bool, **options: Any
+) -> None:
     """The whole job, from curves to a verdict.
 
     Reads the curves in PATH, finds crossings and their drift, collapses them under each ansatz, judges, draws, and
@@ -40,38 +57,36 @@ def analyse(path: Path, config: Path | None, out: Path | None, force: bool, **op
     from driftline.report.folder import check_folder, default_folder
     from driftline.settings import Settings
 
-    folder = default_folder(path) if out is None else out
+    folder = default_folder(path) if out is None and not as_json else out
     options["ansatze"] = options["ansatze"] or None
     settings = Settings.resolve(config, options, {"jobs": cores()})
-    check_folder(folder, force=force)
-    _analyse(path, settings, folder, force)
+    if folder is not None:
+        check_folder(folder, force=force)
+    analysis = _analysed(path, settings, folder, force, quiet)
+    if as_json:
+        from driftline.report.record import to_json
+
+        say(to_json(analysis))
+    elif not quiet:
+        from driftline.report.summary import blocks
+
+        show(blocks(analysis))
+        written(folder)
 
 
-def _analyse(path: Path, settings: Any, folder: Path, force: bool) -> None:
+def _analysed(path: Path, settings: Any, folder: Path | None, force: bool, quiet: bool) -> Any:
+    """The analysis, and its files where there is a folder to write."""
     from driftline.analysis import analyse
     from driftline.progress import part, terminal_progress
     from driftline.readers import read
-    from driftline.report.writers import write_report
 
     curves = read(path, **settings.labels)
     settings.select(curves)  # says what is wrong with a window before anything else happens
-    with terminal_progress() as progress:
-        analysis = analyse(curves, settings=settings, progress=part(progress, 0.0, WRITING_FROM))
-        write_report(analysis, folder, force=force, progress=part(progress, WRITING_FROM, 1.0))
-    _print_summary(analysis)
-    click.echo(f"\nWritten to {folder}{os.sep}")
+    with terminal_progress(quiet=quiet) as progress:
+        end = 1.0 if folder is None else WRITING_FROM
+        analysis = analyse(curves, settings=settings, progress=part(progress, 0.0, end))
+        if folder is not None:
+            from driftline.report.writers import write_report
 
-
-def _print_summary(analysis: Any) -> None:
-    from driftline.report import summary
-
-    colours: dict[str, dict[str, Any]] = {
-        summary.GOOD: {"fg": "green", "bold": True},
-        summary.BAD: {"fg": "red", "bold": True},
-        summary.HEADING: {"bold": True},
-        summary.WARNING: {"fg": "yellow"},
-        summary.TEXT: {},
-    }
-    plain = bool(os.environ.get("NO_COLOR"))  # https://no-color.org: any text that is not empty
-    for role, line in summary.lines(analysis):
-        click.echo(line if plain else click.style(line, **colours[role]) if colours[role] else line)
+            write_report(analysis, folder, force=force, progress=part(progress, WRITING_FROM, 1.0))
+    return analysis

@@ -8,6 +8,8 @@ from typing import Any
 
 import click
 
+from driftline.settings import suggestion
+
 
 class LazyGroup(click.Group):
     """Commands by name: ``NAME`` is the function ``NAME`` in the module ``PACKAGE.NAME``.
@@ -35,3 +37,13 @@ class LazyGroup(click.Group):
         command = getattr(import_module(f"{self.package}.{cmd_name}"), cmd_name)
         assert isinstance(command, click.Command)
         return command
+
+    def resolve_command(
+        self, ctx: click.Context, args: list[str]
+    ) -> tuple[str | None, click.Command | None, list[str]]:
+        """As click does it, with a suggestion for a name that is not known (older versions of click have none)."""
+        name = args[0]
+        known = name in self.names or name.startswith("-") or ctx.resilient_parsing
+        if not known:
+            ctx.fail(f"there is no command {name!r}; {suggestion(name, self.names)}")
+        return super().resolve_command(ctx, args)

@@ -9,8 +9,15 @@ from typing import Any, TypeVar
 
 import click
 
+from driftline.cli.completion import Name, Names, ansatz_names
+
 Function = TypeVar("Function", bound=Callable[..., Any])
 Decorator = Callable[[Any], Any]
+
+
+def examples(*lines: str) -> str:
+    """The end of a help text: commands as one would type them, which click shall not wrap."""
+    return "\b\nExamples:\n" + "\n".join(f"  {line}" for line in lines)
 
 
 def data_path(*, required: bool = True) -> Decorator:
@@ -23,10 +30,19 @@ def config_option(text: str = "TOML file with settings.") -> Decorator:
     return click.option("--config", type=click.Path(path_type=Path), metavar="FILE", help=text)
 
 
+def out_option(text: str) -> Decorator:
+    """The option --out."""
+    return click.option("--out", type=click.Path(path_type=Path), metavar="DIR", help=text)
+
+
 def ansatz_option() -> Decorator:
     """The option --ansatz, which may be repeated."""
-    text = "Scaling ansatz; may be given repeatedly."
-    return click.option("--ansatz", "ansatze", multiple=True, metavar="NAME", help=text)
+    return names_option("--ansatz", "ansatze", ansatz_names, "Scaling ansatz; may be given repeatedly.")
+
+
+def names_option(option: str, parameter: str, names: Names, text: str) -> Decorator:
+    """An option that takes names out of a registry and may be repeated; the shell completes them."""
+    return click.option(option, parameter, type=Name(names), multiple=True, metavar="NAME", help=text)
 
 
 def selection_options(function: Function) -> Function:
@@ -41,9 +57,30 @@ def seed_option() -> Decorator:
     return click.option("--seed", type=int, metavar="N", help="Seed of the random numbers [default: 0].")
 
 
+def quick_option() -> Decorator:
+    """The option --quick."""
+    text = "A first look: shorter chains, fewer refits."
+    return click.option("--quick", is_flag=True, default=None, help=text)
+
+
 def jobs_option() -> Decorator:
     """The option --jobs."""
     return click.option("--jobs", type=int, metavar="N", help="Worker processes [default: all cores]; same numbers.")
+
+
+def force_option(text: str = "Replace an earlier output folder.") -> Decorator:
+    """The option --force."""
+    return click.option("--force", is_flag=True, help=text)
+
+
+def quiet_option() -> Decorator:
+    """The option --quiet."""
+    return click.option("-q", "--quiet", is_flag=True, help="Print nothing but errors; no progress either.")
+
+
+def json_option(text: str) -> Decorator:
+    """The option --json."""
+    return click.option("--json", "as_json", is_flag=True, help=text)
 
 
 def cores() -> int:

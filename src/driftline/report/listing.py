@@ -9,7 +9,7 @@ import numpy as np
 
 from driftline.curves import Curve, Curves
 from driftline.errors import ConfigurationError
-from driftline.report.summary import WIDTH
+from driftline.report.blocks import WIDTH
 from driftline.scaling.ansatz import available, compose, parse_ansatz
 from driftline.scaling.forms import Form
 

@@ -2,24 +2,15 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
 from functools import partial
 from typing import TYPE_CHECKING
 
 from driftline import numerals
 from driftline.drift import limit_text
+from driftline.report.blocks import Table as Table
 
 if TYPE_CHECKING:
     from driftline.analysis import Analysis
-
-
-@dataclass(frozen=True)
-class Table:
-    """A heading, column names, and rows of text."""
-
-    heading: str
-    columns: tuple[str, ...]
-    rows: tuple[tuple[str, ...], ...]
 
 
 def symbol(text: str) -> str:
