@@ -39,7 +39,6 @@ Progress = Callable[[str, float], None]
 UNDERSMOOTHING = 1.0
 EVIDENCE_DRAWS = 6000
 PREDICTION_DRAWS = 400
-QUICK_DRAWS = 2000
 POSTERIOR_DRAWS = 4000
 CHECK_DRAWS = 100
 EFFECTIVE_LEAST = 400.0  # ends of 95 % intervals of a normal are then known to 0.13 standard deviations
@@ -267,14 +266,13 @@ def fit_collapse(
     tell(f"{form.name}: searching", 0.0)
     mixture, draws = _adapted(target, rng)
     tell(f"{form.name}: sampling", 0.1)
-    part = _range(tell, f"{form.name}: sampling", 0.1, 0.8)
-    mixture, health = _sampled(target, mixture, draws, rng, quick, part)
-    count = QUICK_DRAWS if quick else EVIDENCE_DRAWS
-    draws = sample_until(target, mixture, count, EFFECTIVE_LEAST, rng)
+    health = SamplerHealth("importance", draws.effective, None, True)
+    if not quick:
+        part = _range(tell, f"{form.name}: sampling", 0.1, 0.8)
+        mixture, health = _chained(target, draws, rng, part)
+        draws = sample_until(target, mixture, EVIDENCE_DRAWS, EFFECTIVE_LEAST, rng)
     tell(f"{form.name}: parameters", 0.85)
-    log_tau = Interval.of_draws(draws.places[:, -2], draws.weights)
-    held = replace(target, log_tau=log_tau.median + UNDERSMOOTHING)
-    physical = sample_until(held, _adapted(held, rng)[0], count, EFFECTIVE_LEAST, rng)
+    held, physical = _physical(target, draws, rng, quick)
     tell(f"{form.name}: checking", 0.9)
     fit = _result(held, draws, physical, health, rng)
     if not extras:
@@ -293,7 +291,7 @@ def _held_out(target: Posterior, full: WeightedDraws, rng: np.random.Generator) 
     if target.curves.sizes.size <= MIN_SIZES:
         return None
     smaller = replace(target, left_out=largest.size)
-    draws = sample_until(smaller, _adapted(smaller, rng)[0], QUICK_DRAWS, EFFECTIVE_LEAST, rng)
+    _, draws = _adapted(smaller, rng)
     at = ~smaller.fitted
     predicted = smaller.predictions(draws.resample(PREDICTION_DRAWS, rng), rng)[:, at]
     mean, covariance = predicted.mean(axis=0), np.cov(predicted, rowvar=False)
@@ -334,22 +332,28 @@ def _adapted(target: Posterior, rng: np.random.Generator) -> tuple[Mixture, Weig
     return adapt(target, Mixture.of_modes(modes), rng)
 
 
-def _sampled(
-    target: Posterior,
-    mixture: Mixture,
-    draws: WeightedDraws,
-    rng: np.random.Generator,
-    quick: bool,
-    progress: Callable[[float], None],
+def _physical(
+    target: Posterior, draws: WeightedDraws, rng: np.random.Generator, quick: bool
+) -> tuple[Posterior, WeightedDraws]:
+    """The posterior with tau held at its undersmoothing value, and draws of it.
+
+    It differs from that with tau sampled by little, so its sampling starts from a mixture fitted to those `draws`.
+    """
+    log_tau = Interval.of_draws(draws.places[:, -2], draws.weights)
+    held = replace(target, log_tau=log_tau.median + UNDERSMOOTHING)
+    start = fit_mixture(np.delete(draws.places, -2, axis=1), draws.weights, rng)
+    mixture, physical = adapt(held, start, rng)
+    return held, physical if quick else sample_until(held, mixture, EVIDENCE_DRAWS, EFFECTIVE_LEAST, rng)
+
+
+def _chained(
+    target: Posterior, draws: WeightedDraws, rng: np.random.Generator, progress: Callable[[float], None]
 ) -> tuple[Mixture, SamplerHealth]:
-    """The mixture to take the evidence from, and the health of what it was fitted to."""
-    if quick:
-        return mixture, SamplerHealth("importance", draws.effective, None, True)
+    """A mixture fitted to a chain that starts from `draws`, and the health of that chain."""
     chain = run_chain(target, draws.resample(WALKERS, rng) + _jitter(draws, rng), rng, progress)
     thin = chain.draws[:: max(1, len(chain.draws) // 5000)]
     fitted = fit_mixture(thin, np.full(len(thin), 1 / len(thin)), rng)
-    health = SamplerHealth("chain", chain.effective, chain.autocorrelation, chain.converged)
-    return fitted, health
+    return fitted, SamplerHealth("chain", chain.effective, chain.autocorrelation, chain.converged)
 
 
 def _jitter(draws: WeightedDraws, rng: np.random.Generator) -> FloatArray:

@@ -31,9 +31,8 @@ import study  # first: it sets the number of threads
 from families import DISORDER, GRIDS, LABELS, LARGE_GRID, MIDDLE_NOISE
 from scipy.stats import chisquare
 
-from driftline.collapse import EFFECTIVE_LEAST, QUICK_DRAWS, _adapted, fit_collapse
+from driftline.collapse import _adapted, fit_collapse
 from driftline.curves import Curve, Curves
-from driftline.inference.importance import sample_until
 from driftline.scaling.ansatz import parse_ansatz
 from driftline.scaling.likelihood import CORRECTION_SD, Posterior
 
@@ -98,7 +97,7 @@ def answers(ansatz: str, seed: int) -> dict[str, Ranks]:
     found = {}
     for answer, log_tau in (("held", float(np.log(truth["tau"]))), ("sampled", None)):
         target = posterior(curves, ansatz, log_tau)
-        draws = sample_until(target, _adapted(target, rng)[0], QUICK_DRAWS, EFFECTIVE_LEAST, rng)
+        _, draws = _adapted(target, rng)
         places = target.values(draws.resample(4000, rng))
         found[answer] = ranked([p.name for p in target.parameters], places, truth, rng)
     fit = fit_collapse(curves, ansatz, seed=rng, quick=True, extras=False)

@@ -1,13 +1,13 @@
 """Evidence and weighted draws by importance sampling from a mixture of multivariate Student-t densities.
 
-The mixture is fitted to draws (of a chain, or of an earlier round of importance sampling: Cappe et al., Stat. Comput.
+The mixture is fitted to draws (of a chain, or of the earlier rounds of importance sampling: Cappe et al., Stat. Comput.
 18, 447 (2008)) and has heavier tails than the target, so the weights stay bounded; a broad component guards the tails.
 The health check is the effective sample size (sum w)^2 / sum w^2 (Kong, Liu, Wong, JASA 89, 278 (1994)).
 """
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -17,10 +17,13 @@ from driftline.curves import FloatArray
 from driftline.inference.modes import LogDensity, Mode
 
 DEGREES = 5.0  # of the t densities: finite fourth moments of the weights for Gaussian-tailed targets
-ROUNDS = 8
-ROUND_DRAWS = 1500
-ENOUGH = 0.4  # effective fraction at which adaptation stops
+ROUNDS = 12
+ROUND_DRAWS = 1000
+WANTED = 800.0  # effective draws at which adaptation stops: no single round of a thousand reaches it
+CHUNK = 256  # rows at once: their tables stay in the cache
 COMPONENTS = 4
+STEPS = 10  # of expectation-maximisation: a proposal need not be a converged fit
+LEAST_WEIGHT = 1e-6  # of the largest weight, below which a draw is left out of a fit
 MOST_REPEATS = 5
 BROAD_WEIGHT, BROAD_SCALE = 0.1, 3.0
 
@@ -61,14 +64,29 @@ class Mixture:
     def log_density(self, z: FloatArray) -> FloatArray:
         """Log density, shape (n,)."""
         d = z.shape[1]
-        terms = []
-        for weight, centre, factor in zip(self.weights, self.centres, self.factors, strict=True):
-            standard = np.linalg.solve(factor, (z - centre).T)
-            log_det = np.sum(np.log(np.diag(factor)))
-            distance = np.sum(standard**2, axis=0)
-            terms.append(np.log(weight) - log_det - 0.5 * (DEGREES + d) * np.log1p(distance / DEGREES))
         constant = gammaln((DEGREES + d) / 2) - gammaln(DEGREES / 2) - 0.5 * d * np.log(DEGREES * np.pi)
-        return np.asarray(logsumexp(np.array(terms), axis=0) + constant)
+        logs = self._of_components(z, lambda distance: -0.5 * (DEGREES + d) * np.log1p(distance / DEGREES))
+        return _log_sum(logs) + constant
+
+    def memberships(self, z: FloatArray) -> FloatArray:
+        """Probability of each component, taken as a Gaussian, at each place, shape (k, n)."""
+        logs = self._of_components(z, lambda distance: -0.5 * distance)
+        return np.exp(logs - _log_sum(logs))
+
+    def _of_components(self, z: FloatArray, profile: Callable[[FloatArray], FloatArray]) -> FloatArray:
+        """Log weight, volume and `profile` of the squared distance for each component, shape (k, n)."""
+        rows = []
+        for weight, centre, factor in zip(self.weights, self.centres, self.factors, strict=True):
+            standard = (z - centre) @ np.linalg.inv(factor).T
+            distance = np.einsum("ni,ni->n", standard, standard)
+            rows.append(np.log(weight) - np.sum(np.log(np.diag(factor))) + profile(distance))
+        return np.array(rows)
+
+
+def _log_sum(logs: FloatArray) -> FloatArray:
+    """Log of the sum of exponentials over the first axis; scipy's has ten times the overhead at these shapes."""
+    top = np.max(logs, axis=0)
+    return np.asarray(top + np.log(np.sum(np.exp(logs - top), axis=0)))
 
 
 @dataclass(frozen=True, eq=False)
@@ -113,8 +131,11 @@ class WeightedDraws:
 def importance_sample(target: LogDensity, mixture: Mixture, count: int, rng: np.random.Generator) -> WeightedDraws:
     """`count` draws of `mixture` weighted by ``target / mixture``."""
     places = mixture.draw(count, rng)
-    chunks = (target(places[i : i + 256]) for i in range(0, count, 256))
-    return WeightedDraws(places, np.concatenate(list(chunks)) - mixture.log_density(places))
+    return WeightedDraws(places, _in_chunks(target, places) - mixture.log_density(places))
+
+
+def _in_chunks(target: LogDensity, places: FloatArray) -> FloatArray:
+    return np.concatenate([target(places[i : i + CHUNK]) for i in range(0, len(places), CHUNK)])
 
 
 def sample_until(
@@ -135,20 +156,31 @@ def sample_until(
     return draws
 
 
-def adapt(target: LogDensity, mixture: Mixture, rng: np.random.Generator) -> tuple[Mixture, WeightedDraws]:
-    """Refit `mixture` to its own weighted draws until the weights are even enough; returns the last round as well."""
-    best = (mixture, importance_sample(target, mixture, ROUND_DRAWS, rng))
-    for _ in range(ROUNDS):
-        current, draws = best
-        if draws.effective > ENOUGH * draws.log_weights.size:
+def adapt(
+    target: LogDensity, mixture: Mixture, rng: np.random.Generator, *, wanted: float = WANTED
+) -> tuple[Mixture, WeightedDraws]:
+    """Draw, refit `mixture` to all draws so far, and so on until `wanted` draws are effective.
+
+    Returns the last mixture and the draws of all rounds.  These are weighted against the average of all mixtures drawn
+    from (deterministic mixture weights; Cornuet, Marin, Mira, Robert, Scand. J. Stat. 39, 798 (2012)): rounds that
+    missed a part of the target then do no harm once a later one has found it.  Draws that the next mixture was fitted to
+    are weighted once more, which biases the evidence by a few tenths of its error; `sample_until` has no such bias.
+    """
+    mixtures: list[Mixture] = []
+    places, logs = np.empty((0, mixture.centres.shape[1])), np.empty(0)
+    densities = np.empty((0, 0))  # of each mixture at each place
+    for last in range(ROUNDS):
+        mixtures.append(mixture)
+        fresh = mixture.draw(ROUND_DRAWS, rng)
+        above = np.array([each.log_density(fresh) for each in mixtures])
+        left = np.vstack([densities, mixture.log_density(places)[None]]) if last else np.empty((1, 0))
+        densities = np.hstack([left, above])
+        places, logs = np.vstack([places, fresh]), np.concatenate([logs, _in_chunks(target, fresh)])
+        draws = WeightedDraws(places, logs - _log_sum(densities) + np.log(len(mixtures)))
+        if draws.effective >= wanted:
             break
-        refitted = fit_mixture(draws.places, _tempered(draws), rng)
-        candidate = (refitted, importance_sample(target, refitted, ROUND_DRAWS, rng))
-        improved = candidate[1].effective > draws.effective
-        best = candidate if improved else (current, draws)
-        if not improved and draws.effective > 0.1 * draws.log_weights.size:
-            break
-    return best
+        mixture = fit_mixture(places, _tempered(draws), rng)
+    return mixtures[-1], draws
 
 
 def _tempered(draws: WeightedDraws) -> FloatArray:
@@ -170,6 +202,8 @@ def fit_mixture(places: FloatArray, weights: FloatArray, rng: np.random.Generato
     weights : array, shape (n,)
         Non-negative, summing to one.
     """
+    heavy = weights > LEAST_WEIGHT * weights.max()  # the rest moves nothing but takes the time
+    places, weights = places[heavy], weights[heavy] / np.sum(weights[heavy])
     n, d = places.shape
     mean = weights @ places
     spread = (places - mean).T @ ((places - mean) * weights[:, None])
@@ -177,23 +211,13 @@ def fit_mixture(places: FloatArray, weights: FloatArray, rng: np.random.Generato
     count = min(COMPONENTS, max(1, int(1 / np.sum(weights**2) / (20 * d))))
     centres = places[rng.choice(n, count, p=weights)] if count > 1 else mean[None]
     share, factors = np.full(count, 1 / count), np.tile(np.linalg.cholesky(spread), (count, 1, 1))
-    for _ in range(20 if count > 1 else 0):
-        belong = _memberships(Mixture(share, centres, factors), places) * weights[:, None]
-        share = belong.sum(axis=0)
+    for _ in range(STEPS if count > 1 else 0):
+        belong = Mixture(share, centres, factors).memberships(places) * weights
+        share = belong.sum(axis=1)
         alive = share > 0.02
-        belong, share = belong[:, alive], share[alive]
-        centres = (belong.T @ places) / share[:, None]
-        offsets = places[:, None] - centres
-        matrices = np.einsum("nk,nki,nkj->kij", belong, offsets, offsets) / share[:, None, None]
+        belong, share = belong[alive], share[alive]
+        centres = (belong @ places) / share[:, None]
+        offsets = places - centres[:, None]
+        matrices = np.matmul((offsets * belong[..., None]).swapaxes(1, 2), offsets) / share[:, None, None]
         factors = np.linalg.cholesky(matrices + 0.02 * spread)  # regularised towards the whole
     return Mixture(share / share.sum(), centres, factors).guarded()
-
-
-def _memberships(mixture: Mixture, z: FloatArray) -> FloatArray:
-    """Probability of each Gaussian component at each place, shape (n, k)."""
-    columns = []
-    for weight, centre, factor in zip(mixture.weights, mixture.centres, mixture.factors, strict=True):
-        standard = np.linalg.solve(factor, (z - centre).T)
-        columns.append(np.log(weight) - np.sum(np.log(np.diag(factor))) - 0.5 * np.sum(standard**2, axis=0))
-    logs = np.array(columns).T
-    return np.asarray(np.exp(logs - logsumexp(logs, axis=1, keepdims=True)))
