@@ -12,6 +12,7 @@ from typing import Any, Literal
 import numpy as np
 import numpy.typing as npt
 
+from driftline.covariance import doubt
 from driftline.errors import ConfigurationError, InputError
 
 FloatArray = npt.NDArray[np.float64]
@@ -129,8 +130,17 @@ class Curve:
 
     @property
     def noise(self) -> FloatArray:
-        """Covariance of the means, shape (n, n): the given one, or the squared errors on the diagonal."""
-        return np.diag(self.error**2) if self.covariance is None else self.covariance
+        """Covariance that estimators use, shape (n, n): the squared errors on the diagonal, or the given covariance.
+
+        The latter is multiplied by `driftline.covariance.doubt` where the number of realisations is known, since it is
+        then an estimate. The factor depends on how many points are in use, so it is no part of `covariance`.
+        """
+        if self.covariance is None:
+            return np.diag(self.error**2)
+        if self.samples is None:
+            return self.covariance
+        # harmonic mean: every variance is as uncertain as its own number of realisations makes it
+        return np.asarray(self.covariance * doubt(self.error.size, float(1 / np.mean(1 / self.samples))))
 
 
 @dataclass(frozen=True, eq=False)

@@ -12,39 +12,14 @@ from dataclasses import asdict, dataclass
 from typing import Any, Literal
 
 import numpy as np
-import numpy.typing as npt
 
-from driftline.curves import LARGEST, Curve, FloatArray
-from driftline.errors import ConfigurationError, InputError
+from driftline.curves import Curve, FloatArray
+from driftline.errors import InputError
+from driftline.readers.averages import Average, Estimate, chosen
+from driftline.readers.pairing import Pairing, pairing
+from driftline.readers.points import Block, Point, identical, merged
 
-IntArray = npt.NDArray[np.int64]
-
-AVERAGES = ("mean", "median", "log-mean")
-KINDS = ("numbers", "counts", "yes-no")
-
-
-@dataclass(frozen=True, eq=False)
-class Block:
-    """Raw values at one size and disorder.
-
-    Parameters
-    ----------
-    size, disorder : float
-        System size and disorder strength.
-    values : array, shape (n,) or (realisations, eigenstates)
-        One value for each realisation or row; in two dimensions, a row for each realisation.
-    realisation : array of int, shape (n,), or None
-        Label of the realisation behind each value or row. Those of one label are averaged first. Without labels every
-        value (or row) is a realisation of its own.
-    source : str
-        Where the values stood, for faults and for naming duplicates, e.g. ``"runs/L8/W1.0/r.dat"``.
-    """
-
-    size: float
-    disorder: float
-    values: FloatArray
-    realisation: IntArray | None
-    source: str
+__all__ = ["Block", "SampleOptions", "Sampled", "SizeDiagnostics", "sampled"]
 
 
 @dataclass(frozen=True)
@@ -56,22 +31,24 @@ class SampleOptions:
     average : {"mean", "median", "log-mean"}
         What is taken over realisations; the log-mean is exp<ln x>, the typical value.
     kind : {"numbers", "counts", "yes-no"}
-        What a value is; counts and yes/no values (0 and 1) get binomial errors.
+        What a value is. Counts, and yes/no values (1 and 0), get errors that do not vanish where nothing, or always the
+        same, happened.
     paired : bool or None
-        Whether the same disorder realisations were used at several disorders; None leaves it to the labels.
-    seed : int
-        Seed of the bootstrap.
+        Whether the same disorder realisations were used at several disorders of a size. None leaves it to the labels:
+        values of one label belong to one realisation. Without labels, paired values are matched by their order.
+
+    Raises
+    ------
+    ConfigurationError
+        If there is no such average or kind, or the two do not go together.
     """
 
     average: Literal["mean", "median", "log-mean"] = "mean"
     kind: Literal["numbers", "counts", "yes-no"] = "numbers"
     paired: bool | None = None
-    seed: int = 0
 
     def __post_init__(self) -> None:
-        for name, choices in (("average", AVERAGES), ("kind", KINDS)):
-            if getattr(self, name) not in choices:
-                raise ConfigurationError(f"{name} must be {_either(choices)}, not {getattr(self, name)!r}")
+        chosen(self.average, self.kind)
 
 
 @dataclass(frozen=True)
@@ -82,13 +59,35 @@ class SizeDiagnostics:
     ----------
     size : float
         System size.
+    points, realisations : int
+        Number of disorders and, of realisations, the least at any of them.
     error_ratio : float or None
         Error over realisations relative to the one from counting all values as independent, median over disorders; its
         square is the variance inflation. None where every realisation has one value.
+    shared : bool
+        Whether the points are treated as correlated, with a covariance.
+    correlation, correlation_z : float or None
+        Mean correlation of the values at neighbouring disorders and its distance from zero in standard errors; None
+        where values cannot be matched.
+    repeats : int
+        Values that stood in the data twice and were counted once.
+    kurtosis, kurtosis_at : float or None
+        Largest excess kurtosis of the realisations at any disorder, and there; None where no moments are taken.
+    error_doubt : float or None
+        Relative standard error of the standard error at that disorder.
     """
 
     size: float
+    points: int
+    realisations: int
     error_ratio: float | None
+    shared: bool
+    correlation: float | None
+    correlation_z: float | None
+    repeats: int
+    kurtosis: float | None
+    kurtosis_at: float | None
+    error_doubt: float | None
 
 
 @dataclass(frozen=True)
@@ -100,7 +99,7 @@ class Sampled:
     curves : tuple of Curve
         One for each size, in order of size.
     notes : tuple of str
-        What was dropped, averaged or noticed, one sentence each.
+        What was dropped or merged, one sentence each.
     rows : int
         Number of values read.
     diagnostics : tuple of SizeDiagnostics
@@ -117,17 +116,6 @@ class Sampled:
         return [asdict(found) for found in self.diagnostics]
 
 
-@dataclass(frozen=True, eq=False)
-class _Point:
-    """One disorder of a size: a value for each realisation, the rows behind it, and the labels where there are any."""
-
-    disorder: float
-    values: FloatArray
-    rows: FloatArray
-    labels: IntArray | None
-    source: str
-
-
 def sampled(blocks: Iterable[Block], options: SampleOptions | None = None) -> Sampled:
     """Average raw values to curves.
 
@@ -141,88 +129,80 @@ def sampled(blocks: Iterable[Block], options: SampleOptions | None = None) -> Sa
     Raises
     ------
     InputError
-        If shapes do not fit, a value is not finite, a point has a single realisation or no spread, or the points do not
-        make a `Curve`.
+        If shapes do not fit, a value is not finite or does not suit the average, a point has a single realisation or no
+        spread, values said to be paired cannot be matched, or the points do not make a `Curve`.
+
+    Examples
+    --------
+    >>> rng = np.random.default_rng(1)
+    >>> blocks = [Block(8, w, rng.normal(w, 1.0, (100, 20)), np.arange(100), "memory") for w in (1.0, 2.0, 3.0, 4.0)]
+    >>> found = sampled(blocks)
+    >>> found.rows, found.curves[0].samples.tolist(), found.curves[0].covariance.shape
+    (8000, [100, 100, 100, 100], (4, 4))
     """
     options = options or SampleOptions()
+    average = chosen(options.average, options.kind)
     groups: dict[float, dict[float, list[Block]]] = {}
     rows = 0
     for block in blocks:
-        _check(block)
         rows += block.values.size
         groups.setdefault(float(block.size), {}).setdefault(float(block.disorder), []).append(block)
-    curves, diagnostics = [], []
+    curves, notes, diagnostics = [], [], []
     for size, group in sorted(groups.items()):
-        points = [_point(disorder, found) for disorder, found in sorted(group.items())]
-        curves.append(_curve(size, points))
-        diagnostics.append(SizeDiagnostics(size, _error_ratio(points)))
-    return Sampled(tuple(curves), (), rows, tuple(diagnostics))
+        points = [merged(found, average) for _, found in sorted(group.items())]
+        estimates = [_estimate(point, average) for point in points]
+        bonds = pairing(size, points, options.paired)
+        curves.append(_curve(size, points, estimates, bonds))
+        diagnostics.append(_diagnostics(size, points, bonds, average))
+        notes += [note for point in points for note in point.notes] + identical(size, points)
+    return Sampled(tuple(curves), tuple(notes), rows, tuple(diagnostics))
 
 
-def _check(block: Block) -> None:
-    where = f"{block.source}, size {block.size:g}, disorder {block.disorder:g}"
-    if block.values.ndim not in (1, 2) or block.values.size == 0:
-        problem = f"the values must be a list or a table with at least one entry, not of shape {block.values.shape}"
-        raise InputError(problem, where=where)
-    if block.realisation is not None and block.realisation.shape != block.values.shape[:1]:
-        raise InputError(
-            f"there are {block.realisation.size} realisation labels for {len(block.values)} rows; give one for each",
-            where=where,
-        )
-    bad = np.argwhere(~(np.abs(block.values) <= LARGEST))  # NaN included
-    if len(bad):
-        value = block.values[tuple(bad[0])]
-        raise InputError(f"row {bad[0][0] + 1} holds {value:g}; correct it or remove the row", where=where)
-
-
-def _point(disorder: float, blocks: Sequence[Block]) -> _Point:
-    """Realisation averages of all blocks of one point."""
-    labelled = [block.realisation is not None for block in blocks]
-    if any(labelled) and not all(labelled):
-        bare = blocks[labelled.index(False)]
-        raise InputError(
-            f"these values have no realisation labels, but those in {blocks[labelled.index(True)].source} have; "
-            "give labels to all or to none",
-            where=f"{bare.source}, size {bare.size:g}, disorder {disorder:g}",
-        )
-    values = np.concatenate([b.values if b.values.ndim == 1 else b.values.mean(axis=1) for b in blocks])
-    rows = np.concatenate([block.values.ravel() for block in blocks])
-    labels = None
-    if all(labelled):
-        every = np.concatenate([np.asarray(block.realisation, dtype=np.int64) for block in blocks])
-        labels, index = np.unique(every, return_inverse=True)
-        values = np.bincount(index, values) / np.bincount(index)
-    return _Point(disorder, values, rows, labels, blocks[0].source)
-
-
-def _curve(size: float, points: Sequence[_Point]) -> Curve:
-    errors = np.array([_error(size, point) for point in points])
-    means = np.array([point.values.mean() for point in points])
-    counts = np.array([point.values.size for point in points])
-    return Curve(size, np.array([point.disorder for point in points]), means, errors, samples=counts)
-
-
-def _error(size: float, point: _Point) -> float:
-    """Standard error of the mean over realisations."""
-    where = f"{point.source}, size {size:g}, disorder {point.disorder:g}"
+def _estimate(point: Point, average: Average) -> Estimate:
     if point.values.size < 2:
         problem = "there is one realisation only, so no error can be found; run at least two or drop this point"
-        raise InputError(problem, where=where)
-    error = float(point.values.std(ddof=1) / np.sqrt(point.values.size))
-    if error == 0:
-        problem = f"all {point.values.size} realisations have the same value, so no error can be found; drop this point"
-        raise InputError(problem, where=where)
-    return error
+        raise InputError(problem, where=point.where)
+    found = average.estimate(point.values)
+    if found.error == 0:
+        problem = f"the {average.name} of {point.values.size} realisations has no error, because "
+        same = "they have the same value" if np.ptp(point.values) == 0 else "too many of them have the same value"
+        raise InputError(f"{problem}{same}; drop this point", where=point.where)
+    return found
 
 
-def _error_ratio(points: Sequence[_Point]) -> float | None:
-    ratios = [
-        float(p.values.std(ddof=1) / np.sqrt(p.values.size) / (p.rows.std(ddof=1) / np.sqrt(p.rows.size)))
-        for p in points
-        if p.rows.size > p.values.size
-    ]
-    return float(np.median(ratios)) if ratios else None
+def _curve(size: float, points: Sequence[Point], estimates: Sequence[Estimate], bonds: Pairing) -> Curve:
+    return Curve(
+        size,
+        np.array([point.disorder for point in points]),
+        np.array([found.value for found in estimates]),
+        np.array([found.error for found in estimates]),
+        bonds.covariance(estimates),
+        np.array([point.values.size for point in points]),
+    )
 
 
-def _either(choices: Sequence[str]) -> str:
-    return f"{', '.join(choices[:-1])} or {choices[-1]}"
+def _diagnostics(size: float, points: Sequence[Point], bonds: Pairing, average: Average) -> SizeDiagnostics:
+    errors = ((p.single_error, float(p.values.std(ddof=1) / np.sqrt(p.values.size))) for p in points)
+    ratios = [error / single for single, error in errors if single]
+    tails = [(*_tail(point.values), point.disorder) for point in points] if average.moments else []
+    doubt, kurtosis, at = max(tails, default=(None, None, None))
+    return SizeDiagnostics(
+        size=size,
+        points=len(points),
+        realisations=min(point.values.size for point in points),
+        error_ratio=float(np.median(ratios)) if ratios else None,
+        shared=bonds.shared,
+        correlation=bonds.correlation,
+        correlation_z=bonds.z,
+        repeats=sum(point.dropped for point in points),
+        kurtosis=kurtosis,
+        kurtosis_at=at,
+        error_doubt=doubt,
+    )
+
+
+def _tail(values: FloatArray) -> tuple[float, float]:
+    """Relative standard error of the standard error, and excess kurtosis K: sqrt((K + 2) / (4 n)) (textbook)."""
+    offset = values - values.mean()
+    kurtosis = float(np.mean(offset**4) / np.mean(offset**2) ** 2 - 3)
+    return float(np.sqrt(max(kurtosis + 2, 0.0) / (4 * values.size))), kurtosis
