@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable
+from difflib import get_close_matches
+
 
 class DriftlineError(ValueError):
     """Base of every error a user can cause; its text is one clear sentence, fit to be shown as it is."""
@@ -26,3 +29,16 @@ class InputError(DriftlineError):
 
 class ConfigurationError(DriftlineError):
     """An option, a configuration file or an output folder cannot be used."""
+
+
+def suggestion(name: str, known: Iterable[str]) -> str:
+    """Sentence part that offers the known names nearest to `name`, or all of them.
+
+    Examples
+    --------
+    >>> suggestion("sead", ["seed", "jobs"])
+    'did you mean seed?'
+    """
+    names = list(known)
+    near = get_close_matches(name, names, n=3, cutoff=0.6)
+    return f"did you mean {' or '.join(near)}?" if near else f"known are: {', '.join(names)}"

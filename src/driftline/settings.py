@@ -9,11 +9,10 @@ import math
 import tomllib
 from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass, field, fields
-from difflib import get_close_matches
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
-from driftline.errors import ConfigurationError, InputError
+from driftline.errors import ConfigurationError, InputError, suggestion
 from driftline.scaling.defaults import DEFAULT_ANSATZE
 
 if TYPE_CHECKING:
@@ -141,19 +140,6 @@ class Settings:
             return curves.select(smallest_size=self.smallest_size, window=self.window)
         except InputError as reason:
             raise ConfigurationError(str(reason)) from reason
-
-
-def suggestion(name: str, known: Iterable[str]) -> str:
-    """Sentence part that offers the known names nearest to `name`, or all of them.
-
-    Examples
-    --------
-    >>> suggestion("sead", ["seed", "jobs"])
-    'did you mean seed?'
-    """
-    names = list(known)
-    near = get_close_matches(name, names, n=3, cutoff=0.6)
-    return f"did you mean {' or '.join(near)}?" if near else f"known are: {', '.join(names)}"
 
 
 def _read_toml(path: Path) -> dict[str, Any]:

@@ -7,6 +7,8 @@ both can be written back with `driftline.readers.write`.
 from __future__ import annotations
 
 import os
+from collections.abc import Mapping
+from dataclasses import fields
 from pathlib import Path
 from typing import Any
 
@@ -14,54 +16,72 @@ from driftline.curves import Curves
 from driftline.errors import ConfigurationError, InputError
 from driftline.readers.base import Layout
 from driftline.readers.hdf5 import Hdf5Layout
-from driftline.readers.table import TableLayout
+from driftline.readers.table import SummaryLayout, TableLayout, WideLayout
+from driftline.reading import InputOptions
 
 #: Asked in this order; the table comes last because any text file might be one.
 LAYOUTS: tuple[Layout, ...] = (
     Hdf5Layout(),
+    SummaryLayout(),
+    WideLayout(),
     TableLayout(),
 )
 
 __all__ = ["LAYOUTS", "Layout", "read"]
 
 
-def read(path: str | os.PathLike[str], *, layout: str | None = None, **labels: Any) -> Curves:
-    """Read the curves in a file.
+def read(
+    path: str | os.PathLike[str], *, input: InputOptions | None = None, seed: int = 0, **words: Any
+) -> Curves:  # fmt: skip
+    """Read the curves in a file or folder.
 
     Parameters
     ----------
     path : path
-        A summary CSV (header ``size,disorder,mean,error[,samples]``) or HDF5 file of the program's own; the content
-        decides, not the name.
-    layout : str, optional
-        Name of a layout in `LAYOUTS`, to take that one without asking the content.
-    **labels
-        Fields of `driftline.curves.Labels` that replace what the file says, for example ``ergodic_value=0.5307``.
+        A file or folder in one of the `LAYOUTS`; the content decides which, not the name.
+    input : InputOptions, optional
+        How to read it, as far as the content does not say so.
+    seed : int
+        Seed of the bootstrap behind the errors of medians.
+    **words
+        Fields of `driftline.reading.InputOptions`, put over `input`: ``columns={"size": "L", "mean": "r"}``; and fields
+        of `driftline.curves.Labels` that replace what the file says: ``ergodic_value=0.5307``.
 
     Returns
     -------
     Curves
-        With ``origin`` holding path, sha256, layout, columns, rows and notes.
+        With ``origin`` holding path, sha256, layout, columns, rows and notes, and as ``input`` the options that read
+        the file again in the same way.
 
     Raises
     ------
     InputError
-        If the file is missing, cannot be read or breaks the rules of its layout; the text names file, line and column.
+        If the file is missing, cannot be read, breaks the rules of its layout, or leaves open what its columns hold;
+        the text names file, line and column.
     ConfigurationError
-        If there is no such layout or label.
+        If there is no such layout, option or label, or an option cannot be used.
     """
+    options, labels = split_words(input, words)
     place, target = os.fspath(path), Path(path)
-    chosen = None if layout is None else _named(layout)
+    chosen = None if options.layout is None else _named(options.layout)
     try:
         _check_kind(target, place)
-        chosen = chosen or _recognised(target, place)
+        chosen = chosen or _recognised(target, place, options)
         if target.is_dir() != chosen.folder:
             _refuse_kind(target, place)
-        return chosen.read(target, place, labels)
+        return chosen.read(target, place, labels, options)
     except PermissionError as reason:
         raise InputError("the file may not be read; check its permissions", where=place) from reason
     except OSError as reason:
         raise InputError(f"the file cannot be read ({reason.strerror or reason})", where=place) from reason
+
+
+def split_words(input: InputOptions | None, words: Mapping[str, Any]) -> tuple[InputOptions, dict[str, Any]]:
+    """Keywords of `read` as options and labels."""
+    names = {part.name for part in fields(InputOptions)}
+    given = InputOptions(**{name: value for name, value in words.items() if name in names})
+    labels = {name: value for name, value in words.items() if name not in names}
+    return given.over(input or InputOptions()), labels
 
 
 def _named(name: str) -> Layout:
@@ -72,9 +92,9 @@ def _named(name: str) -> Layout:
     raise ConfigurationError(f"there is no layout {name!r}; the layouts are {names}")
 
 
-def _recognised(path: Path, place: str) -> Layout:
+def _recognised(path: Path, place: str, options: InputOptions) -> Layout:
     for layout in LAYOUTS:
-        if layout.folder == path.is_dir() and layout.recognises(path):
+        if layout.folder == path.is_dir() and layout.recognises(path, options):
             return layout
     return _refuse_kind(path, place)
 

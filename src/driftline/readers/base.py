@@ -13,7 +13,7 @@ import re
 from abc import ABC, abstractmethod
 from collections.abc import Iterator, Mapping, Sequence
 from contextlib import contextmanager
-from dataclasses import dataclass, fields
+from dataclasses import dataclass, field, fields
 from difflib import get_close_matches
 from pathlib import Path
 from typing import Any, ClassVar, cast
@@ -21,6 +21,7 @@ from typing import Any, ClassVar, cast
 from driftline.curves import LARGEST, Curve, Curves, Labels
 from driftline.errors import InputError
 from driftline.readers.guard.files import opened
+from driftline.reading import InputOptions
 from driftline.wording import listed, shown
 
 NEEDED = ("size", "disorder", "mean", "error")
@@ -62,6 +63,10 @@ class Contents:
         What was ignored or rearranged, one sentence each.
     realisations : sequence of mapping
         What raw values showed, as `driftline.readers.samples.Sampled.record` gives it; empty for averaged data.
+    options : InputOptions
+        With which the file is read again in the same way, whatever was found out by itself this time.
+    sha256 : str, optional
+        Hash of what was read, where it is not that of a single file.
     """
 
     curves: Sequence[Curve]
@@ -70,6 +75,8 @@ class Contents:
     rows: int
     notes: Sequence[str] = ()
     realisations: Sequence[Mapping[str, Any]] = ()
+    options: InputOptions = field(default_factory=InputOptions)
+    sha256: str | None = None
 
 
 class Layout(ABC):
@@ -83,11 +90,11 @@ class Layout(ABC):
     folder: ClassVar[bool] = False  #: whether it reads a folder rather than a single file
 
     @abstractmethod
-    def recognises(self, path: Path) -> bool:
+    def recognises(self, path: Path, options: InputOptions) -> bool:
         """Whether the file at `path` looks like this layout; the first of the registry that says yes reads it."""
 
     @abstractmethod
-    def contents(self, path: Path, place: str) -> Contents:
+    def contents(self, path: Path, place: str, options: InputOptions) -> Contents:
         """Read `path`; faults name it as `place`, the path in the user's own words.
 
         Raises
@@ -101,21 +108,24 @@ class Layout(ABC):
         with opened(path, place) as stream:
             return hashlib.file_digest(cast("io.BufferedReader", stream), "sha256").hexdigest()
 
-    def read(self, path: Path, place: str, labels: Mapping[str, Any]) -> Curves:
+    def read(self, path: Path, place: str, labels: Mapping[str, Any], options: InputOptions) -> Curves:
         """The curves at `path`, with `labels` put over those of the file and the origin recorded."""
-        found = self.contents(path, place)  # before the hash, which would take long on a file too large to be read
-        origin = {
-            "path": place,
-            "sha256": self.fingerprint(path, place),
-            "layout": self.name,
-            "columns": dict(found.columns),
-            "rows": found.rows,
-            "notes": list(found.notes),
-            **({"realisations": [dict(size) for size in found.realisations]} if found.realisations else {}),
-        }
-        with located(place):
-            curves = Curves(found.curves, Labels(**found.labels), origin)  # type: ignore[arg-type]
-        return curves.relabel(**labels) if labels else curves
+        found = self.contents(path, place, options)
+        # The hash comes last: it would take long on a file too large to be read
+        origin = {"path": place, "sha256": found.sha256 or self.fingerprint(path, place), "layout": self.name}
+        return built(found, place, labels, origin)
+
+
+def built(found: Contents, place: str, labels: Mapping[str, Any], origin: Mapping[str, Any]) -> Curves:
+    """Curves of what a layout found, with `labels` put over those of the file and the origin completed."""
+    record = {**origin, "columns": dict(found.columns), "rows": found.rows, "notes": list(found.notes)}
+    if given := found.options.given():
+        record["input"] = given
+    if found.realisations:
+        record["realisations"] = [dict(size) for size in found.realisations]
+    with located(place):
+        curves = Curves(found.curves, Labels(**found.labels), record)  # type: ignore[arg-type]
+    return curves.relabel(**labels) if labels else curves
 
 
 @contextmanager

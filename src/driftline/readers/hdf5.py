@@ -41,6 +41,7 @@ from driftline.readers.guard import (
     open_hdf5,
     refuse_foreign_values,
 )
+from driftline.reading import InputOptions
 from driftline.wording import listed, shown
 
 if TYPE_CHECKING:
@@ -58,11 +59,11 @@ class Hdf5Layout(Layout):
     name = "hdf5"
     description = "HDF5 with /curves/<size>/{disorder,mean,error[,covariance][,samples]} and labels as attributes"
 
-    def recognises(self, path: Path) -> bool:
+    def recognises(self, path: Path, options: InputOptions) -> bool:
         """By the signature of HDF5, or by the name of a file that claims to be one."""
         return hdf5_signed(path, str(path)) or path.suffix.lower() in _SUFFIXES
 
-    def contents(self, path: Path, place: str) -> Contents:
+    def contents(self, path: Path, place: str, options: InputOptions) -> Contents:
         """Read the file; see `Layout.contents`."""
         with open_hdf5(path, place) as file:
             labels, notes = _labels(file, place)

@@ -1,7 +1,8 @@
-"""The summary CSV: one row per size and disorder under the header ``size,disorder,mean,error[,samples]``.
+"""Text tables: the program's own summary CSV, and long or wide tables with any column names.
 
-Plain text in UTF-8 (a byte-order mark and any line ending will do), columns in any order, further columns ignored with
-a note. Lines that begin with ``#`` are comments. Comments above the header may carry labels, one each, all optional::
+The summary CSV has one row per size and disorder under the header ``size,disorder,mean,error[,samples]``; it is plain
+text in UTF-8 (a byte-order mark, any line ending and gzip will do), columns in any order, further columns ignored with a
+note. Lines that begin with ``#`` are comments. Comments above the header may carry labels, one each, all optional::
 
     # observable: mean gap ratio
     # ergodic_value: 0.5307
@@ -9,233 +10,195 @@ a note. Lines that begin with ``#`` are comments. Comments above the header may 
     size,disorder,mean,error,samples
     8,1.0,0.5221,0.0011,4000
 
-The standard library's csv module splits each line on its own: unlike a columnar reader, it tells where a fault stands.
+A long table has the same rows, or one for each realisation, under other names or none, with other separators. A wide one
+has a row for each disorder and columns for each size.
 """
 
 from __future__ import annotations
 
-import csv
-import re
-from collections.abc import Iterable, Iterator, Sequence
-from dataclasses import dataclass, field
+from collections.abc import Callable, Iterator, Mapping
+from dataclasses import replace
+from itertools import islice
 from pathlib import Path
 
 import numpy as np
 
-from driftline.curves import Curve
+from driftline.curves import FloatArray
 from driftline.errors import InputError
-from driftline.readers.base import (
-    LABEL_NAMES,
-    NEEDED,
-    OPTIONAL,
-    Contents,
-    Layout,
-    check_columns,
-    label,
-    located,
-    number,
-    whole_number,
-)
-from driftline.readers.guard import MAX_NUMBERS, lines
-from driftline.wording import listed, shown
+from driftline.readers.assemble import Assembled, Piece, assembled
+from driftline.readers.base import NEEDED, OPTIONAL, Contents, Layout, check_columns
+from driftline.readers.columns import Choice, choose, wide_names
+from driftline.readers.guard import lines
+from driftline.readers.roles import Scene
+from driftline.readers.text import PROBED, TextTable, parsed, read_text
+from driftline.reading import InputOptions
+from driftline.wording import listed
 
-_LABEL = re.compile(r"#+\s*([A-Za-z_]\w*)\s*:(.*)", re.ASCII)
-_SEPARATORS = ((";", "semicolons"), ("\t", "tabs"), (None, "blanks"))
+MAX_PACKED = 1 << 40  # bytes; only the first lines are read
 
 
-class TableLayout(Layout):
-    """One CSV table with a row per size and disorder."""
+class SummaryLayout(Layout):
+    """The program's own summary CSV."""
 
     name = "summary-csv"
     description = "CSV with the header size,disorder,mean,error[,samples], one row per size and disorder"
 
-    def recognises(self, path: Path) -> bool:
+    def recognises(self, path: Path, options: InputOptions) -> bool:
+        """By the program's own names in a header with commas, as long as no option asks for another reading."""
+        if options.given():
+            return False
+        table = head(path, InputOptions(separator="comma"))
+        return table is not None and table.names is not None and set(NEEDED) <= set(table.names)
+
+    def contents(self, path: Path, place: str, options: InputOptions) -> Contents:
+        """Read the table; see `Layout.contents`."""
+        table = read_text(path, place, InputOptions(separator="comma"))
+        if table.names is None:
+            raise InputError(
+                f"the first row holds numbers, so the columns have no names; put the line {','.join(NEEDED)} above it",
+                where=table.where,
+            )
+        named = [name for name in table.names if name]
+        twice = next((name for index, name in enumerate(named) if name in named[:index]), None)
+        if twice is not None:
+            raise InputError(f"column '{twice}' occurs twice; give each column its own name", where=table.where)
+        check_columns(table.names, table.where)
+        columns = {name: name for name in NEEDED + OPTIONAL if name in table.names}
+        unused = tuple(name for name in table.names if name not in columns)
+        choice = Choice(((None, {name: table.names.index(name) for name in columns}),), columns, unused, columns)
+        return table_contents(table, choice, InputOptions(), InputOptions())
+
+
+class TableLayout(Layout):
+    """A long text table with any names of columns."""
+
+    name = "table"
+    description = (
+        "text with a row per size and disorder, or per realisation; any column names, separated by comma, semicolon, "
+        "tab or blanks, with or without header, possibly gzip"
+    )
+
+    def recognises(self, path: Path, options: InputOptions) -> bool:
         """Any regular file: what is not text is refused with the reason while reading."""
         return path.is_file()
 
-    def contents(self, path: Path, place: str) -> Contents:
+    def contents(self, path: Path, place: str, options: InputOptions) -> Contents:
         """Read the table; see `Layout.contents`."""
-        table = _Table.of_lines(lines(path, place), place)
-        points = [_point(table, row, place) for row in table.rows]
-        _refuse_repeats(points, place)
-        curves, notes = _curves(points, place)
-        present = [name for name in NEEDED + OPTIONAL if name in table.columns]
-        return Contents(
-            curves, table.labels, {name: name for name in present}, len(points), [*table.notes, *_extra(table), *notes]
-        )
+        table = read_text(path, place, options)
+        choice = choice_of(table, options)
+        return table_contents(table, choice, options, resolved(self.name, table, choice, options))
 
 
-@dataclass
-class _Table:
-    """Cells as text, with the number of the line each row stood on."""
+class WideLayout(TableLayout):
+    """A text table with a row per disorder and columns for each size."""
 
-    place: str
-    columns: list[str] = field(default_factory=list)
-    rows: list[tuple[int, list[str]]] = field(default_factory=list)
-    labels: dict[str, str | float | None] = field(default_factory=dict)
-    notes: list[str] = field(default_factory=list)
+    name = "wide"
+    description = "text with a row per disorder and columns for each size, such as W, L8, L10, with or without errors"
 
-    @classmethod
-    def of_lines(cls, lines: Iterable[tuple[int, str]], place: str) -> _Table:
-        table, comment, last = cls(place), (0, ""), 0
-        for count, line in lines:
-            text = line.strip()
-            if text.startswith("#"):
-                if not table.columns:
-                    table._take_label(text, count)
-                    comment = (count, text.lstrip("# \t"))
-            elif text:
-                cells, last = _split(line, f"{place}, line {count}"), count
-                if not table.columns and not _is_number(cells[0]):
-                    table._take_header(cells, count)
-                    continue
-                if not table.columns:
-                    table._take_commented_header(comment, count)
-                table._take_row(cells, count)
-        if not table.columns:
-            raise InputError("the file holds no table, only comments or blank lines", where=place)
-        if not table.rows:
-            raise InputError("there is a header but no row below it", where=f"{place}, line {last}")
-        return table
-
-    def _take_label(self, text: str, count: int) -> None:
-        match = _LABEL.fullmatch(text)
-        if not match:
-            return
-        name, value = match[1], match[2].strip()
-        where = f"{self.place}, line {count}, label {shown(name)}"
-        if name not in LABEL_NAMES:
-            self.notes.append(f"line {count}: {shown(name)} is not a label, so this comment was not used")
-            return
-        if name in self.labels:
-            raise InputError("this label was already given above; keep one", where=where)
-        self.labels[name] = label(name, value, where)
-
-    def _take_header(self, cells: list[str], count: int) -> None:
-        where = f"{self.place}, line {count}"
-        if len(cells) == 1 and (word := _other_separator(cells[0])):
-            raise InputError(f"the columns are separated by {word}; separate them by commas", where=where)
-        names = [name for name in cells if name]
-        twice = next((name for index, name in enumerate(names) if name in names[:index]), None)
-        if twice is not None:
-            raise InputError(f"column {shown(twice)} occurs twice; give each column its own name", where=where)
-        check_columns(names, where)
-        self.columns = cells
-
-    def _take_commented_header(self, comment: tuple[int, str], count: int) -> None:
-        # numpy.savetxt writes its header as a comment; it counts as one only with the right names in it
-        names = [name.strip() for name in comment[1].split(",")]
-        if not set(NEEDED) <= set(names):
-            raise InputError(
-                f"the first row holds numbers, so the columns have no names; put the line {','.join(NEEDED)} above it",
-                where=f"{self.place}, line {count}",
-            )
-        self._take_header(names, comment[0])
-        self.notes.append(f"line {comment[0]}: the column names were taken from this comment")
-
-    def _take_row(self, cells: list[str], count: int) -> None:
-        if len(cells) != len(self.columns):
-            raise InputError(
-                f"{len(cells)} value{'s' * (len(cells) != 1)} under {len(self.columns)} columns "
-                f"({listed(name or 'without a name' for name in self.columns)}); complete or remove the row",
-                where=f"{self.place}, line {count}",
-            )
-        if len(self.rows) * len(cells) > MAX_NUMBERS:
-            problem = f"the table holds more than {MAX_NUMBERS} numbers; average over realisations first"
-            raise InputError(problem, where=self.place)
-        self.rows.append((count, cells))
+    def recognises(self, path: Path, options: InputOptions) -> bool:
+        """By the names of the columns, or by an option that says which column belongs to which size."""
+        table = head(path, options)
+        return table is not None and wide_names(table.titles, options)
 
 
-@dataclass(frozen=True)
-class _Point:
-    line: int
-    size: float
-    disorder: float
-    mean: float
-    error: float
-    samples: int | None
-
-
-def _split(line: str, where: str) -> list[str]:
+def head(path: Path, options: InputOptions) -> TextTable | None:
+    """The table in the first lines of a file, or None if there is none."""
+    first = islice(lines(path, str(path), ends=True, most=MAX_PACKED), PROBED)
     try:
-        return [cell.strip() for cell in next(csv.reader([line], strict=True, skipinitialspace=True))]
-    except csv.Error as reason:
-        raise InputError("the quotation marks do not match; remove them", where=where) from reason
-
-
-def _is_number(cell: str) -> bool:
-    try:
-        number(cell, "")
+        return parsed(first, str(path), options)
     except InputError:
-        return False
-    return True
-
-
-def _other_separator(header: str) -> str | None:
-    for separator, word in _SEPARATORS:
-        if set(NEEDED) <= {name.strip() for name in header.split(separator)}:
-            return word
-    return None
-
-
-def _point(table: _Table, row: tuple[int, list[str]], place: str) -> _Point:
-    line, cells = row
-    found = dict(zip(table.columns, cells, strict=True))
-
-    def where(name: str) -> str:
-        return f"{place}, line {line}, column '{name}'"
-
-    size, disorder, mean, error = (number(found[name], where(name)) for name in NEEDED)
-    if size <= 0:
-        raise InputError(f"a size must be positive, not {shown(found['size'])}", where=where("size"))
-    if error <= 0:
-        problem = f"a standard error must be positive, not {shown(found['error'])}; measure it or remove the row"
-        raise InputError(problem, where=where("error"))
-    count = found.get("samples", "")
-    return _Point(line, size, disorder, mean, error, whole_number(count, where("samples")) if count else None)
-
-
-def _refuse_repeats(points: Sequence[_Point], place: str) -> None:
-    first: dict[tuple[float, float], int] = {}
-    for point in points:
-        line = first.setdefault((point.size, point.disorder), point.line)
-        if line != point.line:
-            raise InputError(
-                f"size {point.size:g} at disorder {point.disorder:g} occurs twice; keep one row or average them",
-                where=f"{place}, lines {line} and {point.line}",
-            )
-
-
-def _curves(points: Sequence[_Point], place: str) -> tuple[list[Curve], list[str]]:
-    by_size: dict[float, list[_Point]] = {}
-    for point in points:
-        by_size.setdefault(point.size, []).append(point)
-    unsorted = []
-    curves = []
-    for size, group in sorted(by_size.items()):
-        ordered = sorted(group, key=lambda point: point.disorder)
-        if ordered != group:
-            unsorted.append(f"{size:g}")
-        disorder, mean, error = (np.array([getattr(p, name) for p in ordered]) for name in NEEDED[1:])
-        with located(place):
-            curves.append(Curve(size, disorder, mean, error, samples=_samples(ordered)))
-    if not unsorted:
-        return curves, []
-    return curves, [f"rows of size {listed(unsorted)} were not in the order of disorder and have been sorted"]
-
-
-def _samples(points: Sequence[_Point]) -> np.typing.NDArray[np.int64] | None:
-    counts = [point.samples for point in points]
-    if all(count is None for count in counts):
         return None
-    if None in counts:
-        gap = points[counts.index(None)]
-        problem = "the cell is empty, but other rows of this size have a count; give all or none"
-        raise InputError(problem, where=f"line {gap.line}, column 'samples'")
-    return np.array(counts, dtype=np.int64)
 
 
-def _extra(table: _Table) -> Iterator[str]:
-    extra = [name or "one without a name" for name in table.columns if name not in NEEDED + OPTIONAL]
-    if extra:
-        yield f"columns not used: {listed(extra)}"
+def choice_of(table: TextTable, options: InputOptions, elsewhere: frozenset[str] = frozenset()) -> Choice:
+    """What the columns of `table` hold."""
+    scene = Scene(table.where, options, elsewhere)
+    return choose(table.titles, scene, named=table.names is not None)
+
+
+def resolved(name: str, table: TextTable, choice: Choice, options: InputOptions) -> InputOptions:
+    """The options that read the file again in the same way."""
+    return replace(
+        options, layout=name, columns=choice.named, separator=table.separator, header=table.header_line is not None
+        and not table.commented,
+    )  # fmt: skip
+
+
+def table_contents(table: TextTable, choice: Choice, options: InputOptions, again: InputOptions) -> Contents:
+    """Curves of one text file."""
+    notes = [*table.notes]
+    if table.commented:
+        notes.append(f"line {table.header_line}: the column names were taken from this comment")
+    notes += unused_note(choice)
+    pieces = list(pieces_of(table, choice, {}, notes))
+    made: Assembled = assembled(pieces, options)
+    return Contents(
+        made.curves, table.labels, choice.columns, made.rows, [*notes, *made.notes], made.realisations, again
+    )  # fmt: skip
+
+
+def unused_note(choice: Choice) -> list[str]:
+    """What is said about columns without a role."""
+    if not choice.unused:
+        return []
+    return [f"columns not used: {listed(name or 'one without a name' for name in choice.unused)}"]
+
+
+def pieces_of(
+    table: TextTable, choice: Choice, constants: Mapping[str, float], notes: list[str]
+) -> Iterator[Piece]:  # fmt: skip
+    """One piece for each set of columns; `constants` are roles that do not come from columns.
+
+    In a wide table, a cell may be empty (or NaN) where a size was not measured at a disorder.
+    """
+    if choice.raw:
+        table.refuse_cut_value()
+    for size, columns in choice.sets:
+        gaps = choice.wide
+        data = {
+            role: table.column(index, gaps=(gaps and role != "disorder") or role == "samples")
+            for role, index in columns.items()
+        }
+        rows = np.arange(len(table.rows))
+        if size is not None:
+            data["size"] = np.full(rows.size, size)
+            rows = _measured(data, table, size, columns, notes)
+            data = {role: values[rows] for role, values in data.items()}
+        for role, value in constants.items():
+            data[role] = np.full(rows.size, value)
+        yield Piece(table.place, data, _placer(table, columns, rows))
+
+
+def _measured(
+    data: Mapping[str, FloatArray], table: TextTable, size: float, columns: Mapping[str, int], notes: list[str]
+) -> np.typing.NDArray[np.intp]:
+    """Rows at which a size was measured.
+
+    Raises
+    ------
+    InputError
+        If there is a mean without its error, or the other way round.
+    """
+    gaps = {role: np.isnan(data[role]) for role in columns if role not in ("disorder", "samples")}
+    some, every = np.any(list(gaps.values()), axis=0), np.all(list(gaps.values()), axis=0)
+    if (odd := np.flatnonzero(some & ~every)).size:
+        role = next(role for role, missing in gaps.items() if missing[odd[0]])
+        raise InputError("the cell is empty, but others of its size are not; give all or none",
+                         where=table.cell_place(int(odd[0]), columns[role]))  # fmt: skip
+    if every.any():
+        at = listed(f"{value:g}" for value in data["disorder"][every])
+        notes.append(f"size {size:g}: not measured at disorder {at}, where the cells are empty")
+    return np.flatnonzero(~every)
+
+
+def _placer(
+    table: TextTable, columns: Mapping[str, int], rows: np.typing.NDArray[np.intp]
+) -> Callable[[int, str | None], str]:
+    """Place of row i of a piece, for faults."""
+
+    def place(row: int, role: str | None) -> str:
+        if role is not None and role in columns:
+            return table.cell_place(int(rows[row]), columns[role])
+        return f"{table.place}, line {table.lines[rows[row]]}"
+
+    return place

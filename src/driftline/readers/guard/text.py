@@ -34,7 +34,9 @@ _FOREIGN = (
 )
 
 
-def lines(path: Path, place: str, *, most: int = MAX_TEXT, longest: int = MAX_LINE) -> Iterator[tuple[int, str]]:
+def lines(
+    path: Path, place: str, *, most: int = MAX_TEXT, longest: int = MAX_LINE, ends: bool = False
+) -> Iterator[tuple[int, str]]:
     """Lines of a text file, each with its number from 1 and without its end, read as they are asked for.
 
     Parameters
@@ -45,6 +47,8 @@ def lines(path: Path, place: str, *, most: int = MAX_TEXT, longest: int = MAX_LI
         Most bytes to read, after unpacking.
     longest : int
         Most characters of a line.
+    ends : bool
+        Leave the end at each line, as a newline: a last line that was cut short has none.
 
     Yields
     ------
@@ -70,9 +74,9 @@ def lines(path: Path, place: str, *, most: int = MAX_TEXT, longest: int = MAX_LI
                 raise _not_utf8(path, place, most) from reason
             if not line:
                 return
-            line = line.removesuffix("\n")
-            _check_line(line, longest, f"{place}, line {count}")
-            yield count, line
+            body = line.removesuffix("\n")
+            _check_line(body, longest, f"{place}, line {count}")
+            yield count, line if ends else body
 
 
 @contextmanager

@@ -1,0 +1,219 @@
+"""Pieces of columns to curves: averaged rows become points, raw values go through `driftline.readers.samples`.
+
+Every layout for tables, folders and arrays ends here, so that faults, sorting and the conversion of a standard deviation
+are the same everywhere.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
+from dataclasses import dataclass, field
+from typing import Any
+
+import numpy as np
+import numpy.typing as npt
+
+from driftline.curves import Curve, FloatArray
+from driftline.errors import InputError
+from driftline.readers.base import located
+from driftline.readers.samples import Block, Sampled, SampleOptions, sampled
+from driftline.reading import InputOptions
+from driftline.wording import listed
+
+IntArray = npt.NDArray[np.int64]
+
+
+@dataclass(frozen=True, eq=False)
+class Piece:
+    """Rows that belong together, from one file, one size of a wide table, or one dataset.
+
+    Parameters
+    ----------
+    source : str
+        Where they stood, for faults.
+    data : mapping
+        Role to its numbers, each of shape (n,); a raw `value` may have the shape (n, eigenstates).
+    place : callable
+        Place of row i in the role named, for faults; ``place(i, None)`` is the place of the row.
+    """
+
+    source: str
+    data: Mapping[str, FloatArray]
+    place: Callable[[int, str | None], str]
+
+    @property
+    def rows(self) -> int:
+        """Number of rows."""
+        return len(self.data["size"])
+
+
+@dataclass(frozen=True, eq=False)
+class Assembled:
+    """Curves of all pieces together, with notes and, for raw values, the record of the realisations."""
+
+    curves: Sequence[Curve]
+    rows: int
+    notes: list[str] = field(default_factory=list)
+    realisations: Sequence[Mapping[str, Any]] = ()
+
+
+def assembled(pieces: Iterable[Piece], options: InputOptions, seed: int = 0) -> Assembled:
+    """Curves of `pieces`.
+
+    Raises
+    ------
+    InputError
+        If a size or error is not positive, a point occurs twice among averaged rows, or counts are missing.
+    """
+    every = list(pieces)
+    for piece in every:
+        _check_positive(piece, "size", "a size must be positive, not {:g}")
+    if any("value" in piece.data for piece in every):
+        found = sampled(blocks(every, options), sample_options(options, seed))
+        return from_sampled(found, options)
+    return _averaged(every, options)
+
+
+def from_sampled(found: Sampled, options: InputOptions) -> Assembled:
+    """What `driftline.readers.samples` made of raw values."""
+    return Assembled(found.curves, found.rows, list(found.notes), found.record())
+
+
+def sample_options(options: InputOptions, seed: int) -> SampleOptions:
+    """The part of the options that concerns raw values."""
+    return SampleOptions(options.average, options.kind, options.paired, seed)
+
+
+# ---------------------------------------------------------------- raw values
+
+
+def blocks(pieces: Iterable[Piece], options: InputOptions) -> Iterator[Block]:
+    """One `Block` for each size and disorder of each piece, rows in the order of the file.
+
+    Where the realisations are declared as paired but carry no labels, their position is the label: the first value of
+    every point is taken to be that of one realisation, and so on.
+    """
+    begun: dict[tuple[float, float], int] = {}
+    for piece in pieces:
+        values, labels = piece.data["value"], _labels(piece)
+        for rows in _groups(piece.data["size"], piece.data["disorder"]):
+            size, disorder = float(piece.data["size"][rows[0]]), float(piece.data["disorder"][rows[0]])
+            named = None if labels is None else labels[rows]
+            if labels is None and options.paired:
+                first = begun.get((size, disorder), 0)
+                named = np.arange(first, first + rows.size)
+                begun[size, disorder] = first + rows.size
+            yield Block(size, disorder, values[rows], named, piece.source)
+
+
+def _labels(piece: Piece) -> IntArray | None:
+    raw = piece.data.get("realisation")
+    if raw is None:
+        return None
+    bad = np.flatnonzero((raw != np.floor(raw)) | (np.abs(raw) > 2**53))  # 2**53: doubles hold every number up to it
+    if bad.size:
+        problem = f"the label of a realisation must be a whole number, not {raw[bad[0]]:g}"
+        raise InputError(problem, where=piece.place(int(bad[0]), "realisation"))
+    return raw.astype(np.int64)
+
+
+def _groups(size: FloatArray, disorder: FloatArray) -> Iterator[npt.NDArray[np.intp]]:
+    """Rows of each (size, disorder), in their own order."""
+    order = np.lexsort((disorder, size))
+    change = (np.diff(size[order]) != 0) | (np.diff(disorder[order]) != 0)
+    yield from np.split(order, np.flatnonzero(change) + 1) if order.size else []
+
+
+# ---------------------------------------------------------------- averaged rows
+
+
+def _averaged(pieces: Sequence[Piece], options: InputOptions) -> Assembled:
+    completed = [_with_error(piece, options) for piece in pieces]
+    for piece in completed:
+        _check_positive(piece, "error", "a standard error must be positive, not {:g}; measure it or remove the row")
+    _refuse_repeats(completed)
+    data = {
+        role: np.concatenate([piece.data.get(role, np.full(piece.rows, np.nan)) for piece in completed])
+        for role in ("size", "disorder", "mean", "error", "samples")
+    }
+    where = [(piece, row) for piece in completed for row in range(piece.rows)]
+    curves, unsorted = [], []
+    for size in np.unique(data["size"]):
+        rows = np.flatnonzero(data["size"] == size)
+        order = rows[np.argsort(data["disorder"][rows], kind="stable")]
+        if np.any(order != rows):
+            unsorted.append(f"{size:g}")
+        counts = _counts(data["samples"][order], [where[row] for row in order])
+        with located(where[rows[0]][0].source):
+            curve = Curve(float(size), *(data[name][order] for name in ("disorder", "mean", "error")), samples=counts)
+        curves.append(curve)
+    notes = []
+    if unsorted:
+        notes.append(f"rows of size {listed(unsorted)} were not in the order of disorder and have been sorted")
+    if any("deviation" in piece.data and "error" not in piece.data for piece in pieces):
+        notes.append("standard deviations were divided by the square root of the number of realisations")
+    if options.error_each is not None and not any("error" in piece.data for piece in pieces):
+        notes.append(f"every standard error is {options.error_each:g}, as the option says")
+    return Assembled(curves, len(where), notes)
+
+
+def _with_error(piece: Piece, options: InputOptions) -> Piece:
+    """Complete the counts and the standard errors from what stands in their place."""
+    data = dict(piece.data)
+    if options.samples_each is not None and "samples" not in data:
+        data["samples"] = np.full(piece.rows, float(options.samples_each))
+    if "error" not in data and "deviation" in data:
+        _check_positive(piece, "deviation", "a standard deviation must be positive, not {:g}; measure it or remove the row")
+        missing = np.flatnonzero(np.isnan(data["samples"]))
+        if missing.size:
+            problem = "without the number of realisations a standard deviation does not give a standard error; add it"
+            raise InputError(problem, where=piece.place(int(missing[0]), "samples"))
+        data["error"] = data["deviation"] / np.sqrt(data["samples"])
+    elif "error" not in data and options.error_each is not None:
+        data["error"] = np.full(piece.rows, options.error_each)
+    return Piece(piece.source, data, piece.place)
+
+
+def _check_positive(piece: Piece, role: str, problem: str) -> None:
+    bad = np.flatnonzero(~(piece.data[role] > 0))
+    if bad.size:
+        row = int(bad[0])
+        raise InputError(problem.format(float(piece.data[role][row])), where=piece.place(row, role))
+
+
+def _refuse_repeats(pieces: Sequence[Piece]) -> None:
+    first: dict[tuple[float, float], tuple[Piece, int]] = {}
+    for piece in pieces:
+        for row, point in enumerate(zip(piece.data["size"].tolist(), piece.data["disorder"].tolist(), strict=True)):
+            before, count = first.setdefault(point, (piece, row))
+            if (before, count) != (piece, row):
+                raise InputError(
+                    f"size {point[0]:g} at disorder {point[1]:g} occurs twice; keep one row or average them (raw values "
+                    "are declared with --columns value=...)",
+                    where=_two_places(before.place(count, None), piece.place(row, None)),
+                )
+
+
+def _two_places(one: str, other: str) -> str:
+    """``run.csv, lines 3 and 10`` for two rows of one file, else both in full."""
+    head, line = one.rpartition(", line ")[::2]
+    if head and other.startswith(f"{head}, line "):
+        return f"{head}, lines {line} and {other.rpartition(', line ')[2]}"
+    return f"{one} and {other}"
+
+
+def _counts(samples: FloatArray, places: Sequence[tuple[Piece, int]]) -> IntArray | None:
+    """Numbers of realisations, all or none."""
+    gaps = np.isnan(samples)
+    if gaps.all():
+        return None
+    if gaps.any():
+        piece, row = places[int(np.argmax(gaps))]
+        problem = "the cell is empty, but other rows of this size have a count; give all or none"
+        raise InputError(problem, where=piece.place(row, "samples"))
+    bad = np.flatnonzero((samples < 1) | (samples != np.floor(samples)) | (samples > 2**53))
+    if bad.size:
+        piece, row = places[int(bad[0])]
+        problem = f"{samples[bad[0]]:.15g} is not a positive whole number of realisations"
+        raise InputError(problem, where=piece.place(row, "samples"))
+    return samples.astype(np.int64)

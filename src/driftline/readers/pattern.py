@@ -1,0 +1,171 @@
+"""Patterns of paths that carry parameters, such as ``L{size}/W{disorder}/r.dat``, below a folder or inside HDF5.
+
+``{size}``, ``{disorder}`` and ``{realisation}`` stand for a number each, ``*`` for anything within one part of the
+path. A placeholder that occurs twice must read the same both times. `inferred` finds the pattern of a set of paths
+where their names leave one reading only.
+"""
+
+from __future__ import annotations
+
+import re
+from collections import Counter
+from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import dataclass
+from itertools import chain
+
+from driftline.errors import ConfigurationError
+from driftline.readers.roles import known_as
+
+PLACEHOLDERS = ("size", "disorder", "realisation")
+_NUMBER = r"[+-]?(?:\d+\.?\d*|\.\d+)(?:[eEdD][+-]?\d+)?"
+_WHOLE = r"\d+"
+_TOKEN = re.compile(r"\{([^{}]*)\}|\*")
+#: A number with the word in front of it, as in ``L8``, ``W=1.0``, ``seed_003``. A hyphen is no sign and joins nothing:
+#: whether ``h-0.5`` is negative cannot be told, so no meaning is found there.
+_SLOT = re.compile(r"(?:([A-Za-z]+)[=_]?)?(\d+(?:\.\d+)?(?:[eE][+-]?\d+)?)")
+
+
+@dataclass(frozen=True)
+class Pattern:
+    """A pattern whose placeholders are known to be sound.
+
+    Parameters
+    ----------
+    text : str
+        As the user wrote it, without slashes at the ends.
+    """
+
+    text: str
+
+    @classmethod
+    def of(cls, text: str, where: str = "pattern") -> Pattern:
+        """Check `text`.
+
+        Raises
+        ------
+        ConfigurationError
+            If a placeholder is unknown, or a part of the path is empty or leads upwards.
+        """
+        if "\0" in text or text.count("{") != text.count("}"):
+            raise ConfigurationError(f"{where}: the braces of {text!r} do not match")
+        for match in _TOKEN.finditer(text):
+            if match[1] is not None and match[1] not in PLACEHOLDERS:
+                names = ", ".join(f"{{{name}}}" for name in PLACEHOLDERS)
+                raise ConfigurationError(f"{where}: there is no placeholder {match[0]!r}; they are {names} and *")
+        pattern = cls(text.strip("/"))
+        if any(part in ("", ".", "..") for part in pattern.parts):
+            raise ConfigurationError(f"{where}: {text!r} must lead downwards only, without empty parts, '.' or '..'")
+        return pattern
+
+    @property
+    def parts(self) -> list[str]:
+        """The parts between slashes."""
+        return self.text.split("/")
+
+    @property
+    def names(self) -> tuple[str, ...]:
+        """The placeholders in it, each once, in order."""
+        return tuple(dict.fromkeys(match[1] for match in _TOKEN.finditer(self.text) if match[1] is not None))
+
+    def part(self, index: int) -> re.Pattern[str]:
+        """What the part number `index` of a path must look like, on its own."""
+        return re.compile(_expression(self.parts[index], set()), re.ASCII)
+
+    def match(self, path: str) -> dict[str, str] | None:
+        """Text of each placeholder in `path`, or None if it does not fit."""
+        found = re.compile(_expression(self.text, set()), re.ASCII).fullmatch(path)
+        return None if found is None else found.groupdict()
+
+    def filled(self, values: Mapping[str, str]) -> str:
+        """The pattern with the placeholders that `values` holds put in; the others, and ``*``, stay."""
+        return _TOKEN.sub(lambda match: values.get(match[1] or "", match[0]), self.text)
+
+
+def is_fixed(text: str) -> bool:
+    """Whether there is neither a placeholder nor ``*`` in `text`."""
+    return _TOKEN.search(text) is None
+
+
+def _expression(text: str, seen: set[str]) -> str:
+    pieces, last = [], 0
+    for match in _TOKEN.finditer(text):
+        pieces.append(re.escape(text[last : match.start()]))
+        pieces.append(_group(match[1], seen))
+        last = match.end()
+    return "".join([*pieces, re.escape(text[last:])])
+
+
+def _group(name: str | None, seen: set[str]) -> str:
+    if name is None:
+        return "[^/]*"
+    if name in seen:
+        return f"(?P={name})"
+    seen.add(name)
+    return f"(?P<{name}>{_WHOLE if name == 'realisation' else _NUMBER})"
+
+
+@dataclass(frozen=True)
+class Inference:
+    """What the names of a set of paths tell.
+
+    Parameters
+    ----------
+    pattern : str or None
+        The one pattern that reads them all, if there is one.
+    sketch : str
+        A pattern to begin with for the user, with ``{?}`` where a number varies and its meaning is not known.
+    """
+
+    pattern: str | None
+    sketch: str
+
+
+def inferred(paths: Sequence[str]) -> Inference:
+    """The pattern of `paths`, if every number that varies has a word in front that can mean one thing only.
+
+    Paths of several shapes have no pattern in common: which of them to read, the user must say.
+    """
+    counts = Counter(_shape(path) for path in paths)
+    first = min(counts, key=lambda shape: (-counts[shape], shape))
+    alike = [path for path in paths if _shape(path) == first]
+    values = list(zip(*map(_numbers, alike), strict=True))
+    varying = [index for index, column in enumerate(values) if len(set(column)) > 1]
+    roles = _meanings(_words(alike[0]), varying, values)
+    sketch = _filled_in(first, values, {index: roles.get(index, "?") for index in varying})
+    whole = len(counts) == 1 and set(varying) == set(roles)
+    return Inference(sketch if whole else None, sketch)
+
+
+def _shape(path: str) -> str:
+    """The path with every number taken out, marked by a NUL, which no path can hold."""
+    return _SLOT.sub(lambda match: match[0][: -len(match[2])] + "\0", path)
+
+
+def _numbers(path: str) -> list[str]:
+    return [match[2] for match in _SLOT.finditer(path)]
+
+
+def _words(path: str) -> list[str]:
+    return [match[1] or "" for match in _SLOT.finditer(path)]
+
+
+def _meanings(words: Sequence[str], varying: Iterable[int], values: Sequence[Sequence[str]]) -> dict[int, str]:
+    """Role of each varying number; those whose word could mean several roles, or that share a role, are left out."""
+    found: dict[str, list[int]] = {}
+    for index in varying:
+        for role in known_as(words[index]):
+            if role in PLACEHOLDERS:
+                found.setdefault(role, []).append(index)
+    claims = list(chain.from_iterable(found.values()))
+    roles = {}
+    for role, indices in found.items():
+        same = all(values[i] == values[indices[0]] for i in indices)  # runs/L8/r_L8.dat says its size twice
+        if same and all(claims.count(i) == 1 for i in indices):
+            roles |= dict.fromkeys(indices, role)
+    return roles
+
+
+def _filled_in(shape: str, values: Sequence[Sequence[str]], roles: Mapping[int, str]) -> str:
+    pieces = shape.split("\0")
+    filled = [f"{{{roles[i]}}}" if i in roles else column[0] for i, column in enumerate(values)]
+    return "".join(chain.from_iterable(zip(pieces, [*filled, ""], strict=True)))
