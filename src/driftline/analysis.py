@@ -138,7 +138,7 @@ def analyse(curves: Curves, *, settings: Settings | None = None, progress: Progr
     InputError, ConfigurationError
         If window or smallest size leave too little, or an ansatz is unknown.
     """
-    chosen = settings or Settings()
+    chosen = (settings or Settings()).with_reading(curves)
     tell = progress or (lambda _text, _fraction: None)
     timing: dict[str, float] = {}
     used = chosen.select(curves.relabel(**chosen.labels) if chosen.labels else curves)

@@ -37,9 +37,9 @@ class InputOptions:
     layout : str, optional
         Name of a layout (`driftline.readers.LAYOUTS`), to take that one without asking the content.
     columns : mapping or sequence or str
-        Where each of the `ROLES` stands: ``{"size": "L", "mean": "r", "error": "sem"}`` by the name of a column, dataset
-        or array (with placeholders as in `pattern`), by the number of the column, from 1, where columns have no names,
-        or as ``@NAME`` for an attribute of HDF5; or the roles in the order of the columns,
+        Where each of the `ROLES` stands: ``{"size": "L", "mean": "r", "error": "sem"}`` by the name of a column,
+        dataset or array (with placeholders as in `pattern`), by the number of the column, from 1, where columns have
+        no names, or as ``@NAME`` for an attribute of HDF5; or the roles in the order of the columns,
         ``("size", "disorder", "mean", "error")``, with ``"-"`` for a column that is not used. As one text:
         ``"size=L,mean=r,error=sem"`` or ``"size,disorder,mean,error"``.
     sizes : sequence of float
@@ -127,6 +127,18 @@ class InputOptions:
         found = {part.name: getattr(self, part.name) for part in fields(self)}
         return {name: _plain(value) for name, value in found.items() if value != getattr(default, name)}
 
+    @classmethod
+    def of_options(cls, given: Mapping[str, Any]) -> InputOptions:
+        """The options of the command line, by field; those that are None count as not given.
+
+        Raises
+        ------
+        ConfigurationError
+            If a value cannot be used; the text names the option.
+        """
+        kept = {name: value for name, value in given.items() if value is not None}
+        return cls(**{name: _CHECKS[name](kept[name], f"option --{name.replace('_', '-')}") for name in kept})
+
     @property
     def named(self) -> dict[str, str]:
         """Role to column as far as they were given by name or number."""
@@ -162,8 +174,8 @@ def _columns_of_text(text: str, where: str) -> dict[str, str] | list[str]:
     pairs = [part.split("=", 1) for part in parts]
     if odd := next((pair[0] for pair in pairs if len(pair) != 2), None):
         raise ConfigurationError(
-            f"{where}: {odd!r} lacks a column; give either roles in the order of the columns (size,disorder,mean,error) "
-            "or a column for each role (size=L,disorder=W,mean=r,error=sem)"
+            f"{where}: {odd!r} lacks a column; give roles in the order of the columns (size,disorder,mean,error) or a "
+            "column for each role (size=L,disorder=W,mean=r,error=sem)"
         )
     roles = [role.strip() for role, _ in pairs]
     if twice := next((role for role in roles if roles.count(role) > 1), None):

@@ -8,11 +8,12 @@ from __future__ import annotations
 import math
 import tomllib
 from collections.abc import Callable, Iterable, Mapping
-from dataclasses import dataclass, field, fields
+from dataclasses import dataclass, field, fields, replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from driftline.errors import ConfigurationError, InputError, suggestion
+from driftline.reading import InputOptions
 from driftline.scaling.defaults import DEFAULT_ANSATZE
 
 if TYPE_CHECKING:
@@ -49,6 +50,9 @@ class Settings:
     forms : tuple of ExpressionForm
         Scaling forms of the user's own, which `ansatze` may name. A mapping of tables by name, as in a TOML file, is
         understood as well.
+    input : InputOptions
+        How the data file is read, as `driftline.read` takes it; `driftline.analyse` puts in its place what the curves
+        say about their own reading.
 
     Raises
     ------
@@ -70,6 +74,7 @@ class Settings:
     labels: Mapping[str, Any] = field(default_factory=dict)
     draws: int = 2000
     forms: tuple[ExpressionForm, ...] = ()
+    input: InputOptions = field(default_factory=InputOptions)
 
     def __post_init__(self) -> None:
         for name, check in _CHECKS.items():
@@ -88,8 +93,8 @@ class Settings:
         Parameters
         ----------
         file : path, optional
-            TOML file with any of the fields of `Settings` as keys; the labels as a table ``[labels]``, each form of the
-            user's own as a table ``[ansatz.NAME]``.
+            TOML file with any of the fields of `Settings` as keys; the labels as a table ``[labels]``, the reading as a
+            table ``[input]``, each form of the user's own as a table ``[ansatz.NAME]``.
         options : mapping, optional
             Fields by name; those that are None count as not given.
         defaults : mapping, optional
@@ -102,12 +107,19 @@ class Settings:
         """
         chosen = {**(defaults or {}), **({} if file is None else _read_toml(Path(file)))}
         for name, value in (options or {}).items():
-            if value is not None:
+            if name == "input":
+                chosen[name] = InputOptions.of_options(value).over(chosen.get(name, InputOptions()))
+            elif value is not None:
                 where = f"option --{'ansatz' if name == 'ansatze' else name}".replace("_", "-")
                 chosen[name] = _CHECKS[name](value, where)
                 if name == "ansatze":
                     _check_ansatz_names(chosen[name], chosen.get("forms", ()), where)
         return cls(**chosen)
+
+    def with_reading(self, curves: Curves) -> Settings:
+        """These settings with the options that read the file of `curves` again in the same way, if it tells them."""
+        found = curves.origin.get("input")
+        return self if found is None else replace(self, input=InputOptions.of_table(found, "input"))
 
     def to_dict(self) -> dict[str, Any]:
         """The object ``config`` of `result.json`: the settings that can change a number.
@@ -117,8 +129,9 @@ class Settings:
         from driftline.plain import attributes  # numpy comes with them, so only where they are needed
         from driftline.scaling.tables import form_table
 
-        names = (part.name for part in fields(self) if part.name not in ("seed", "jobs", "forms"))
-        return {**attributes(self, *names), "forms": {form.name: form_table(form) for form in self.forms}}
+        names = (part.name for part in fields(self) if part.name not in ("seed", "jobs", "forms", "input"))
+        forms = {form.name: form_table(form) for form in self.forms}
+        return {**attributes(self, *names), "forms": forms, "input": self.input.given()}
 
     def select(self, curves: Curves) -> Curves:
         """The part of `curves` that window and smallest size leave.
@@ -278,4 +291,5 @@ _CHECKS: dict[str, Callable[[Any, str], Any]] = {
     "labels": _labels,
     "draws": lambda value, where: _whole(value, where, least=MIN_DRAWS),
     "forms": _forms,
+    "input": InputOptions.of_table,
 }

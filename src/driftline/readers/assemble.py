@@ -145,8 +145,8 @@ def _averaged(pieces: Sequence[Piece], options: InputOptions) -> Assembled:
             unsorted.append(f"{size:g}")
         counts = _counts(data["samples"][order], [where[row] for row in order])
         with located(where[rows[0]][0].source):
-            curve = Curve(float(size), *(data[name][order] for name in ("disorder", "mean", "error")), samples=counts)
-        curves.append(curve)
+            disorder, mean, error = (data[name][order] for name in ("disorder", "mean", "error"))
+            curves.append(Curve(float(size), disorder, mean, error, samples=counts))
     notes = []
     if unsorted:
         notes.append(f"rows of size {listed(unsorted)} were not in the order of disorder and have been sorted")

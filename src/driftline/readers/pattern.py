@@ -157,7 +157,7 @@ def _meanings(words: Sequence[str], varying: Iterable[int], values: Sequence[Seq
             if role in PLACEHOLDERS:
                 found.setdefault(role, []).append(index)
     claims = list(chain.from_iterable(found.values()))
-    roles = {}
+    roles: dict[int, str] = {}
     for role, indices in found.items():
         same = all(values[i] == values[indices[0]] for i in indices)  # runs/L8/r_L8.dat says its size twice
         if same and all(claims.count(i) == 1 for i in indices):

@@ -118,10 +118,9 @@ def choice_of(table: TextTable, options: InputOptions, elsewhere: frozenset[str]
 
 def resolved(name: str, table: TextTable, choice: Choice, options: InputOptions) -> InputOptions:
     """The options that read the file again in the same way."""
-    return replace(
-        options, layout=name, columns=choice.named, separator=table.separator, header=table.header_line is not None
-        and not table.commented,
-    )  # fmt: skip
+    header = table.header_line is not None and not table.commented
+    found = {"layout": name, "columns": choice.named, "separator": table.separator, "header": header}
+    return InputOptions(**found).over(options)  # type: ignore[arg-type]
 
 
 def table_contents(table: TextTable, choice: Choice, options: InputOptions, again: InputOptions) -> Contents:

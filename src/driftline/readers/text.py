@@ -220,8 +220,8 @@ def _separator(body: _Body) -> str:
         able = _with_most_numbers(able, probe[-1])
     if len(able) > 1:
         raise InputError(
-            f"the columns may be separated by {' or '.join(able)}; the first row is {shown(probe[0].strip())}; say which "
-            f"with --separator {able[0]} or --separator {able[1]}",
+            f"the columns may be separated by {' or '.join(able)}; the first row is {shown(probe[0].strip())}; say "
+            f"which with --separator {able[0]} or --separator {able[1]}",
             where=f"{body.place}, line {body.lines[0][0]}",
         )
     # In rows of different lengths the most frequent one: the odd row is then reported as such, not as text

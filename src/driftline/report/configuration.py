@@ -28,6 +28,8 @@ def to_toml(settings: Settings) -> str:
     ]
     if settings.labels:
         lines += ["", "[labels]", *(f"{name} = {_value(value)}" for name, value in settings.labels.items())]
+    if given := settings.input.given():
+        lines += ["", "[input]", *(f"{name} = {_input(value)}" for name, value in given.items())]
     for form in settings.forms:
         lines += ["", *_form(form)]
     return "\n".join(lines) + "\n"
@@ -55,6 +57,15 @@ class ConfigurationFile(Writer):
         head = "# Resolved configuration; to repeat: driftline analyse DATA --config analysis.toml\n"
         head += "" if path is None else f"# DATA was {_text(str(path))}\n"
         (folder / "analysis.toml").write_text(head + to_toml(analysis.settings), encoding="utf-8", newline="\n")
+
+
+def _input(value: Any) -> str:
+    """An option of reading: a table in one line, a list, a switch, text or a number."""
+    if isinstance(value, dict):
+        return f"{{ {', '.join(f'{role} = {_text(place)}' for role, place in value.items())} }}"
+    if isinstance(value, list):
+        return f"[{', '.join(_value(item) for item in value)}]"
+    return str(value).lower() if isinstance(value, bool) else _value(value)
 
 
 def _value(value: Any) -> str:
