@@ -49,51 +49,84 @@ def test_the_table_that_the_faults_are_made_from_is_good(tmp_path):
 
 
 NO_ERROR = "add 'error', the standard error of the mean ({} divided by the square root of the number of realisations)"
+SPREAD = (
+    "may hold the standard error of the mean or the standard deviation over realisations; the columns are size, "
+    "disorder, mean, {0}; say which with --columns error={0}, or with --columns deviation={0} and the number of "
+    "realisations (samples=... there, or --samples-each N)"
+)
+UNTOLD = "the names do not tell which column holds {}; the columns are {}; say it with --columns {}"
 
 
 @pytest.mark.parametrize(
     ("header", "text"),
     [
-        ("size,disorder,value,error", "column 'mean' is missing; the columns are size, disorder, value, error; "
-         "rename 'value' to 'mean' if that is what it holds"),
-        ("L,W,mean,error", "columns 'size' and 'disorder' are missing; the columns are L, W, mean, error; "
-         "rename 'L' to 'size' and 'W' to 'disorder' if that is what they hold"),
-        ("Size,disordr,mean,error", "columns 'size' and 'disorder' are missing; the columns are Size, disordr, mean, "
-         "error; rename 'Size' to 'size' and 'disordr' to 'disorder' if that is what they hold"),
-        ("size,disorder,mean", "column 'error' is missing; the columns are size, disorder, mean; "
-         + NO_ERROR.format("the standard deviation over disorder realisations")),
-        ("size,disorder,mean,std", "column 'error' is missing; the columns are size, disorder, mean, std; "
-         + NO_ERROR.format("'std'")),
-        ("size,disorder,mean,sem", "column 'error' is missing; the columns are size, disorder, mean, sem; "
-         "rename 'sem' to 'error' if that is what it holds"),
-        ("size,disorder,mean,mean,error", "column 'mean' occurs twice; give each column its own name"),
-        ("size;disorder;mean;error", "the columns are separated by semicolons; separate them by commas"),
-        ("size\tdisorder\tmean\terror", "the columns are separated by tabs; separate them by commas"),
-        ("size disorder  mean error", "the columns are separated by blanks; separate them by commas"),
-        ("8,1,0.5,0.01", "the first row holds numbers, so the columns have no names; put the line "
-         "size,disorder,mean,error above it"),
-        ("W,8,10,12", "columns 'size' and 'disorder' and 'mean' and 'error' are missing; the columns are W, 8, 10, 12; "
-         "rename 'W' to 'disorder' if that is what it holds; "
-         + NO_ERROR.format("the standard deviation over disorder realisations")),
+        ("Size,strange,mean,error", UNTOLD.format("the disorder", "Size, strange, mean, error",
+         "size=Size,disorder=...,mean=mean,error=error")),
+        ("size,disordr,mean,error", UNTOLD.format("the disorder", "size, disordr, mean, error",
+         "size=size,disorder=disordr,mean=mean,error=error")),
+        ("L,N,mean,error", UNTOLD.format("the size and the disorder", "L, N, mean, error",
+         "size=...,disorder=...,mean=mean,error=error")),
+        ("L,W,r,S", UNTOLD.format("the means (or the raw values)", "L, W, r, S",
+         "size=L,disorder=W,mean=...,error=... (value=... for raw values)")),
+        ("L,W,seed,weight", UNTOLD.format("the means (or the raw values)", "L, W, seed, weight",
+         "size=L,disorder=W,mean=...,error=... (value=... for raw values)")),
+        ("size,disorder,mean,std", "column 'std' " + SPREAD.format("std")),
+        ("size,disorder,mean,err", "column 'err' " + SPREAD.format("err")),
+        ("size,disorder,mean,Error", "column 'Error' " + SPREAD.format("Error")),
+        ("size,disorder,mean,sigma", "column 'sigma' " + SPREAD.format("sigma")),
+        ("size,disorder,mean,deviation", "a standard deviation becomes a standard error only with the number of "
+         "realisations; the columns are size, disorder, mean, deviation; give its column with --columns samples=... or "
+         "one number for all with --samples-each N"),
+        ("size,disorder,mean,weight", "no column holds the error of the mean; the columns are size, disorder, mean, "
+         "weight; name it with --columns error=... (standard error) or deviation=... (standard deviation over "
+         "realisations), or add it: the standard deviation over realisations divided by the square root of their "
+         "number"),
+        ("8,1,0.5,0.01", "the 4 columns have no names; say what they hold, in their order, for example --columns "
+         "size,disorder,mean,error"),
+        ("W,8,10,12", "the columns are W, 8, 10, 12; if there is one for each size, say so with --columns "
+         "disorder=W,mean={size} (and error=... or deviation=... in the same way)"),
+        ("W,L8,L10,L12", "no column holds the error of the mean; the columns are L{size}, W; name it with --columns "
+         "error=... (standard error) or deviation=... (standard deviation over realisations), or add it: the standard "
+         "deviation over realisations divided by the square root of their number"),
         ('size,"disorder,mean,error', "the quotation marks do not match; remove them"),
-        ("a," * 15 + "b", "column 'a' occurs twice; give each column its own name"),
         ("x" * 100_001, "the line is longer than 100000 characters; this is not a summary table"),
     ],
 )  # fmt: skip
 def test_header(csv_fault, header, text):
-    """A header that lacks, repeats or hides a column is refused with the columns seen and the remedy."""
+    """A header that leaves open what a column holds is refused with the columns seen and the option that settles it."""
     assert csv_fault(f"# a comment\n\n{header}\n{EIGHT}{TWELVE}") == f"run.csv, line 3: {text}"
 
 
 def test_long_header_is_shortened(csv_fault):
     """Of many columns twelve are named, and a long name is cut."""
-    header = ",".join([*(f"c{i}" for i in range(13)), "y" * 50])
-    seen = ", ".join(f"c{i}" for i in range(12))
-    expected = (
-        "run.csv, line 1: columns 'size' and 'disorder' and 'mean' and 'error' are missing; the columns are "
-        f"{seen} and 2 more; " + NO_ERROR.format("the standard deviation over disorder realisations")
-    )
-    assert csv_fault(f"{header}\n1\n") == expected
+    header = ",".join([*(f"c{chr(97 + i)}" for i in range(13)), "y" * 50])
+    seen = ", ".join(f"c{chr(97 + i)}" for i in range(12))
+    expected = "run.csv, line 1: " + UNTOLD.format(
+        "the size and the disorder and the means (or the raw values)", f"{seen} and 2 more",
+        "size=...,disorder=...,mean=...,error=... (value=... for raw values)",
+    )  # fmt: skip
+    assert csv_fault(f"{header}\n{','.join('1' * 14)}\n") == expected
+
+
+@pytest.mark.parametrize(
+    ("header", "text"),
+    [
+        ("size,disorder,mean,weight", "column 'error' is missing; the columns are size, disorder, mean, weight; "
+         + NO_ERROR.format("the standard deviation over disorder realisations")),
+        ("size,disorder,mean,std", "column 'error' is missing; the columns are size, disorder, mean, std; "
+         + NO_ERROR.format("'std'")),
+        ("L,W,mean,error", "columns 'size' and 'disorder' are missing; the columns are L, W, mean, error; "
+         "rename 'L' to 'size' and 'W' to 'disorder' if that is what they hold"),
+        ("size,disorder,mean,mean", "column 'mean' occurs twice; give each column its own name"),
+        ("8,1,0.5,0.01", "the first row holds numbers, so the columns have no names; put the line "
+         "size,disorder,mean,error above it"),
+    ],
+)  # fmt: skip
+def test_header_of_a_summary_that_was_asked_for(tmp_path, header, text):
+    """Asked to read the program's own summary, the reader takes no other names."""
+    path = tmp_path / "run.csv"
+    path.write_text(f"# a comment\n\n{header}\n{EIGHT}{TWELVE}")
+    assert fault(path, layout="summary-csv") == f"run.csv, line 3: {text}"
 
 
 @pytest.mark.parametrize(
@@ -109,11 +142,11 @@ def test_long_header_is_shortened(csv_fault):
         ("8,5,NaN,0.01", "mean", "'NaN' is not a finite number; correct it or remove the row"),
         ("8,-inf,0.5,0.01", "disorder", "'-inf' is not a finite number; correct it or remove the row"),
         ("8,5,1e999,0.01", "mean", "'1e999' is larger than 1e+100; use other units"),
-        ("8,5,0.5,0", "error", "a standard error must be positive, not '0'; measure it or remove the row"),
-        ("8,5,0.5,-0.01", "error", "a standard error must be positive, not '-0.01'; measure it or remove the row"),
-        ("8,5,0.5,1e-400", "error", "a standard error must be positive, not '1e-400'; measure it or remove the row"),
-        ("0,5,0.5,0.01", "size", "a size must be positive, not '0'"),
-        ("-8,5,0.5,0.01", "size", "a size must be positive, not '-8'"),
+        ("8,5,0.5,0", "error", "a standard error must be positive, not 0; measure it or remove the row"),
+        ("8,5,0.5,-0.01", "error", "a standard error must be positive, not -0.01; measure it or remove the row"),
+        ("8,5,0.5,1e-400", "error", "a standard error must be positive, not 0; measure it or remove the row"),
+        ("0,5,0.5,0.01", "size", "a size must be positive, not 0"),
+        ("-8,5,0.5,0.01", "size", "a size must be positive, not -8"),
     ],
 )
 def test_cell(csv_fault, row, column, text):
@@ -124,10 +157,10 @@ def test_cell(csv_fault, row, column, text):
 @pytest.mark.parametrize(
     ("count", "text"),
     [
-        ("2.5", "'2.5' is not a positive whole number"),
-        ("0", "'0' is not a positive whole number"),
-        ("-3", "'-3' is not a positive whole number"),
-        ("1e17", "'1e17' is not a positive whole number"),
+        ("2.5", "2.5 is not a positive whole number of realisations"),
+        ("0", "0 is not a positive whole number of realisations"),
+        ("-3", "-3 is not a positive whole number of realisations"),
+        ("1e17", "1e+17 is not a positive whole number of realisations"),
         ("many", "'many' is not a number"),
         ("", "the cell is empty, but other rows of this size have a count; give all or none"),
     ],
@@ -143,7 +176,8 @@ def test_samples(csv_fault, count, text):
     ("content", "text"),
     [
         (HEADER + EIGHT + TWELVE + "8,2.0,0.4,0.02\n",
-         ", lines 3 and 10: size 8 at disorder 2 occurs twice; keep one row or average them"),
+         ", lines 3 and 10: size 8 at disorder 2 occurs twice; keep one row or average them "
+         "(raw values are declared with --columns value=...)"),
         (HEADER + EIGHT + "12,1,0.5\n", ", line 6: 3 values under 4 columns (size, disorder, mean, error); "
          "complete or remove the row"),
         (HEADER + EIGHT + "12\n", ", line 6: 1 value under 4 columns (size, disorder, mean, error); "
@@ -219,7 +253,9 @@ def test_not_a_file(tmp_path):
 
 def test_unknown_layout_or_label(tmp_path):
     """A layout or label that does not exist is answered with those that do."""
-    with pytest.raises(ConfigurationError, match=r"^there is no layout 'xml'; the layouts are hdf5, summary-csv$"):
+    with pytest.raises(
+        ConfigurationError, match=r"^there is no layout 'xml'; the layouts are hdf5, summary-csv, wide, table$"
+    ):
         read("any.csv", layout="xml")
     path = tmp_path / "run.csv"
     path.write_text(HEADER + EIGHT + TWELVE)

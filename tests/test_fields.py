@@ -27,6 +27,11 @@ TYPES = {
     "list of number": lambda value: isinstance(value, list) and all(map(TYPES["number"], value)),
 }
 
+#: Every option of reading, though no file would need them all.
+INPUT = dl.InputOptions(
+    layout="table", columns="size=L", sizes=[8, 12], pattern="L{size}", axes=["size"], separator="tab", header=False,
+    samples_each=3, error_each=0.1, skip_cut_lines=True, average="median", kind="counts", paired=False,
+)  # fmt: skip
 OWN_FORM = {
     "mine": {
         "x": "(W - W_c) * L",
@@ -86,6 +91,7 @@ def real():
     settings = dl.Settings(
         ansatze=["power-law", "mine"], forms=OWN_FORM, quick=True, draws=200, smallest_size=8, window=(2, 6),
         labels={"disorder_unit": "J", "ergodic_value": 0.53, "localised_value": None},
+        input=INPUT,
     )  # fmt: skip
     return json.loads(to_json(dl.analyse(curves, settings=settings)))
 

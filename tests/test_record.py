@@ -37,6 +37,7 @@ SCHEMA = {
     "config": {
         "ansatze": [TEXT], "window": None, "smallest_size": MAYBE, "quick": FLAG, "labels": {...: TEXT},
         "draws": NUMBER, "forms": {...: {"x": TEXT, "hypothesis": TEXT, "parameters": {...: {...: TEXT}}}},
+        "input": {...: TEXT},
     },
     "crossings": [
         {

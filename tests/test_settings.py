@@ -6,10 +6,10 @@ import numpy as np
 import pytest
 
 from driftline.curves import Curve, Curves
-from driftline.errors import ConfigurationError
+from driftline.errors import ConfigurationError, suggestion
 from driftline.report.configuration import to_toml
 from driftline.scaling.defaults import DEFAULT_ANSATZE
-from driftline.settings import MIN_DRAWS, Settings, suggestion
+from driftline.settings import MIN_DRAWS, Settings
 
 
 def refusal(text):

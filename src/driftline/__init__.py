@@ -41,6 +41,7 @@ if TYPE_CHECKING:
     from driftline.figures.drift import draw_drift as draw_drift
     from driftline.inference.intervals import Interval as Interval
     from driftline.readers import read as read
+    from driftline.reading import InputOptions as InputOptions
     from driftline.report.record import record as record
     from driftline.report.summary import summary as summary
     from driftline.report.writers import write_report as write_report
@@ -65,6 +66,7 @@ _HOMES = {
     "figures.drift": ("draw_drift",),
     "inference.intervals": ("Interval",),
     "readers": ("read",),
+    "reading": ("InputOptions",),
     "report.record": ("record",),
     "report.summary": ("summary",),
     "report.writers": ("write_report",),

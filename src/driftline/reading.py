@@ -117,6 +117,16 @@ class InputOptions:
                 raise ConfigurationError(f"{where}: unknown key {name!r}; {suggestion(name, _CHECKS)}")
         return cls(**{name: _CHECKS[name](value, f"{where}.{name}") for name, value in table.items()})
 
+    @classmethod
+    def names(cls) -> tuple[str, ...]:
+        """The fields, in order."""
+        return tuple(part.name for part in fields(cls))
+
+    def to_dict(self) -> dict[str, Any]:
+        """The object ``config.input`` of `result.json`: what differs from the defaults."""
+        pairs = [f"{role}={place}" for role, place in self.named.items()]
+        return {**self.given(), **({"columns": pairs} if pairs else {})}
+
     def over(self, base: InputOptions) -> InputOptions:
         """`base`, with what is given here put over it, key by key."""
         return InputOptions(**{**base.given(), **self.given()})
@@ -162,7 +172,7 @@ def _columns(value: Any, where: str) -> Columns:
     if isinstance(value, Mapping):
         return {_role(role, where): _place(place, f"{where}.{role}") for role, place in value.items()}
     if not isinstance(value, Iterable):
-        raise ConfigurationError(f"{where}: must be a table such as size = \"L\" or a list of roles, not {value!r}")
+        raise ConfigurationError(f'{where}: must be a table such as size = "L" or a list of roles, not {value!r}')
     roles = tuple(role if role == SKIPPED else _role(role, where) for role in value)
     return roles or {}
 

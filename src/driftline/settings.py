@@ -131,7 +131,7 @@ class Settings:
 
         names = (part.name for part in fields(self) if part.name not in ("seed", "jobs", "forms", "input"))
         forms = {form.name: form_table(form) for form in self.forms}
-        return {**attributes(self, *names), "forms": forms, "input": self.input.given()}
+        return {**attributes(self, *names), "forms": forms, "input": self.input.to_dict()}
 
     def select(self, curves: Curves) -> Curves:
         """The part of `curves` that window and smallest size leave.

@@ -22,6 +22,7 @@ from driftline.cli.options import (
     seed_option,
     selection_options,
 )
+from driftline.cli.reading import read_data, reading_options, taken
 from driftline.cli.screen import say, show, written
 
 WRITING_FROM = 0.93  # share of the wall time after which only files are written, for the progress bar
@@ -30,6 +31,7 @@ EXAMPLES = examples(
     "driftline analyse curves.h5 --quick --out first-look",
     "driftline analyse curves.csv --window 14 19 --smallest-size 8",
     "driftline analyse curves.csv --ansatz power-law --ansatz power-law:corrected",
+    "driftline analyse runs --pattern 'L{size}/W{disorder}/r.dat'",
     "driftline analyse curves.csv --json | jq .verdict.code",
 )
 
@@ -46,6 +48,7 @@ EXAMPLES = examples(
 @force_option()
 @quiet_option()
 @json_option("Print result.json and nothing else; a folder is then written only if --out names one.")
+@reading_options
 def analyse(
     path: Path, config: Path | None, out: Path | None, force: bool, quiet: bool, as_json: bool, **options: Any
 ) -> None:
@@ -59,6 +62,7 @@ def analyse(
 
     folder = default_folder(path) if out is None and not as_json else out
     options["ansatze"] = options["ansatze"] or None
+    options["input"] = taken(options)
     settings = Settings.resolve(config, options, {"jobs": cores()})
     if folder is not None:
         check_folder(folder, force=force)
@@ -78,9 +82,8 @@ def _analysed(path: Path, settings: Any, folder: Path | None, force: bool, quiet
     """The analysis, and its files where there is a folder to write."""
     from driftline.analysis import analyse
     from driftline.progress import part, terminal_progress
-    from driftline.readers import read
 
-    curves = read(path, **settings.labels)
+    curves = read_data(path, settings)
     settings.select(curves)  # says what is wrong with a window before anything else happens
     with terminal_progress(quiet=quiet) as progress:
         end = 1.0 if folder is None else WRITING_FROM

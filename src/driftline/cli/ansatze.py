@@ -3,16 +3,19 @@
 from __future__ import annotations
 
 from pathlib import Path
+from typing import Any
 
 import click
 
 from driftline.cli.options import config_option, data_path
+from driftline.cli.reading import read_data, reading_options, taken
 
 
 @click.command()
 @data_path(required=False)
 @config_option("TOML file with forms of your own.")
-def ansatze(path: Path | None, config: Path | None) -> None:
+@reading_options
+def ansatze(path: Path | None, config: Path | None, **options: Any) -> None:
     """List the scaling ansätze.
 
     With formula, parameters and priors; if PATH is given, the priors for the curves in it.
@@ -20,11 +23,6 @@ def ansatze(path: Path | None, config: Path | None) -> None:
     from driftline.report.listing import listing
     from driftline.settings import Settings
 
-    settings = Settings.resolve(config)
-    if path is None:
-        curves = None
-    else:
-        from driftline.readers import read
-
-        curves = settings.select(read(path, **settings.labels))
+    settings = Settings.resolve(config, {"input": taken(options)})
+    curves = None if path is None else settings.select(read_data(path, settings))
     click.echo(listing(curves, settings.forms), nl=False)

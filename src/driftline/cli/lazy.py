@@ -8,7 +8,7 @@ from typing import Any
 
 import click
 
-from driftline.settings import suggestion
+from driftline.errors import suggestion
 
 
 class LazyGroup(click.Group):

@@ -8,7 +8,6 @@ from __future__ import annotations
 
 import os
 from collections.abc import Mapping
-from dataclasses import fields
 from pathlib import Path
 from typing import Any
 
@@ -78,7 +77,7 @@ def read(
 
 def split_words(input: InputOptions | None, words: Mapping[str, Any]) -> tuple[InputOptions, dict[str, Any]]:
     """Keywords of `read` as options and labels."""
-    names = {part.name for part in fields(InputOptions)}
+    names = InputOptions.names()
     given = InputOptions(**{name: value for name, value in words.items() if name in names})
     labels = {name: value for name, value in words.items() if name not in names}
     return given.over(input or InputOptions()), labels

@@ -1,7 +1,7 @@
 """Pieces of columns to curves: averaged rows become points, raw values go through `driftline.readers.samples`.
 
-Every layout for tables, folders and arrays ends here, so that faults, sorting and the conversion of a standard deviation
-are the same everywhere.
+Every layout for tables, folders and arrays ends here, so that faults, sorting and the conversion of a standard
+deviation are the same everywhere.
 """
 
 from __future__ import annotations
@@ -163,7 +163,9 @@ def _with_error(piece: Piece, options: InputOptions) -> Piece:
     if options.samples_each is not None and "samples" not in data:
         data["samples"] = np.full(piece.rows, float(options.samples_each))
     if "error" not in data and "deviation" in data:
-        _check_positive(piece, "deviation", "a standard deviation must be positive, not {:g}; measure it or remove the row")
+        _check_positive(
+            piece, "deviation", "a standard deviation must be positive, not {:g}; measure it or remove the row"
+        )
         missing = np.flatnonzero(np.isnan(data["samples"]))
         if missing.size:
             problem = "without the number of realisations a standard deviation does not give a standard error; add it"
@@ -188,8 +190,8 @@ def _refuse_repeats(pieces: Sequence[Piece]) -> None:
             before, count = first.setdefault(point, (piece, row))
             if (before, count) != (piece, row):
                 raise InputError(
-                    f"size {point[0]:g} at disorder {point[1]:g} occurs twice; keep one row or average them (raw values "
-                    "are declared with --columns value=...)",
+                    f"size {point[0]:g} at disorder {point[1]:g} occurs twice; keep one row or average them "
+                    "(raw values are declared with --columns value=...)",
                     where=_two_places(before.place(count, None), piece.place(row, None)),
                 )
 

@@ -13,7 +13,7 @@ from dataclasses import dataclass, replace
 
 from driftline.errors import ConfigurationError, InputError
 from driftline.readers.pattern import Pattern
-from driftline.readers.roles import Scene, assigned, known_as
+from driftline.readers.roles import Scene, assigned, known_as, size_word
 from driftline.reading import SKIPPED, InputOptions
 from driftline.wording import listed, shown
 
@@ -139,8 +139,8 @@ def _sets_in_order(
         allowed = (len(options.sizes), 1) if role not in ("mean", "value") else (len(options.sizes),)
         if len(found) not in allowed:
             raise ConfigurationError(
-                f"columns: there {'are' if len(found) > 1 else 'is'} {len(found)} of {role!r}, but {len(options.sizes)} "
-                "sizes are given; give one for each size"
+                f"columns: there {'are' if len(found) > 1 else 'is'} {len(found)} of {role!r}, but "
+                f"{len(options.sizes)} sizes are given; give one for each size"
             )
     for index, size in enumerate(options.sizes):
         yield size, {role: found[index if len(found) > 1 else 0] for role, found in places.items()}
@@ -163,8 +163,8 @@ def _refuse_nameless(names: Sequence[str], scene: Scene) -> None:
     example += ["mean", "error"] if len(names) >= len(example) + 2 else ["value"]
     example += [SKIPPED] * (len(names) - len(example))
     raise InputError(
-        f"the {len(names)} {scene.word}{'s' * (len(names) != 1)} have no names; say what they hold, in their order, for "
-        f"example --columns {','.join(example)}",
+        f"the {len(names)} {scene.word}{'s' * (len(names) != 1)} have no names; say what they hold, in their order, "
+        f"for example --columns {','.join(example)}",
         where=scene.where,
     )
 
@@ -176,7 +176,9 @@ def _by_size(names: Sequence[str], scene: Scene) -> Choice | None:
     """The choice for a wide table, or None if this is not one."""
     given = [place for place in scene.options.named.values() if HOLE in place]
     groups = {place: _matches(place, names) for place in given}
-    if not given:
+    if given:
+        groups |= _companions(groups, names)
+    else:
         if "size" in scene.elsewhere or _holds_size(names, scene.options):
             return None
         groups = _templates(names, trusted=True)
@@ -188,6 +190,14 @@ def _by_size(names: Sequence[str], scene: Scene) -> Choice | None:
     roles = assigned(collapsed, replace(scene, elsewhere=scene.elsewhere | {"size"}))
     unused = tuple(name for name in collapsed if name not in roles.values())
     return Choice(tuple(_sets_by_name(roles, groups, names, scene)), {"size": "the names", **roles}, unused, roles)
+
+
+def _companions(groups: Mapping[str, Mapping[float, int]], names: Sequence[str]) -> dict[str, dict[float, int]]:
+    """Further columns, one for each of the sizes that were asked for: errors beside means, for example."""
+    taken = {index for group in groups.values() for index in group.values()}
+    sizes = {size for group in groups.values() for size in group}
+    others = _templates([name if index not in taken else "" for index, name in enumerate(names)], trusted=False)
+    return {name: group for name, group in others.items() if set(group) == sizes}
 
 
 def _holds_size(names: Sequence[str], options: InputOptions) -> bool:
@@ -211,7 +221,7 @@ def _templates(names: Sequence[str], *, trusted: bool) -> dict[str, dict[float, 
     """
     groups: dict[str, dict[float, int]] = {}
     for index, name in enumerate(names):
-        slots = [m for m in _SLOT.finditer(name) if not trusted or "size" in known_as(m[1])]
+        slots = [m for m in _SLOT.finditer(name) if not trusted or size_word(m[1])]
         if len(slots) == 1:
             slot = slots[0]
             groups.setdefault(f"{name[: slot.start(3)]}{HOLE}{name[slot.end(3) :]}", {})[float(slot[3])] = index
@@ -224,8 +234,9 @@ def _refuse_untold(groups: Mapping[str, Mapping[float, int]], names: Sequence[st
     disorder = scene.options.named.get("disorder") or next((n for n in names if "disorder" in known_as(n)), "...")
     first = next(iter(groups))
     raise InputError(
-        f"the {scene.word}s are {listed(name or 'one without a name' for name in names)}; if there is one for each size, "
-        f"say so with --columns disorder={disorder},mean={first} (and error=... or deviation=... in the same way)",
+        f"the {scene.word}s are {listed(name or 'one without a name' for name in names)}; if there is one for each "
+        f"size, say so with --columns disorder={disorder},mean={first} (and error=... or deviation=... in the same "
+        "way)",
         where=scene.where,
     )
 
@@ -236,7 +247,9 @@ def _sets_by_name(
     main = roles.get("mean", roles.get("value", ""))
     if not groups.get(main):
         what = "mean" if "mean" in roles else "value"
-        raise InputError(f"no {scene.word} fits {what}={main}; the {scene.word}s are {listed(names)}", where=scene.where)
+        raise InputError(
+            f"no {scene.word} fits {what}={main}; the {scene.word}s are {listed(names)}", where=scene.where
+        )
     for size in sorted(groups[main]):
         chosen = {}
         for role, place in roles.items():

@@ -1,7 +1,7 @@
 """Which column holds what: the names that people use, and the sentences for what cannot be told from them.
 
-A column gets a role from its name only if the name can mean nothing else and no other column claims the role. Everything
-beyond that the user must say, above all whether a spread is a standard error or a standard deviation.
+A column gets a role from its name only if the name can mean nothing else and no other column claims the role.
+Everything beyond that the user must say, above all whether a spread is a standard error or a standard deviation.
 """
 
 from __future__ import annotations
@@ -12,7 +12,7 @@ from dataclasses import dataclass, field
 from difflib import get_close_matches
 
 from driftline.errors import InputError
-from driftline.reading import InputOptions
+from driftline.reading import ROLES, InputOptions
 from driftline.wording import listed, shown
 
 #: Common practice: names under which people store things, in lower case. One letter counts as well: papers and scripts
@@ -22,8 +22,9 @@ _NAMES: Mapping[str, tuple[str, ...]] = {
     "disorder": ("disorder", "w", "h", "delta", "v", "lambda", "strength", "disorder_strength", "dis"),
     "mean": ("mean", "average", "avg"),
     "error": ("sem", "stderr", "std_err", "standard_error", "std_error", "stderror"),
-    "samples": ("samples", "realisations", "realizations", "count", "counts", "n", "nsamples", "n_samples", "num_samples",
-                "nreal", "n_real", "nrealisations", "nrealizations", "n_realisations", "n_realizations", "ndis"),
+    "samples": ("samples", "realisations", "realizations", "count", "counts", "n", "nsamples", "n_samples",
+                "num_samples", "nreal", "n_real", "nrealisations", "nrealizations", "n_realisations",
+                "n_realizations"),
     "realisation": ("realisation", "realization", "seed", "sample", "sample_id", "real", "realisation_id",
                     "realization_id", "disorder_realisation", "disorder_realization"),
 }  # fmt: skip
@@ -31,7 +32,7 @@ _NAMES: Mapping[str, tuple[str, ...]] = {
 _OBSERVABLES = ("value", "r", "s", "y", "ratio", "gap_ratio", "gapratio", "entropy", "entanglement", "observable")
 #: A spread of which nobody can tell whether it is a standard error or a standard deviation.
 _SPREADS = ("err", "error", "std", "sd", "stdev", "stddev", "std_dev", "sigma", "dy", "uncertainty", "errorbar", "dev")
-_STATISTICS = ("mean", "average", "avg", "sem", "stderr", *_SPREADS)
+_STATISTICS = ("mean", "average", "avg", "sem", "stderr", "count", *_SPREADS)
 
 OBSERVABLE, SPREAD = "observable", "spread"
 MOST_COMPARED = 200  # names looked at for a suggestion: comparing takes long
@@ -62,9 +63,17 @@ def known_as(name: str) -> tuple[str, ...]:
     return tuple(role for role, names in _NAMES.items() if word in names)
 
 
+def size_word(word: str) -> str:
+    """The end of `word` that names a size, or nothing: all of ``L`` or ``size``, the ``L`` of ``errL`` and ``rL``."""
+    if "size" in known_as(word):
+        return word
+    known = word[:-1].lower() in (*_STATISTICS, *_OBSERVABLES)
+    return word[-1] if known and word[-1:] in ("L", "N") else ""
+
+
 def _known_by_size(name: str) -> tuple[str, ...]:
     """What the columns called `name` with a size for ``{size}`` hold: the word for size in it tells nothing else."""
-    rest = re.sub(r"([A-Za-z]*)[=_ -]*\{size\}", lambda m: "" if "size" in known_as(m[1]) else m[1], name)
+    rest = re.sub(r"([A-Za-z]*)[=_ -]*\{size\}", lambda m: m[1][: len(m[1]) - len(size_word(m[1]))], name)
     return (known_as(rest) if re.search("[A-Za-z]", rest) else ()) or (OBSERVABLE,)
 
 
@@ -113,7 +122,7 @@ def assigned(names: Sequence[str], scene: Scene) -> dict[str, str]:
             roles[role] = name
     _take_observable(roles, [name for name in free if name not in roles.values()], scene)
     _check_complete(roles, names, scene)
-    return roles
+    return {role: roles[role] for role in ROLES if role in roles}
 
 
 def _asked(names: Sequence[str], scene: Scene) -> dict[str, str]:
@@ -147,8 +156,11 @@ def _take_observable(roles: dict[str, str], free: Sequence[str], scene: Scene) -
     able = [name for name in free if OBSERVABLE in known_as(name)]
     averaged = "error" in roles or "deviation" in roles or scene.options.error_each is not None
     raw = "realisation" in roles or "realisation" in scene.elsewhere
+    wide = len(able) == 1 and "{size}" in able[0]  # a row for each disorder: averaged, as long as nothing says raw
     if len(able) == 1 and averaged != raw:
         roles["mean" if averaged else "value"] = able[0]
+    elif wide and not raw:
+        roles["mean"] = able[0]
 
 
 def _check_complete(roles: Mapping[str, str], names: Sequence[str], scene: Scene) -> None:
@@ -170,10 +182,16 @@ def _check_complete(roles: Mapping[str, str], names: Sequence[str], scene: Scene
 def _refuse_missing(missing: Sequence[str], roles: Mapping[str, str], names: Sequence[str], scene: Scene) -> None:
     words = {"mean": "the means (or the raw values)"}
     asked = " and ".join(words.get(role, f"the {role}") for role in missing)
-    example = [f"{role}={roles.get(role, '...')}" for role in ("size", "disorder") if role not in scene.elsewhere]
-    example.append(f"value={roles['value']}" if "value" in roles else f"mean={roles.get('mean', '...')}")
+    spare = [name for name in names if name not in roles.values()][:MOST_COMPARED]
+
+    def place(role: str) -> str:
+        near = get_close_matches(role, spare, n=1, cutoff=0.8)
+        return roles.get(role, near[0] if near else "...")
+
+    example = [f"{role}={place(role)}" for role in ("size", "disorder") if role not in scene.elsewhere]
+    example.append(f"value={roles['value']}" if "value" in roles else f"mean={place('mean')}")
     if "value" not in roles:
-        example.append(f"error={roles.get('error', '...')}")
+        example.append(f"error={place('error')}")
     raw = " (value=... for raw values)" if "mean" in missing else ""
     raise InputError(
         f"the names do not tell which {scene.word} holds {asked}; {_seen(names, scene)}; say it with "

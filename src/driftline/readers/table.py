@@ -1,8 +1,8 @@
 """Text tables: the program's own summary CSV, and long or wide tables with any column names.
 
 The summary CSV has one row per size and disorder under the header ``size,disorder,mean,error[,samples]``; it is plain
-text in UTF-8 (a byte-order mark, any line ending and gzip will do), columns in any order, further columns ignored with a
-note. Lines that begin with ``#`` are comments. Comments above the header may carry labels, one each, all optional::
+text in UTF-8 (a byte-order mark, any line ending and gzip will do), columns in any order, further columns ignored with
+a note. Lines that begin with ``#`` are comments. Comments above the header may carry labels, one each, all optional::
 
     # observable: mean gap ratio
     # ergodic_value: 0.5307
@@ -10,14 +10,13 @@ note. Lines that begin with ``#`` are comments. Comments above the header may ca
     size,disorder,mean,error,samples
     8,1.0,0.5221,0.0011,4000
 
-A long table has the same rows, or one for each realisation, under other names or none, with other separators. A wide one
-has a row for each disorder and columns for each size.
+A long table has the same rows, or one for each realisation, under other names or none, with other separators. A wide
+one has a row for each disorder and columns for each size.
 """
 
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Mapping
-from dataclasses import replace
 from itertools import islice
 from pathlib import Path
 

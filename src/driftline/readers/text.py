@@ -1,8 +1,8 @@
 """A text file as a table: encoding, gzip, comments and labels, separator, header, and cells with their line numbers.
 
 Nothing here knows what the columns mean. The separator is the one of comma, semicolon and tab that every row holds
-equally often; where none is, runs of blanks separate. The standard library's csv module splits quoted lines on their own:
-unlike a columnar reader, it tells where a fault stands.
+equally often; where none is, runs of blanks separate. The standard library's csv module splits quoted lines on their
+own: unlike a columnar reader, it tells where a fault stands.
 """
 
 from __future__ import annotations
@@ -316,4 +316,3 @@ def _check_widths(
                 f"{len(row)} value{'s' * (len(row) != 1)} under {under}; complete or remove the row",
                 where=f"{place}, line {count}",
             )
-

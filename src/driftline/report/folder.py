@@ -16,7 +16,8 @@ MARK = "result.json"  # a folder with this file in it is one of ours
 
 def default_folder(data: Path) -> Path:
     """Folder beside the current directory's files that is named after the data file."""
-    return Path(f"{data.stem or data.name}-driftline")
+    named = data if data.name else data.resolve()  # "." has no name
+    return Path(f"{named.stem or named.name}-driftline")
 
 
 def check_folder(folder: Path, *, force: bool = False) -> None:

@@ -1,0 +1,60 @@
+"""The options that say how PATH is read, shared by every command that reads data."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from pathlib import Path
+from typing import TYPE_CHECKING, Any, TypeVar
+
+import click
+
+from driftline.cli.completion import Name
+from driftline.reading import AVERAGES, KINDS, SEPARATORS, InputOptions
+
+if TYPE_CHECKING:
+    from driftline.curves import Curves
+    from driftline.settings import Settings
+
+Function = TypeVar("Function", bound=Callable[..., Any])
+
+COLUMNS = "size=L,disorder=W,mean=r,error=sem, or the roles in the order of the columns: size,disorder,mean,error"
+
+
+def _layout_names() -> list[str]:
+    from driftline.readers import LAYOUTS
+
+    return [layout.name for layout in LAYOUTS]
+
+
+def reading_options(function: Function) -> Function:
+    """Every field of `InputOptions` as an option; `taken` collects them again."""
+    option = click.option
+    for decorate in reversed([
+        option("--layout", type=Name(_layout_names), metavar="NAME", help="Layout of the data [default: by content]."),
+        option("--columns", metavar="ROLES", help=f"What the columns, datasets or arrays hold: {COLUMNS}."),
+        option("--sizes", metavar="L,L,...", help="Sizes of the columns of a wide table without names."),
+        option("--pattern", metavar="PATTERN", help="Paths in a folder or HDF5, such as L{size}/W{disorder}/r.dat."),
+        option("--axes", metavar="AXES", help="Dimensions of an array, such as realisation,disorder,state."),
+        option("--separator", type=click.Choice(list(SEPARATORS)), help="What stands between the columns of a text."),
+        option("--header/--no-header", default=None, help="Whether the first row of a text file holds names."),
+        option("--samples-each", type=int, metavar="N", help="Realisations behind every mean, if no column holds it."),
+        option("--error-each", type=float, metavar="E", help="Standard error of every mean, if no column holds it."),
+        option("--skip-cut-lines", is_flag=True, default=None, help="Leave out a last line that was cut short."),
+        option("--average", type=click.Choice(AVERAGES), help="Average of raw values over realisations."),
+        option("--kind", type=click.Choice(KINDS), help="What raw values are; counts and yes-no get binomial errors."),
+        option("--paired/--unpaired", default=None, help="Whether raw values at several disorders share realisations."),
+    ]):  # fmt: skip
+        function = decorate(function)
+    return function
+
+
+def taken(options: dict[str, Any]) -> dict[str, Any]:
+    """Take the options of `reading_options` out of `options`, as the field ``input`` of the settings."""
+    return {name: options.pop(name) for name in InputOptions.names()}
+
+
+def read_data(path: Path, settings: Settings) -> Curves:
+    """The curves at `path`, read as the settings say."""
+    from driftline.readers import read
+
+    return read(path, input=settings.input, seed=settings.seed, **settings.labels)
