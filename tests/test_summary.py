@@ -3,9 +3,9 @@
 import pytest
 from analyses import CAUTION, OPENING, made_analysis, made_curves
 
+from driftline.blocks import WIDTH, lines
 from driftline.drift import LAWS
 from driftline.report import rows
-from driftline.report.blocks import WIDTH, lines
 from driftline.report.summary import blocks, summary
 from driftline.scaling.ansatz import available
 

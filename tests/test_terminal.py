@@ -6,10 +6,10 @@ import pytest
 from analyses import OPENING, made_analysis, made_curves
 from terminals import watched
 
+from driftline.blocks import BAD, Paragraph, Table, plain
 from driftline.cli.screen import WIDEST, safe, show
 from driftline.progress import part, terminal_progress
 from driftline.report import rows
-from driftline.report.blocks import BAD, Paragraph, Table, plain
 from driftline.report.summary import blocks, summary
 from driftline.scaling.ansatz import available
 

@@ -10,10 +10,13 @@ from typing import Any
 
 import numpy as np
 
+from driftline import numerals
+from driftline.blocks import Table
 from driftline.collapse import CollapseFit, Comparison, averaged, fit_collapse, weigh
 from driftline.costs import Cost, collapse_costs
 from driftline.crossings import Crossings, find_crossings
 from driftline.curves import Curves
+from driftline.display import Shown, symbol
 from driftline.drift import Drift, fit_drift
 from driftline.inference.intervals import Interval
 from driftline.parallel import Task, run_tasks
@@ -59,6 +62,13 @@ class Crossover:
     nu: Interval | None
     basis: tuple[str, ...]
 
+    @property
+    def systematic_text(self) -> str:
+        """The systematic part to the digits of the statistical one; a dash where there is none."""
+        if self.systematic is None:
+            return numerals.MISSING
+        return "+-" + numerals.rounded(self.systematic, self.disorder.sd)
+
     def to_dict(self) -> dict[str, Any]:
         """The object ``crossover`` of `result.json`."""
         disorder = {**plain(self.disorder), "systematic": plain(self.systematic)}
@@ -66,7 +76,7 @@ class Crossover:
 
 
 @dataclass(frozen=True, eq=False)
-class Analysis:
+class Analysis(Shown):
     """Everything found out about one set of curves; built by `analyse`."""
 
     curves: Curves
@@ -80,6 +90,29 @@ class Analysis:
     verdict: Verdict
     timing: dict[str, float] = field(default_factory=dict)
     costs: dict[str, tuple[Cost, ...]] = field(default_factory=dict)
+
+    def summary(self) -> str:
+        """What the terminal shows: verdict first, then numbers, then what to do."""
+        # the one import of a floor above, so that every result is asked for its summary in the same way
+        from driftline.report.summary import summary
+
+        return summary(self)
+
+    def crossover_table(self) -> Table:
+        """Crossover disorder and exponent with both intervals and the systematic part; no rows where there is none."""
+        columns = ("quantity", "value", "68 %", "95 %", "systematic")
+        found, labels = self.crossover, self.curves.labels
+        if found is None:
+            return Table("Crossover", columns, ())
+        unit = f" ({labels.disorder_unit})" if labels.disorder_unit else ""
+        name = f"{symbol(labels.disorder_symbol)}_c{unit}"
+        rows = ((name, *_value_and_limits(found.disorder), found.systematic_text),
+                ("nu", *_value_and_limits(found.nu), numerals.MISSING))  # fmt: skip
+        return Table(f"Crossover, from {' and '.join(found.basis)}", columns, rows)
+
+    def shown(self) -> tuple[Table | str, ...]:
+        """The verdict, the headline numbers, and the ansätze behind them."""
+        return (*self.verdict.shown(), self.crossover_table(), *self.comparison.shown())
 
     def to_dict(self) -> dict[str, Any]:
         """The content of `result.json` as plain dicts, lists, numbers, text and None.
@@ -100,6 +133,10 @@ class Analysis:
             "verdict": self.verdict.to_dict(),
             "timing": plain(self.timing),
         }
+
+
+def _value_and_limits(interval: Interval | None) -> tuple[str, str, str]:
+    return numerals.short(interval), numerals.bracket(interval, 68), numerals.bracket(interval)
 
 
 def _no_crossover() -> dict[str, Any]:

@@ -17,7 +17,10 @@ import numpy as np
 from scipy.special import logsumexp
 from scipy.stats import chi2
 
+from driftline import numerals
+from driftline.blocks import Table
 from driftline.curves import MIN_SIZES, Curves, FloatArray
+from driftline.display import Shown, symbol
 from driftline.errors import ConfigurationError
 from driftline.inference.importance import Mixture, WeightedDraws, adapt, fit_mixture, sample_until
 from driftline.inference.intervals import Interval
@@ -27,7 +30,7 @@ from driftline.plain import attributes, plain
 from driftline.scaling.ansatz import Ansatz, parse_ansatz
 from driftline.scaling.defaults import DEFAULT_ANSATZE
 from driftline.scaling.forms import Form
-from driftline.scaling.likelihood import TAU_PRIOR, Posterior
+from driftline.scaling.likelihood import NUISANCE, TAU_PRIOR, Posterior
 from driftline.sensitivity import PRIOR_SETS, PriorShift
 
 if TYPE_CHECKING:
@@ -124,7 +127,7 @@ class HeldOut:
 
 
 @dataclass(frozen=True, eq=False)
-class CollapseFit:
+class CollapseFit(Shown):
     """One ansatz fitted to one data set; built by `fit_collapse`."""
 
     ansatz: Ansatz
@@ -162,6 +165,35 @@ class CollapseFit:
         )
         return "\n".join(lines)
 
+    def table(self) -> Table:
+        """One row for each parameter, with its prior where it has one of its own."""
+        priors = {each.name: each.prior.describe() for each in (*self.ansatz.parameters, *NUISANCE)}
+        rows = tuple(
+            (
+                name + (" (set by the prior)" if name in self.prior_limited else ""),
+                numerals.up_down(interval).text,
+                numerals.bracket(interval, 68),
+                numerals.bracket(interval),
+                priors.get(name, numerals.MISSING),
+            )
+            for name, interval in self.parameters.items()
+        )
+        return Table(
+            f"{self.ansatz.name}: {self.ansatz.formula}", ("parameter", "value", "68 %", "95 %", "prior"), rows
+        )
+
+    def shown(self) -> tuple[Table | str, ...]:
+        """The parameters and the quality of the fit."""
+        size, disorder = self.quality.max_residual_at
+        return (
+            self.table(),
+            f"log evidence {numerals.plus_minus(self.log_evidence, self.log_evidence_error)}, "
+            f"chi2/dof {numerals.fixed(self.quality.chi2_per_dof, 2)}, "
+            f"p {numerals.probability(self.quality.p_value)}, largest residual "
+            f"{self.quality.max_residual:+.1f} errors at size {size:g}, disorder {disorder:g}",
+            *([] if self.sampler.converged else [f"Not converged: {self.sampler.note}."]),
+        )
+
     def to_dict(self, *, probability: float | None = None, costs: Sequence[Cost] = ()) -> dict[str, Any]:
         """This fit as an entry of ``collapse`` in `result.json`.
 
@@ -186,7 +218,7 @@ class CollapseFit:
 
 
 @dataclass(frozen=True, eq=False)
-class Comparison:
+class Comparison(Shown):
     """Several ansätze on the same data; `probabilities` give each hypothesis equal weight, split among its ansätze."""
 
     fits: tuple[CollapseFit, ...]
@@ -205,6 +237,30 @@ class Comparison:
             return None
         pairs = zip(self.fits, self.probabilities, strict=True)
         return float(sum(p for fit, p in pairs if fit.ansatz.hypothesis == hypothesis))
+
+    def table(self) -> Table:
+        """One row for each ansatz, the one of highest evidence first."""
+        best = max(fit.log_evidence for fit in self.fits)
+        pairs = zip(self.fits, self.probabilities, strict=True)
+        rows = tuple(
+            (
+                fit.ansatz.name,
+                numerals.fixed(fit.log_evidence - best, 1),
+                numerals.probability(probability),
+                numerals.short(fit.parameters.get("W_c")),
+                numerals.short(fit.parameters.get("nu")),
+                numerals.fixed(fit.quality.chi2_per_dof, 2),
+                numerals.probability(fit.quality.p_value),
+            )
+            for fit, probability in sorted(pairs, key=lambda pair: -pair[0].log_evidence)
+        )
+        disorder = symbol(self.fits[0].curves.labels.disorder_symbol)
+        columns = ("ansatz", "ln Z", "prob.", f"{disorder}_c", "nu", "chi2/dof", "p")
+        return Table("Collapse, ln Z relative to the best", columns, rows)
+
+    def shown(self) -> tuple[Table, ...]:
+        """The table of the ansätze."""
+        return (self.table(),)
 
     def to_dict(self, costs: Mapping[str, Sequence[Cost]] = MappingProxyType({})) -> list[dict[str, Any]]:
         """The list ``collapse`` of `result.json`; `costs` are those of each ansatz by name, where computed."""

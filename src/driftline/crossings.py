@@ -26,7 +26,10 @@ from typing import Any
 import numpy as np
 import numpy.typing as npt
 
+from driftline import numerals
+from driftline.blocks import Table
 from driftline.curves import Curves, FloatArray, Labels
+from driftline.display import Shown, symbol
 from driftline.errors import InputError
 from driftline.inference.intervals import Interval
 from driftline.plain import attributes
@@ -85,7 +88,7 @@ class Crossing:
 
 
 @dataclass(frozen=True, eq=False)
-class Crossings:
+class Crossings(Shown):
     """Crossings of all pairs of sizes, with the smooth curves they come from.
 
     Attributes
@@ -119,6 +122,26 @@ class Crossings:
     def to_dict(self) -> list[dict[str, Any]]:
         """The list `crossings` of `result.json`."""
         return [pair.to_dict() for pair in self.pairs]
+
+    def table(self) -> Table:
+        """One row for each pair of adjacent sizes."""
+        rows = tuple(
+            (
+                f"{each.sizes[0]:g}, {each.sizes[1]:g}",
+                numerals.probability(each.probability),
+                numerals.probability(each.separated),
+                numerals.short(each.disorder),
+                numerals.bracket(each.disorder),
+                numerals.short(each.inverse_nu),
+            )
+            for each in self.adjacent
+        )
+        columns = ("sizes", "prob.", "separated", symbol(self.labels.disorder_symbol), "95 %", "1/nu")
+        return Table("Crossings of adjacent sizes", columns, rows)
+
+    def shown(self) -> tuple[Table, ...]:
+        """The table of the adjacent sizes."""
+        return (self.table(),)
 
     def summary(self) -> str:
         """A table of at most 80 columns, one line for each pair."""

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Mapping
 from copy import deepcopy
-from dataclasses import dataclass, field, fields, replace
+from dataclasses import asdict, dataclass, field, fields, replace
 from itertools import pairwise
 from types import MappingProxyType
 from typing import Any, Literal
@@ -12,8 +12,11 @@ from typing import Any, Literal
 import numpy as np
 import numpy.typing as npt
 
+from driftline.blocks import Table
 from driftline.covariance import doubt
+from driftline.display import Shown, symbol
 from driftline.errors import ConfigurationError, InputError
+from driftline.plain import attributes, plain
 
 FloatArray = npt.NDArray[np.float64]
 DisorderKind = Literal["quenched", "quasiperiodic", "none"]
@@ -144,7 +147,7 @@ class Curve:
 
 
 @dataclass(frozen=True, eq=False)
-class Curves:
+class Curves(Shown):
     """Curves of all sizes, ordered by size, with what the numbers mean.
 
     Parameters
@@ -219,6 +222,33 @@ class Curves:
         """Whether any size brings a covariance of its points."""
         return any(curve.covariance is not None for curve in self.curves)
 
+    def table(self) -> Table:
+        """One row for each size: points, disorders, the median of their errors, and realisations."""
+        rows = tuple(
+            (
+                f"{curve.size:g}",
+                str(curve.disorder.size),
+                f"{curve.disorder[0]:g} to {curve.disorder[-1]:g}",
+                f"{np.median(curve.error):.2g}",
+                "-" if curve.samples is None else _range_of(curve.samples),
+                "no" if curve.covariance is None else "yes",
+            )
+            for curve in self.curves
+        )
+        unit = f" ({self.labels.disorder_unit})" if self.labels.disorder_unit else ""
+        heading = f"{self.labels.observable} at {len(self.curves)} sizes, {self.points} points"
+        disorder = f"{symbol(self.labels.disorder_symbol)}{unit}"
+        return Table(heading, ("size", "points", disorder, "median error", "realisations", "covariance"), rows)
+
+    def shown(self) -> tuple[Table, ...]:
+        """The table of the sizes."""
+        return (self.table(),)
+
+    def to_dict(self) -> dict[str, Any]:
+        """Labels and all points as plain data; null where there is no covariance or no count of realisations."""
+        names = ("size", "disorder", "mean", "error", "covariance", "samples")
+        return {"labels": plain(asdict(self.labels)), "curves": [attributes(curve, *names) for curve in self.curves]}
+
     def flat(self) -> tuple[FloatArray, FloatArray, FloatArray, FloatArray]:
         """Sizes, disorders, means and errors of all points, each of shape (points,), size by size."""
         size = np.concatenate([np.full(curve.disorder.size, curve.size) for curve in self.curves])
@@ -274,6 +304,11 @@ class Curves:
             if name not in names:
                 raise ConfigurationError(f"there is no label {name!r}; the labels are {', '.join(names)}")
         return Curves(self.curves, replace(self.labels, **changes), self.origin)
+
+
+def _range_of(counts: npt.NDArray[np.int64]) -> str:
+    low, high = int(counts.min()), int(counts.max())
+    return str(low) if low == high else f"{low} to {high}"
 
 
 def _line_of_text(value: object, name: str) -> str:

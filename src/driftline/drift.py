@@ -31,8 +31,10 @@ from scipy.special import log_ndtr, logsumexp, ndtr, ndtri
 from scipy.stats import rankdata
 
 from driftline import numerals
+from driftline.blocks import Table
 from driftline.crossings import Crossing, Crossings
 from driftline.curves import FloatArray
+from driftline.display import Shown
 from driftline.errors import ConfigurationError
 from driftline.inference.intervals import Interval
 from driftline.plain import attributes
@@ -364,7 +366,7 @@ class LawFit:
 
 
 @dataclass(frozen=True, eq=False)
-class Drift:
+class Drift(Shown):
     """All laws fitted to the positions of one source.
 
     Attributes
@@ -407,6 +409,42 @@ class Drift:
     def to_dict(self) -> dict[str, Any]:
         """The object `drift` of `result.json`."""
         return attributes(self, "source", "laws", "probability_bounded", "rate_per_site", "deciding_size")
+
+    def table(self) -> Table:
+        """One row for each law, the most probable first."""
+        rows = tuple(
+            (
+                law.name,
+                law.formula,
+                "yes" if law.bounded else "no",
+                numerals.probability(law.probability),
+                numerals.MISSING if law.limit is None else limit_text(law),
+                numerals.MISSING if law.limit is None or law.one_sided else numerals.bracket(law.limit),
+                numerals.fixed(law.chi2_per_dof, 2),
+            )
+            for law in sorted(self.laws, key=lambda law: -law.log_evidence)
+        )
+        columns = ("law", "formula", "bounded", "prob.", "limit", "95 %", "chi2/dof")
+        return Table(f"Drift of the {self.source} with size", columns, rows)
+
+    def sentences(self) -> list[str]:
+        """What the drift says beyond its table."""
+        # where nothing was fitted at all, the note says so, and the table of crossings shows why
+        sentences = [self.note] if self.note else list(self.excluded)
+        if self.probability_bounded is not None:
+            sentences.append(f"Bounded as L grows: probability {numerals.probability(self.probability_bounded)}.")
+        if self.rate_per_site is not None:
+            rate, limits = numerals.short(self.rate_per_site), numerals.bracket(self.rate_per_site)
+            sentences.append(f"Drift per unit of size: {rate}, 95 % {limits}.")
+        if self.deciding_size is not None:
+            sentences.append(
+                f"The two best laws part at L = {numerals.significant(self.deciding_size)} at today's errors."
+            )
+        return sentences
+
+    def shown(self) -> tuple[Table | str, ...]:
+        """The laws and what follows from them."""
+        return (self.table(), *self.sentences())
 
     def summary(self) -> str:
         """The laws as a table of at most 80 columns, with what follows from them."""

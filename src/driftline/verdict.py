@@ -12,6 +12,7 @@ from typing import Any
 from driftline import numerals
 from driftline.cautions import CROSSES, ESTABLISHED, POOR_P, Case, Caution, cautions
 from driftline.collapse import averaged
+from driftline.display import Shown
 from driftline.plain import attributes
 from driftline.scaling.forms import SizeIndependent
 from driftline.separation import THRESHOLD
@@ -26,7 +27,7 @@ LEAST_SIZES = 3  # two sizes have one crossing, which cannot be seen to drift or
 
 
 @dataclass(frozen=True)
-class Verdict:
+class Verdict(Shown):
     """What the data show.
 
     Parameters
@@ -51,6 +52,22 @@ class Verdict:
     probability_drift: float | None
     warnings: tuple[Caution, ...] = ()
     false_alarm: dict[str, float] = field(default_factory=dict)
+
+    def short_reasons(self) -> list[str]:
+        """The reasons; those that repeat a warning are shortened to a pointer to it."""
+        codes = [caution.code for caution in self.warnings]
+        repeated = [code for code in codes if any(each.startswith(f"{code}:") for each in self.reasons)]
+        new = [each for each in self.reasons if not any(each.startswith(f"{code}:") for code in codes)]
+        return new + ([f"see below: {', '.join(repeated)}"] if repeated else [])
+
+    def shown(self) -> tuple[str, ...]:
+        """Statement, reasons, and the warnings with what to do."""
+        return (
+            self.statement,
+            f"Verdict: {self.code}",
+            *(f"- {reason}" for reason in self.short_reasons()),
+            *(f"{each.code}: {each.message}. What to do: {each.action}." for each in self.warnings),
+        )
 
     def to_dict(self) -> dict[str, Any]:
         """The object ``verdict`` of `result.json`."""

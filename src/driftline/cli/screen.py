@@ -21,7 +21,7 @@ if TYPE_CHECKING:
     from rich.console import Console
     from rich.table import Table as RichTable
 
-    from driftline.report.blocks import Block, Table
+    from driftline.blocks import Block, Table
 
 WIDEST = 100  # longer lines are hard to read
 ROLES = {"good": "bold green", "bad": "bold red", "heading": "bold", "warning": "yellow", "text": ""}
@@ -30,7 +30,7 @@ ROLES = {"good": "bold green", "bad": "bold red", "heading": "bold", "warning": 
 def show(blocks: Iterable[Block]) -> None:
     """Print the blocks on standard output."""
     if not sys.stdout.isatty():
-        from driftline.report.blocks import plain
+        from driftline.blocks import plain
 
         click.echo(plain(blocks), nl=False)
         return
@@ -63,7 +63,7 @@ def safe(text: str) -> str:
 
 def text_width() -> int:
     """Columns to wrap running text to: those of the terminal up to `WIDEST`, or 80 where there is none."""
-    from driftline.report.blocks import WIDTH
+    from driftline.blocks import WIDTH
 
     return min(columns_of(sys.stdout), WIDEST) if sys.stdout.isatty() else WIDTH
 
@@ -79,7 +79,7 @@ def _set(console: Console, block: Block) -> None:
     from rich.padding import Padding
     from rich.text import Text
 
-    from driftline.report.blocks import Paragraph, records, too_narrow
+    from driftline.blocks import Paragraph, records, too_narrow
 
     if isinstance(block, Paragraph):
         for line in block.lines(min(console.width, WIDEST)):
@@ -98,7 +98,7 @@ def _table(table: Table, width: int) -> RichTable:
     from rich.table import Table as RichTable
     from rich.text import Text
 
-    from driftline.report.blocks import folded, gap_between, room_for_first
+    from driftline.blocks import folded, gap_between, room_for_first
 
     gap = gap_between(table, width)
     # the rule under the head is drawn through a divider of one blank, so the padding is what is left of the gap

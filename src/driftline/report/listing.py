@@ -7,9 +7,9 @@ from collections.abc import Sequence
 
 import numpy as np
 
+from driftline.blocks import WIDTH
 from driftline.curves import Curve, Curves
 from driftline.errors import ConfigurationError
-from driftline.report.blocks import WIDTH
 from driftline.scaling.ansatz import available, compose, parse_ansatz
 from driftline.scaling.forms import Form
 

@@ -6,9 +6,9 @@ from collections.abc import Iterator
 from pathlib import Path
 from typing import TYPE_CHECKING
 
+from driftline.blocks import BAD, BLANK, GOOD, HEADING, WARNING, Block, Paragraph, plain, spaced
 from driftline.report import rows
 from driftline.report.base import Writer
-from driftline.report.blocks import BAD, BLANK, GOOD, HEADING, WARNING, Block, Paragraph, plain, spaced
 
 if TYPE_CHECKING:
     from driftline.analysis import Analysis
