@@ -64,3 +64,31 @@ def test_probabilities_are_never_rounded_to_certainty():
         ">0.99",
         "1.00",
     ]
+
+
+@pytest.mark.parametrize(
+    ("median", "down", "up", "text"),
+    [
+        (16.53, 0.12, 0.12, "16.53(12)"),
+        (16.53, 0.12, 0.149, "16.53(13)"),  # 1.24 is within the scatter of the quantiles
+        (1.47, 0.26, 0.36, "1.47(+36-26)"),
+        (12.34, 1.04, 1.56, "12.3(+1.6-1.0)"),  # not 12.3(+16-10)
+        (0.63, 0.062, 0.31, "0.630(+310-62)"),
+        (0.63, 0.0062, 0.31, "0.630(+310-6)"),  # three digits of the larger at most
+        (250.0, 50.0, 150.0, "250(+150-50)"),
+        (3.2e-9, 1e-10, 3e-10, "3.20(+30-10)e-09"),
+        (0.5, 0.0, 0.0, "0.5"),
+    ],
+)
+def test_value_with_two_errors(median, down, up, text):
+    """Upper and lower error are both given where they differ by more than chance, worked out by hand."""
+    interval = Interval(median, median - down, median + up, median - 2 * down, median + 2 * up)
+    assert numerals.up_down(interval).text == text
+
+
+def test_statistical_and_systematic_error():
+    """Both are in units of the last digit, which the statistical one decides."""
+    assert numerals.quoted(16.52834, 0.1234, 0.05) == numerals.Quoted("16.53", ("12", "5"))
+    assert numerals.quoted(16.52834, 0.1234, 0.0) == numerals.Quoted("16.53", ("12", "0"))
+    assert numerals.quoted(16.52834, 0.1234, 2.5) == numerals.Quoted("16.53", ("0.12", "2.50"))
+    assert numerals.quoted(math.nan, 0.1, 0.1) == numerals.Quoted("-")

@@ -151,20 +151,6 @@ class CollapseFit(Shown):
         """Posterior draws of one parameter, shape (n,)."""
         return self.samples[:, self.names.index(name)]
 
-    def summary(self) -> str:
-        """A few lines for people."""
-        lines = [f"{self.ansatz.name}: {self.ansatz.formula}"]
-        for name, i in self.parameters.items():
-            mark = "  (set by the prior)" if name in self.prior_limited else ""
-            lines.append(f"  {name:6s} {i.median:.5g}  68 %: {i.low68:.5g} to {i.high68:.5g}"
-                         f"  95 %: {i.low95:.5g} to {i.high95:.5g}{mark}")  # fmt: skip
-        q = self.quality
-        lines.append(
-            f"  log evidence {self.log_evidence:.2f} +- {self.log_evidence_error:.2f}, chi2/dof {q.chi2_per_dof:.2f}, "
-            f"p {q.p_value:.2g}"
-        )
-        return "\n".join(lines)
-
     def table(self) -> Table:
         """One row for each parameter, with its prior where it has one of its own."""
         priors = {each.name: each.prior.describe() for each in (*self.ansatz.parameters, *NUISANCE)}
