@@ -11,6 +11,7 @@ import pytest
 from driftline.cautions import RULES
 from driftline.cli import COMMANDS
 from driftline.cli import driftline as command
+from driftline.readers.findings import RULES as RAW_RULES
 from driftline.report.writers import WRITERS
 
 ROOT = Path(__file__).parent.parent
@@ -63,9 +64,10 @@ def test_options_are_documented():
 
 def test_warnings_are_documented():
     """Each warning that can be raised has its row."""
-    source = (ROOT / "src" / "driftline" / "cautions.py").read_text(encoding="utf-8")
+    files = [ROOT / "src" / "driftline" / name for name in ("cautions.py", "readers/findings.py")]
+    source = "".join(file.read_text(encoding="utf-8") for file in files)
     codes = set(re.findall(r'^ +"([A-Z]+(?:_[A-Z]+)*)",$', source, re.MULTILINE))
-    assert len(codes) == len(RULES)
+    assert len(codes) == len(RULES) + len(RAW_RULES)
     assert sorted(code for code in codes if f"`{code}`" not in README) == []
 
 

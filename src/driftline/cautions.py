@@ -1,6 +1,7 @@
 """When a warning is raised: one small rule for each code, with the numbers behind it and what to do.
 
-Adding a warning is one function under `@rule` here.
+Adding a warning is one function under `@rule` here, or a rule in `driftline.readers.findings` if it is about the raw
+realisations that the curves were made of.
 """
 
 from __future__ import annotations
@@ -18,6 +19,7 @@ from driftline.crossings import Crossings
 from driftline.curves import Curves
 from driftline.drift import Drift
 from driftline.plain import plain
+from driftline.readers.findings import raw_findings
 from driftline.separation import Separation
 from driftline.stability import StabilityRow
 
@@ -82,8 +84,10 @@ def rule(function: Rule) -> Rule:
 
 
 def cautions(case: Case) -> tuple[Caution, ...]:
-    """All warnings that apply, in the order of the rules."""
-    return tuple(caution for caution in (check(case) for check in RULES) if caution is not None)
+    """All warnings that apply, in the order of the rules, then what the raw realisations showed."""
+    found = tuple(caution for caution in (check(case) for check in RULES) if caution is not None)
+    raw = raw_findings(case.curves)
+    return found + tuple(Caution(f.code, f.message, f.action, dict(f.numbers)) for f in raw)
 
 
 @rule

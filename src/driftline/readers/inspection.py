@@ -14,6 +14,7 @@ from itertools import pairwise
 import numpy as np
 
 from driftline.curves import Curve, Curves, FloatArray
+from driftline.readers.findings import raw_findings
 
 WIDTH = 80
 
@@ -51,6 +52,7 @@ def inspect_text(curves: Curves) -> str:
         "",
         *_ranges(curves),
         "",
+        *_realisations(curves),
         head,
         *(line for finding in findings for line in _wrapped(finding, "  - ")),
     ]
@@ -127,7 +129,31 @@ def _ranges(curves: Curves) -> list[str]:
     return lines + _field("Covariance", f"given at {correlated} of {len(curves.curves)} sizes")
 
 
+def _realisations(curves: Curves) -> list[str]:
+    """A table of what raw values showed, with a line on how to read it; nothing for averaged data."""
+    sizes = curves.origin.get("realisations", ())
+    if not sizes:
+        return []
+    lines = [f"{'size':>10} {'neighbours correlate':>21} {'points':>12} {'variance inflation':>19} {'stood twice':>12}"]
+    for size in sizes:
+        correlation, ratio = size["correlation"], size["error_ratio"]
+        known = "unknown" if correlation is None else f"{correlation:.2f} ({size['correlation_z']:+.1f} sd)"
+        inflation = "-" if ratio is None else f"{ratio**2:.3g}"
+        points = "correlated" if size["shared"] else "independent"
+        lines.append(f"{size['size']:>10g} {known:>21} {points:>12} {inflation:>19} {size['repeats']:>12}")
+    if any(size["error_ratio"] for size in sizes):
+        lines += _wrapped(
+            "Variance inflation: of the means, against counting all values as independent (median over disorders). "
+            "Errors over realisations, which are used, are its square root times larger."
+        )
+    return [*lines, ""]
+
+
 # ---------------------------------------------------------------- what looks wrong
+
+
+def _raw(curves: Curves) -> Iterator[str]:
+    return (finding.sentence for finding in raw_findings(curves))
 
 
 def _few_sizes(curves: Curves) -> Iterator[str]:
@@ -312,6 +338,7 @@ def _sits_at_two_blocks(curve: Curve) -> bool:
 
 
 CHECKS = (
+    _raw,
     _few_sizes,
     _constant_errors,
     _error_spread,
