@@ -244,8 +244,8 @@ def test_not_a_file(tmp_path):
     """Folders, devices, missing files and unknown layouts or labels are refused before anything is read."""
     assert fault(tmp_path / "gone.csv") == "gone.csv: there is no such file; check the path"
     (tmp_path / "folder").mkdir()
-    assert fault(tmp_path / "folder") == "folder: this is a folder; give a file (a summary CSV or HDF5)"
-    text = "folder: this is a folder; give a file (a summary CSV or HDF5)"
+    assert fault(tmp_path / "folder") == "folder: no file in this folder has a number in its path; it holds nothing"
+    text = "folder: this is a folder, and the layout summary-csv reads a file"
     assert fault(tmp_path / "folder", layout="summary-csv") == text
     os.mkfifo(tmp_path / "pipe")
     assert fault(tmp_path / "pipe") == "pipe: this is not a regular file; save the data to a file first"
@@ -254,7 +254,7 @@ def test_not_a_file(tmp_path):
 def test_unknown_layout_or_label(tmp_path):
     """A layout or label that does not exist is answered with those that do."""
     with pytest.raises(
-        ConfigurationError, match=r"^there is no layout 'xml'; the layouts are hdf5, summary-csv, wide, table$"
+        ConfigurationError, match=r"^there is no layout 'xml'; the layouts are folder, hdf5, summary-csv, wide, table$"
     ):
         read("any.csv", layout="xml")
     path = tmp_path / "run.csv"

@@ -57,4 +57,4 @@ def read_data(path: Path, settings: Settings) -> Curves:
     """The curves at `path`, read as the settings say."""
     from driftline.readers import read
 
-    return read(path, input=settings.input, seed=settings.seed, **settings.labels)
+    return read(path, input=settings.input, **settings.labels)

@@ -14,12 +14,14 @@ from typing import Any
 from driftline.curves import Curves
 from driftline.errors import ConfigurationError, InputError
 from driftline.readers.base import Layout
+from driftline.readers.folder import FolderLayout
 from driftline.readers.hdf5 import Hdf5Layout
 from driftline.readers.table import SummaryLayout, TableLayout, WideLayout
 from driftline.reading import InputOptions
 
 #: Asked in this order; the table comes last because any text file might be one.
 LAYOUTS: tuple[Layout, ...] = (
+    FolderLayout(),
     Hdf5Layout(),
     SummaryLayout(),
     WideLayout(),
@@ -29,9 +31,7 @@ LAYOUTS: tuple[Layout, ...] = (
 __all__ = ["LAYOUTS", "Layout", "read"]
 
 
-def read(
-    path: str | os.PathLike[str], *, input: InputOptions | None = None, seed: int = 0, **words: Any
-) -> Curves:  # fmt: skip
+def read(path: str | os.PathLike[str], *, input: InputOptions | None = None, **words: Any) -> Curves:
     """Read the curves in a file or folder.
 
     Parameters
@@ -40,8 +40,6 @@ def read(
         A file or folder in one of the `LAYOUTS`; the content decides which, not the name.
     input : InputOptions, optional
         How to read it, as far as the content does not say so.
-    seed : int
-        Seed of the bootstrap behind the errors of medians.
     **words
         Fields of `driftline.reading.InputOptions`, put over `input`: ``columns={"size": "L", "mean": "r"}``; and fields
         of `driftline.curves.Labels` that replace what the file says: ``ergodic_value=0.5307``.
@@ -67,7 +65,8 @@ def read(
         _check_kind(target, place)
         chosen = chosen or _recognised(target, place, options)
         if target.is_dir() != chosen.folder:
-            _refuse_kind(target, place)
+            kinds = ("file", "folder") if chosen.folder else ("folder", "file")
+            raise InputError(f"this is a {kinds[0]}, and the layout {chosen.name} reads a {kinds[1]}", where=place)
         return chosen.read(target, place, labels, options)
     except PermissionError as reason:
         raise InputError("the file may not be read; check its permissions", where=place) from reason
@@ -95,7 +94,7 @@ def _recognised(path: Path, place: str, options: InputOptions) -> Layout:
     for layout in LAYOUTS:
         if layout.folder == path.is_dir() and layout.recognises(path, options):
             return layout
-    return _refuse_kind(path, place)
+    raise InputError("no layout recognises this file; say which it is with --layout", where=place)
 
 
 def _check_kind(path: Path, place: str) -> None:
@@ -107,9 +106,3 @@ def _check_kind(path: Path, place: str) -> None:
         raise InputError("this is not a regular file; save the data to a file first", where=place)
     if path.stat().st_size == 0:
         raise InputError("the file is empty", where=place)
-
-
-def _refuse_kind(path: Path, place: str) -> Layout:
-    if path.is_dir():
-        raise InputError("this is a folder; give a file (a summary CSV or HDF5)", where=place)
-    raise InputError("no layout recognises this file; give a summary CSV or HDF5", where=place)

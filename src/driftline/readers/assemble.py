@@ -57,7 +57,7 @@ class Assembled:
     realisations: Sequence[Mapping[str, Any]] = ()
 
 
-def assembled(pieces: Iterable[Piece], options: InputOptions, seed: int = 0) -> Assembled:
+def assembled(pieces: Iterable[Piece], options: InputOptions) -> Assembled:
     """Curves of `pieces`.
 
     Raises
@@ -69,41 +69,31 @@ def assembled(pieces: Iterable[Piece], options: InputOptions, seed: int = 0) -> 
     for piece in every:
         _check_positive(piece, "size", "a size must be positive, not {:g}")
     if any("value" in piece.data for piece in every):
-        found = sampled(blocks(every, options), sample_options(options, seed))
-        return from_sampled(found, options)
+        found = sampled(blocks(every), sample_options(options))
+        return from_sampled(found)
     return _averaged(every, options)
 
 
-def from_sampled(found: Sampled, options: InputOptions) -> Assembled:
+def from_sampled(found: Sampled) -> Assembled:
     """What `driftline.readers.samples` made of raw values."""
     return Assembled(found.curves, found.rows, list(found.notes), found.record())
 
 
-def sample_options(options: InputOptions, seed: int) -> SampleOptions:
+def sample_options(options: InputOptions) -> SampleOptions:
     """The part of the options that concerns raw values."""
-    return SampleOptions(options.average, options.kind, options.paired, seed)
+    return SampleOptions(options.average, options.kind, options.paired)
 
 
 # ---------------------------------------------------------------- raw values
 
 
-def blocks(pieces: Iterable[Piece], options: InputOptions) -> Iterator[Block]:
-    """One `Block` for each size and disorder of each piece, rows in the order of the file.
-
-    Where the realisations are declared as paired but carry no labels, their position is the label: the first value of
-    every point is taken to be that of one realisation, and so on.
-    """
-    begun: dict[tuple[float, float], int] = {}
+def blocks(pieces: Iterable[Piece]) -> Iterator[Block]:
+    """One `Block` for each size and disorder of each piece, rows in the order of the file."""
     for piece in pieces:
         values, labels = piece.data["value"], _labels(piece)
         for rows in _groups(piece.data["size"], piece.data["disorder"]):
             size, disorder = float(piece.data["size"][rows[0]]), float(piece.data["disorder"][rows[0]])
-            named = None if labels is None else labels[rows]
-            if labels is None and options.paired:
-                first = begun.get((size, disorder), 0)
-                named = np.arange(first, first + rows.size)
-                begun[size, disorder] = first + rows.size
-            yield Block(size, disorder, values[rows], named, piece.source)
+            yield Block(size, disorder, values[rows], None if labels is None else labels[rows], piece.source)
 
 
 def _labels(piece: Piece) -> IntArray | None:

@@ -74,8 +74,18 @@ def choose(names: Sequence[str], scene: Scene, *, named: bool = True) -> Choice:
     ConfigurationError
         If the options do not fit the columns.
     """
+    choice = _chosen(names, scene, named)
+    if named:
+        return choice
+    return replace(choice, columns={role: f"column {place}" for role, place in choice.columns.items()})
+
+
+def _chosen(names: Sequence[str], scene: Scene, named: bool) -> Choice:
     if scene.options.ordered:
-        return _in_order(names, scene, named)
+        return _in_order(names, scene)
+    if len(names) == 1 and {"size", "disorder"} <= scene.elsewhere and not scene.options.named:
+        roles = {"value": names[0]}  # nothing else can be meant
+        return Choice(((None, {"value": 0}),), roles, (), roles)
     scene = _numbers_replaced(names, scene)
     if not named:
         _refuse_nameless(names, scene)
@@ -100,7 +110,7 @@ def _long(names: Sequence[str], scene: Scene) -> Choice:
 # ---------------------------------------------------------------- roles in order, numbers for names
 
 
-def _in_order(names: Sequence[str], scene: Scene, named: bool) -> Choice:
+def _in_order(names: Sequence[str], scene: Scene) -> Choice:
     order = scene.options.ordered
     if len(order) > len(names):
         raise ConfigurationError(
@@ -113,8 +123,6 @@ def _in_order(names: Sequence[str], scene: Scene, named: bool) -> Choice:
             places.setdefault(role, []).append(index)
     unused = tuple(name for i, name in enumerate(names) if i >= len(order) or order[i] == SKIPPED)
     columns = {role: ", ".join(names[i] for i in found) for role, found in places.items()}
-    if not named:
-        columns = {role: f"column {text}" for role, text in columns.items()}
     _check_roles(places, scene)
     if not scene.options.sizes:
         if twice := next((role for role, found in places.items() if len(found) > 1), None):
@@ -156,11 +164,11 @@ def _numbers_replaced(names: Sequence[str], scene: Scene) -> Scene:
 
 
 def _refuse_nameless(names: Sequence[str], scene: Scene) -> None:
-    """Columns without names hold what the options say, and a single one holds values; nothing else can be told."""
-    if scene.options.named or (len(names) == 1 and {"size", "disorder"} <= scene.elsewhere):
+    """Columns without names hold what the options say; nothing else can be told."""
+    if scene.options.named:
         return
     example = [role for role in ("size", "disorder") if role not in scene.elsewhere]
-    example += ["mean", "error"] if len(names) >= len(example) + 2 else ["value"]
+    example += ["mean", "error"] if example and len(names) >= len(example) + 2 else ["value"]
     example += [SKIPPED] * (len(names) - len(example))
     raise InputError(
         f"the {len(names)} {scene.word}{'s' * (len(names) != 1)} have no names; say what they hold, in their order, "

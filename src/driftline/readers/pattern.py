@@ -8,12 +8,12 @@ where their names leave one reading only.
 from __future__ import annotations
 
 import re
-from collections import Counter
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from itertools import chain
 
 from driftline.errors import ConfigurationError
+from driftline.readers.guard import pattern_parts
 from driftline.readers.roles import known_as
 
 PLACEHOLDERS = ("size", "disorder", "realisation")
@@ -32,7 +32,7 @@ class Pattern:
     Parameters
     ----------
     text : str
-        As the user wrote it, without slashes at the ends.
+        As the user wrote it, without needless slashes.
     """
 
     text: str
@@ -46,16 +46,11 @@ class Pattern:
         ConfigurationError
             If a placeholder is unknown, or a part of the path is empty or leads upwards.
         """
-        if "\0" in text or text.count("{") != text.count("}"):
-            raise ConfigurationError(f"{where}: the braces of {text!r} do not match")
         for match in _TOKEN.finditer(text):
             if match[1] is not None and match[1] not in PLACEHOLDERS:
                 names = ", ".join(f"{{{name}}}" for name in PLACEHOLDERS)
                 raise ConfigurationError(f"{where}: there is no placeholder {match[0]!r}; they are {names} and *")
-        pattern = cls(text.strip("/"))
-        if any(part in ("", ".", "..") for part in pattern.parts):
-            raise ConfigurationError(f"{where}: {text!r} must lead downwards only, without empty parts, '.' or '..'")
-        return pattern
+        return cls("/".join(pattern_parts(text, where)))
 
     @property
     def parts(self) -> list[str]:
@@ -112,12 +107,13 @@ class Inference:
     ----------
     pattern : str or None
         The one pattern that reads them all, if there is one.
-    sketch : str
-        A pattern to begin with for the user, with ``{?}`` where a number varies and its meaning is not known.
+    sketches : tuple of str
+        For each shape of path, the most frequent first, a pattern to begin with, with ``{?}`` where a number varies and
+        its meaning is not known.
     """
 
     pattern: str | None
-    sketch: str
+    sketches: tuple[str, ...]
 
 
 def inferred(paths: Sequence[str]) -> Inference:
@@ -125,15 +121,20 @@ def inferred(paths: Sequence[str]) -> Inference:
 
     Paths of several shapes have no pattern in common: which of them to read, the user must say.
     """
-    counts = Counter(_shape(path) for path in paths)
-    first = min(counts, key=lambda shape: (-counts[shape], shape))
-    alike = [path for path in paths if _shape(path) == first]
-    values = list(zip(*map(_numbers, alike), strict=True))
+    shapes: dict[str, list[str]] = {}
+    for path in paths:
+        shapes.setdefault(_shape(path), []).append(path)
+    sketches = [_sketch(shape, alike) for shape, alike in sorted(shapes.items(), key=lambda item: -len(item[1]))]
+    certain = len(sketches) == 1 and "{?}" not in sketches[0]
+    return Inference(sketches[0] if certain else None, tuple(sketches))
+
+
+def _sketch(shape: str, paths: Sequence[str]) -> str:
+    """The pattern of paths of one shape, with ``{?}`` for what is not known."""
+    values = list(zip(*map(_numbers, paths), strict=True))
     varying = [index for index, column in enumerate(values) if len(set(column)) > 1]
-    roles = _meanings(_words(alike[0]), varying, values)
-    sketch = _filled_in(first, values, {index: roles.get(index, "?") for index in varying})
-    whole = len(counts) == 1 and set(varying) == set(roles)
-    return Inference(sketch if whole else None, sketch)
+    roles = _meanings(_words(paths[0]), varying, values)
+    return _filled_in(shape, values, {index: roles.get(index, "?") for index in varying})
 
 
 def _shape(path: str) -> str:

@@ -201,7 +201,7 @@ def parsed(numbered: Iterable[tuple[int, str]], place: str, options: InputOption
     width = len(cells[0]) if names is None else len(names)
     _check_widths(cells, numbers, width, names, place)
     return TextTable(
-        place, names, header_line, cells, np.array(numbers), body.labels, body.notes, separator, closed, commented
+        place, names, header_line, cells, np.array(numbers), body.labels, body.notes, separator, closed or options.skip_cut_lines, commented
     )  # fmt: skip
 
 
