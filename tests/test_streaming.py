@@ -17,8 +17,10 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from driftline.errors import ConfigurationError, InputError
-from driftline.readers.streaming.runs import Rows
+from driftline.readers.points import Block
+from driftline.readers.samples import sampled
 from driftline.readers.streaming import LongDatasets, LongText, Positions, stream
+from driftline.readers.streaming.runs import Rows
 
 POSITIONS = Positions(width=4, size=0, disorder=1, realisation=2, value=3)
 HEADER = "size,disorder,realisation,value\n"
@@ -258,7 +260,7 @@ def test_no_rows_and_too_many_points(tmp_path: Path, monkeypatch: pytest.MonkeyP
 
 
 def test_realisations_that_come_back_are_noted(tmp_path: Path) -> None:
-    """Rows of a realisation in two places, as a restarted job leaves them, are noted; the end of a piece is no other place."""
+    """Rows of a realisation in two places, as a restarted job leaves them, are noted; the end of a piece is not."""
     path = tmp_path / "table.csv"
     rows = "".join(f"8,1,{k // 3},{k / 64}\n" for k in range(90))
     path.write_text(HEADER + rows, encoding="utf-8")
@@ -334,3 +336,21 @@ def test_a_full_disk_is_one_sentence(tmp_path: Path, monkeypatch: pytest.MonkeyP
     path = _text(tmp_path, _table(10_000, order="single"))
     with pytest.raises(ConfigurationError, match=r"No space left on device\); set TMPDIR to a folder with more room$"):
         list(stream(_long(path), most_entries=1_000))
+
+
+def test_samples_know_the_single_rows(tmp_path: Path) -> None:
+    """Curves, errors, counts and the variance inflation are those of the same rows read without streaming."""
+    frame = _table(40_000).with_columns(pl.col("value") + 0.05 * (pl.col("realisation") % 11))
+    plain = [
+        Block(size, disorder, g["value"].to_numpy(), g["realisation"].to_numpy(), "memory")
+        for (size, disorder), g in frame.group_by("size", "disorder", maintain_order=True)
+    ]
+    expected, found = sampled(plain), sampled(stream(_long(_text(tmp_path, frame))))
+    assert found.rows == expected.rows == 40_000
+    for ours, theirs in zip(found.curves, expected.curves, strict=True):
+        np.testing.assert_allclose(ours.mean, theirs.mean, rtol=1e-12)  # sums of 4000 values, in another order
+        np.testing.assert_allclose(ours.error, theirs.error, rtol=1e-10)
+        np.testing.assert_allclose(ours.covariance, theirs.covariance, rtol=0, atol=1e-10 * theirs.error[0] ** 2)
+    for ours, theirs in zip(found.diagnostics, expected.diagnostics, strict=True):
+        assert ours.error_ratio == pytest.approx(theirs.error_ratio, rel=1e-9)
+        assert ours.error_ratio > 1.1

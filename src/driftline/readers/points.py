@@ -28,6 +28,9 @@ class Block:
         value (or row) is a realisation of its own.
     source : str
         Where the values stood, for faults and for naming duplicates, e.g. ``"runs/L8/W1.0/r.dat"``.
+    rows, deviation : int and float, optional
+        Where `values` are averages already, as a table too long for the memory gives them: the number of single values
+        behind them and the standard deviation of those (n - 1 in the denominator).
     """
 
     size: float
@@ -35,6 +38,8 @@ class Block:
     values: FloatArray
     realisation: IntArray | None
     source: str
+    rows: int | None = None
+    deviation: float | None = None
 
     @property
     def where(self) -> str:
@@ -111,8 +116,8 @@ def merged(blocks: Sequence[Block], average: Average) -> Point:
     if copies.any():
         found = f"{np.count_nonzero(copies)} of {copies.size} realisations repeat values that stand before them"
         notes.append(f"{where}: {found} (a restart, or a file copied?); they were counted once")
-    total = int(rows.per_row.sum())
-    single = float(np.sqrt(rows.variance / total)) if total > copies.size else None
+    total, variance = _single_values(blocks, rows)
+    single = float(np.sqrt(variance / total)) if total > copies.size else None
     return Point(blocks[0].disorder, values, labels, single, again + int(np.count_nonzero(copies)), tuple(notes), where)
 
 
@@ -152,6 +157,13 @@ def _rows(blocks: Sequence[Block], average: Average) -> _Rows:
     variance = np.concatenate([each.ravel() for each in scaled]).var(ddof=1) if per_row.sum() > 1 else 0.0
     joined = np.concatenate(labels).astype(np.int64) if labels else None
     return _Rows(values, joined, per_row, float(variance))
+
+
+def _single_values(blocks: Sequence[Block], rows: _Rows) -> tuple[int, float]:
+    """Number and variance of the single values, those behind averages that came as such included."""
+    if len(blocks) == 1 and blocks[0].rows is not None and blocks[0].deviation is not None:
+        return blocks[0].rows, blocks[0].deviation ** 2
+    return int(rows.per_row.sum()), rows.variance
 
 
 def _without_rewritten_rows(rows: _Rows, blocks: Sequence[Block]) -> tuple[_Rows, int, list[str]]:

@@ -145,7 +145,7 @@ def sampled(blocks: Iterable[Block], options: SampleOptions | None = None) -> Sa
     groups: dict[float, dict[float, list[Block]]] = {}
     rows = 0
     for block in blocks:
-        rows += block.values.size
+        rows += block.rows or block.values.size
         groups.setdefault(float(block.size), {}).setdefault(float(block.disorder), []).append(block)
     curves, notes, diagnostics = [], [], []
     for size, group in sorted(groups.items()):

@@ -19,11 +19,11 @@ from typing import Protocol
 from driftline.errors import InputError
 from driftline.progress import Progress
 from driftline.readers.base import located
-from driftline.readers.streaming.text import LongText, Positions
+from driftline.readers.samples import Block
 from driftline.readers.streaming.datasets import LongDatasets
 from driftline.readers.streaming.gathering import MOST_ENTRIES, PointGatherer, PointValues
 from driftline.readers.streaming.runs import Rows
-from driftline.readers.samples import Block
+from driftline.readers.streaming.text import LongText, Positions
 
 __all__ = ["LongDatasets", "LongText", "Positions", "Source", "stream"]
 

@@ -10,8 +10,9 @@ import numpy.typing as npt
 
 from driftline.curves import LARGEST
 from driftline.errors import InputError
-from driftline.readers.streaming.text import ahead
+from driftline.readers.guard.hdf5 import check_dataset
 from driftline.readers.streaming.runs import IntArray, Rows, sound
+from driftline.readers.streaming.text import ahead
 
 if TYPE_CHECKING:
     import h5py  # imported inside the functions that need it: nobody else should wait for it
@@ -43,12 +44,11 @@ class LongDatasets:
         self._datasets = dict(datasets)
         for dataset in datasets.values():
             where = f"{place}, {dataset.name}"
-            if dataset.shape is None or len(dataset.shape) != 1:
+            check_dataset(dataset, where, most=None)
+            if len(dataset.shape) != 1:
                 raise InputError(
                     f"a column must be a list of numbers, not an array of shape {dataset.shape}", where=where
                 )
-            if dataset.dtype.kind not in "iuf":
-                raise InputError(f"a column must hold real numbers, not {dataset.dtype}", where=where)
         lengths = {name: dataset.shape[0] for name, dataset in datasets.items()}
         if len(set(lengths.values())) > 1:
             each = ", ".join(f"{name} {length}" for name, length in lengths.items())

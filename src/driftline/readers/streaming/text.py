@@ -21,8 +21,10 @@ import numpy as np
 import numpy.typing as npt
 
 from driftline.errors import ConfigurationError, InputError
-from driftline.readers.base import number, shown
+from driftline.readers.base import number
+from driftline.readers.guard.files import opened
 from driftline.readers.streaming.runs import Rows, sound
+from driftline.wording import shown
 
 if TYPE_CHECKING:
     import polars as pl  # imported inside the function that needs it: nobody else should wait for it
@@ -248,7 +250,7 @@ _TOO_LONG = f"the line is longer than {MAX_LINE} bytes; this is not a table of n
 @contextmanager
 def _readable(path: Path, place: str) -> Iterator[tuple[IO[bytes], Callable[[], float]]]:
     """The bytes of a file, unpacked if need be, and a function that tells the fraction read so far."""
-    with path.open("rb") as raw:
+    with opened(path, place) as raw:
         total = max(1, path.stat().st_size)
         packed = raw.read(2) == GZIP
         raw.seek(0)
