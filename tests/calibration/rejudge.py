@@ -14,7 +14,7 @@ from scipy.special import ndtri
 
 from driftline.cautions import ESTABLISHED, POOR_P, UNSTABLE_P
 from driftline.separation import THRESHOLD
-from driftline.verdict import CONTRADICTED
+from driftline.verdict import CONTRADICTED, SUPPORTED
 
 #: Warnings that stand in the way of `transition-supported` and depend on no threshold varied here.
 ALWAYS_BLOCKING = ("OUTSIDE_RANGE", "PRIOR_LIMITED", "SAMPLER_NOT_CONVERGED")
@@ -37,7 +37,7 @@ class Thresholds:
         Standard deviations of size dependence on either side.
     """
 
-    transition: float = ESTABLISHED
+    transition: float = SUPPORTED
     drift: float = ESTABLISHED
     none: float = ESTABLISHED
     unbounded: float = ESTABLISHED

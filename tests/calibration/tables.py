@@ -1,4 +1,4 @@
-"""Tables of the calibration study: raw rows in, ``results.md`` and ``results.csv`` out.
+"""Tables of the calibration study: raw rows in, ``results.md`` and the package's ``rates.csv`` out.
 
 python tests/calibration/tables.py
 """
@@ -16,28 +16,21 @@ import study
 from families import FAMILIES, GRIDS, MIDDLE_NOISE, NOISES, Cell
 from rejudge import IN_USE, LADDER, Row, ladder, number, rejudge
 
+from driftline.rates import Z95
+from driftline.rates import Count as Hits
+
 FOLDER = Path(__file__).parent
+#: What the verdict looks its false-alarm rates up in.
+RATES = FOLDER.parents[1] / "src" / "driftline" / "rates.csv"
 VERDICTS = ("transition-supported", "drifting", "undecided", "size-independent", "insufficient-data")
 Count = tuple[int, int]
-Z95 = 1.959963985
-
-
-def wilson(count: Count) -> tuple[float, float]:
-    """95 % interval of a binomial probability (Wilson, JASA 22, 209 (1927))."""
-    hits, total = count
-    if not total:
-        return 0.0, 1.0
-    rate, z2 = hits / total, Z95**2 / total
-    centre = (rate + z2 / 2) / (1 + z2)
-    half = Z95 / (1 + z2) * float(np.sqrt(rate * (1 - rate) / total + z2 / (4 * total)))
-    return max(centre - half, 0.0), min(centre + half, 1.0)
 
 
 def rate_text(count: Count) -> str:
     """Rate with its 95 % binomial interval; a dash where there is nothing to count."""
     if not count[1]:
         return "-"
-    low, high = wilson(count)
+    low, high = Hits(*count).interval
     return f"{count[0] / count[1]:.2f} ({low:.2f}-{high:.2f})"
 
 
@@ -177,7 +170,7 @@ def verdict_on(count: Count, limit: float, *, least: bool) -> str:
     """Whether a rate meets its target: yes or no if the binomial interval says so, else open."""
     if not count[1]:
         return "no sets"
-    low, high = wilson(count)
+    low, high = Hits(*count).interval
     met = count[0] / count[1] >= limit if least else count[0] / count[1] <= limit
     sure = (low >= limit or high < limit) if least else (high <= limit or low > limit)
     return ("met" if met else "missed") + ("" if sure else ", within its error")
@@ -298,7 +291,7 @@ def main() -> None:
     """Write both files."""
     rows: list[Row] = [*study.read_rows()]
     (FOLDER / "results.md").write_text(results(rows), encoding="utf-8")
-    write_csv(FOLDER / "results.csv", by_cell(rows))
+    write_csv(RATES, by_cell(rows))
 
 
 if __name__ == "__main__":
