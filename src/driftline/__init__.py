@@ -19,6 +19,8 @@ if TYPE_CHECKING:
     from driftline.analysis import Analysis as Analysis
     from driftline.analysis import Crossover as Crossover
     from driftline.analysis import analyse as analyse
+    from driftline.calibration import Calibration as Calibration
+    from driftline.calibration import calibrate as calibrate
     from driftline.collapse import CollapseFit as CollapseFit
     from driftline.collapse import Comparison as Comparison
     from driftline.collapse import compare_ansatze as compare_ansatze
@@ -55,6 +57,7 @@ if TYPE_CHECKING:
 
 _HOMES = {
     "analysis": ("Analysis", "Crossover", "analyse"),
+    "calibration": ("Calibration", "calibrate"),
     "collapse": ("CollapseFit", "Comparison", "compare_ansatze", "fit_collapse"),
     "costs": ("Cost", "collapse_costs"),
     "crossings": ("Crossing", "Crossings", "find_crossings"),

@@ -86,10 +86,12 @@ class FalseAlarm:
     def sentence(self) -> str:
         """One paragraph for people."""
         low, high = self.sizes
-        unlike = "" if self.alike else " These data are unlike any that were simulated: run driftline calibrate on them."
+        unlike = (
+            "" if self.alike else " These data are unlike any that were simulated: run driftline calibrate on them."
+        )
         return (
-            f"Measured on simulated data of known truth (sizes {low:g} to {high:g}, errors {100 * self.noise:.2g} % of the "
-            f"height of the curves): transition-supported was wrong for {self.false_transition} sets without a "
+            f"Measured on simulated data of known truth (sizes {low:g} to {high:g}, errors {100 * self.noise:.2g} % of "
+            f"the height of the curves): transition-supported was wrong for {self.false_transition} sets without a "
             f"transition, drifting for {self.false_drifting} with one; transitions were recognised in "
             f"{self.right_transition}, drifts in {self.right_drifting}.{unlike}"
         )

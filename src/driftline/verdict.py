@@ -22,10 +22,10 @@ __all__ = ["Case", "Caution", "Verdict", "judge"]
 
 NO_EVIDENCE = "Warning: no evidence of a transition in these data."
 FINITE_SIZES = "Finite sizes alone do not decide the thermodynamic limit."
-#: Probability of the forms with a critical disorder that `transition-supported` asks for.  Forms whose critical disorder
-#: moves contain those in which it stays, so that honest data of a transition seldom give more than 0.9 (Occam's factor
-#: against a shift that is not needed is the ratio of its prior width to its error); the other conditions, the separation
-#: of the curves on both sides first, keep false alarms away.  Chosen from the calibration study.
+#: Probability of the forms with a critical disorder that `transition-supported` asks for.  Forms whose critical
+#: disorder moves contain those in which it stays, so that honest data of a transition seldom reach 0.9: the Occam
+#: factor against a shift that is not needed is only the ratio of its prior width to its error.  The other conditions,
+#: the separation of the curves on both sides first, keep false alarms away.  Chosen from the calibration study.
 SUPPORTED = 0.5
 #: A drift seen by the collapse is contradicted by crossings only if these establish a limit; a few crossings rarely do.
 CONTRADICTED = ESTABLISHED

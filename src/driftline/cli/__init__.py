@@ -23,7 +23,7 @@ from driftline.errors import DriftlineError
 DONE, BAD_INPUT, BAD_USAGE, INTERRUPTED = 0, 1, 2, 130
 
 #: The commands in the order in which the help lists them: each is the function of its name in the module of its name.
-COMMANDS = ("analyse", "inspect", "ansatze", "fields")
+COMMANDS = ("analyse", "inspect", "ansatze", "calibrate", "fields")
 
 
 def main(argv: Sequence[str] | None = None) -> int:

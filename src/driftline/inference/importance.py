@@ -66,7 +66,7 @@ class Mixture:
         d = z.shape[1]
         constant = gammaln((DEGREES + d) / 2) - gammaln(DEGREES / 2) - 0.5 * d * np.log(DEGREES * np.pi)
         logs = self._of_components(z, lambda distance: -0.5 * (DEGREES + d) * np.log1p(distance / DEGREES))
-        return _log_sum(logs) + constant
+        return np.asarray(_log_sum(logs) + constant)
 
     def memberships(self, z: FloatArray) -> FloatArray:
         """Probability of each component, taken as a Gaussian, at each place, shape (k, n)."""
@@ -163,8 +163,8 @@ def adapt(
 
     Returns the last mixture and the draws of all rounds.  These are weighted against the average of all mixtures drawn
     from (deterministic mixture weights; Cornuet, Marin, Mira, Robert, Scand. J. Stat. 39, 798 (2012)): rounds that
-    missed a part of the target then do no harm once a later one has found it.  Draws that the next mixture was fitted to
-    are weighted once more, which biases the evidence by a few tenths of its error; `sample_until` has no such bias.
+    missed a part of the target then do no harm once a later one has found it.  Draws that the next mixture was fitted
+    to are weighted once more, which biases the evidence by a few tenths of its error; `sample_until` has no such bias.
     """
     mixtures: list[Mixture] = []
     places, logs = np.empty((0, mixture.centres.shape[1])), np.empty(0)

@@ -45,6 +45,8 @@ def _verdict(analysis: Analysis) -> Iterator[Block]:
     yield Paragraph(f"Verdict: {verdict.code}")
     for reason in rows.reasons(analysis):
         yield Paragraph(reason, indent="    ", first="  - ")
+    if verdict.false_alarm is not None:
+        yield Paragraph(verdict.false_alarm.sentence)
 
 
 def _warnings(analysis: Analysis) -> Iterator[Block]:
