@@ -83,7 +83,10 @@ def made_fit(curves, name="power-law:corrected", *, log_evidence=250.0):
     order = np.argsort(x)
     residual = np.random.default_rng(6).normal(size=x.size)
     ansatz = parse_ansatz(name, curves)
-    truth = {"W_c": (16.53, 0.12), "W_mid": (16.53, 0.12), "nu": (1.57, 0.05), "omega": (1.0, 0.5), "D": (0.3, 0.2)}
+    truth = {
+        "W_c": (16.53, 0.12), "W_mid": (16.53, 0.12), "nu": (1.57, 0.05), "omega": (1.0, 0.5), "D": (0.3, 0.2),
+        "tau": (0.02, 0.005), "s": (1.0, 0.08),
+    }  # fmt: skip
     names = (*(each.name for each in ansatz.parameters), "tau", "s")
     centres = np.array([truth.get(each, (1.0, 0.1)) for each in names])
     rng = np.random.default_rng(7)
@@ -92,7 +95,7 @@ def made_fit(curves, name="power-law:corrected", *, log_evidence=250.0):
         curves=curves,
         log_evidence=log_evidence,
         log_evidence_error=0.05,
-        parameters={each: Interval.of_normal(*truth[each]) for each in names if each in truth},
+        parameters={each: Interval.of_normal(*truth.get(each, (1.0, 0.1))) for each in names},
         samples=rng.normal(centres[:, 0], centres[:, 1], size=(50, len(names))),
         names=names,
         quality=FitQuality(1.02, 0.44, 1.01, 2.6, (8.0, 15.0)),

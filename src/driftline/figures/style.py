@@ -93,7 +93,7 @@ def new_figure(width: float, height: float) -> Figure:
 
 def save(figure: Figure, path: Path) -> None:
     """Write `figure` in the format that the name of `path` says, without dates: equal figures are equal files."""
-    metadata = {"CreationDate": None} if path.suffix == ".pdf" else {}
+    metadata = {".pdf": {"CreationDate": None}, ".svg": {"Date": None}}.get(path.suffix, {})
     with house_style():
         figure.savefig(path, metadata=metadata)
 

@@ -1,4 +1,4 @@
-"""The figures as files: PDF for the paper, PNG for the screen."""
+"""The figures as files: PDF for the paper, PNG for slides, SVG for web pages."""
 
 from __future__ import annotations
 
@@ -12,7 +12,7 @@ if TYPE_CHECKING:
 
 
 class Drawings(Writer):
-    """`figures/*.pdf` and `figures/*.png`."""
+    """`figures/*.pdf`, `figures/*.png` and `figures/*.svg`."""
 
     title = "figures"
 
@@ -25,5 +25,5 @@ class Drawings(Writer):
         place.mkdir()
         for figure in FIGURES:
             drawn = figure.draw(analysis)
-            save(drawn, place / f"{figure.name}.pdf")
-            save(drawn, place / f"{figure.name}.png")
+            for kind in ("pdf", "png", "svg"):
+                save(drawn, place / f"{figure.name}.{kind}")
