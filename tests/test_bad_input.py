@@ -79,15 +79,16 @@ UNTOLD = "the names do not tell which column holds {}; the columns are {}; say i
          "one number for all with --samples-each N"),
         ("size,disorder,mean,weight", "no column holds the error of the mean; the columns are size, disorder, mean, "
          "weight; name it with --columns error=... (standard error) or deviation=... (standard deviation over "
-         "realisations), or add it: the standard deviation over realisations divided by the square root of their "
-         "number"),
+         "realisations), or declare raw values with value=...; a standard error is the standard deviation over "
+         "realisations divided by the square root of their number"),
         ("8,1,0.5,0.01", "the 4 columns have no names; say what they hold, in their order, for example --columns "
          "size,disorder,mean,error"),
         ("W,8,10,12", "the columns are W, 8, 10, 12; if there is one for each size, say so with --columns "
          "disorder=W,mean={size} (and error=... or deviation=... in the same way)"),
         ("W,L8,L10,L12", "no column holds the error of the mean; the columns are L{size}, W; name it with --columns "
-         "error=... (standard error) or deviation=... (standard deviation over realisations), or add it: the standard "
-         "deviation over realisations divided by the square root of their number"),
+         "error=... (standard error) or deviation=... (standard deviation over realisations), or declare raw values with "
+         "value=...; a standard error is the standard deviation over realisations divided by the square root of their "
+         "number"),
         ('size,"disorder,mean,error', "the quotation marks do not match; remove them"),
         ("x" * 100_001, "the line is longer than 100000 characters; this is not a summary table"),
     ],
@@ -254,7 +255,8 @@ def test_not_a_file(tmp_path):
 def test_unknown_layout_or_label(tmp_path):
     """A layout or label that does not exist is answered with those that do."""
     with pytest.raises(
-        ConfigurationError, match=r"^there is no layout 'xml'; the layouts are folder, hdf5, summary-csv, wide, table$"
+        ConfigurationError,
+        match=r"^there is no layout 'xml'; the layouts are folder, hdf5, hdf5-tree, npz, summary-csv, wide, table$",
     ):
         read("any.csv", layout="xml")
     path = tmp_path / "run.csv"
@@ -334,8 +336,7 @@ MISSING = "/curves/8: dataset '{}' is missing; the datasets are {}"
 @pytest.mark.parametrize(
     ("change", "text"),
     [
-        (lambda f: f.move("curves", "data"), ": there is no group /curves; the file holds data"),
-        (lambda f: f.pop("curves"), ": there is no group /curves; the file holds nothing"),
+        (lambda f: f.pop("curves"), ": the file holds no dataset of numbers"),
         (lambda f: f["curves"].pop("8"), ": only size 12 was found and at least 2 sizes are needed to see a size "
          "dependence"),
         (lambda f: f.move("curves/8", "curves/eight"), ", /curves/eight: the name of a group must be a size, a "
@@ -384,6 +385,14 @@ MISSING = "/curves/8: dataset '{}' is missing; the datasets are {}"
 def test_hdf5(h5_fault, change, text):
     """Each way to spoil an HDF5 file is answered with the object concerned."""
     assert h5_fault(change) == f"run.h5{text}"
+
+
+def test_hdf5_without_curves_when_they_were_asked_for(tmp_path):
+    """Asked to read the program's own HDF5, the reader takes nothing else."""
+    path = tmp_path / "run.h5"
+    with h5py.File(path, "w") as file:
+        file["data/8/mean"] = [1.0]
+    assert fault(path, layout="hdf5") == "run.h5: there is no group /curves; the file holds data"
 
 
 def test_unsorted_hdf5_with_a_covariance_of_the_wrong_shape(h5_fault):

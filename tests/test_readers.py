@@ -184,7 +184,7 @@ def test_hdf5_out_of_order_and_with_more_in_it(tmp_path):
 
 def test_registry():
     """Layouts have distinct names and a description, and each is a strategy of the one base class."""
-    assert [layout.name for layout in LAYOUTS] == ["folder", "hdf5", "summary-csv", "wide", "table"]
+    assert [layout.name for layout in LAYOUTS] == ["folder", "hdf5", "hdf5-tree", "npz", "summary-csv", "wide", "table"]
     assert all(isinstance(layout, Layout) and layout.description for layout in LAYOUTS)
 
 

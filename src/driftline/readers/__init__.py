@@ -13,6 +13,7 @@ from typing import Any
 
 from driftline.curves import Curves
 from driftline.errors import ConfigurationError, InputError
+from driftline.readers.arrays import Hdf5TreeLayout, NpzLayout
 from driftline.readers.base import Layout
 from driftline.readers.folder import FolderLayout
 from driftline.readers.hdf5 import Hdf5Layout
@@ -23,6 +24,8 @@ from driftline.reading import InputOptions
 LAYOUTS: tuple[Layout, ...] = (
     FolderLayout(),
     Hdf5Layout(),
+    Hdf5TreeLayout(),
+    NpzLayout(),
     SummaryLayout(),
     WideLayout(),
     TableLayout(),

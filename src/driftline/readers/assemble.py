@@ -20,6 +20,8 @@ from driftline.readers.samples import Block, Sampled, SampleOptions, sampled
 from driftline.reading import InputOptions
 from driftline.wording import listed
 
+UNLABELLED = "the values have no realisation labels: each counts as the one value of a realisation of its own"
+
 IntArray = npt.NDArray[np.int64]
 
 
@@ -35,11 +37,14 @@ class Piece:
         Role to its numbers, each of shape (n,); a raw `value` may have the shape (n, eigenstates).
     place : callable
         Place of row i in the role named, for faults; ``place(i, None)`` is the place of the row.
+    notes : tuple of str
+        What was left out.
     """
 
     source: str
     data: Mapping[str, FloatArray]
     place: Callable[[int, str | None], str]
+    notes: tuple[str, ...] = ()
 
     @property
     def rows(self) -> int:
@@ -69,9 +74,13 @@ def assembled(pieces: Iterable[Piece], options: InputOptions) -> Assembled:
     for piece in every:
         _check_positive(piece, "size", "a size must be positive, not {:g}")
     if any("value" in piece.data for piece in every):
-        found = sampled(blocks(every), sample_options(options))
-        return from_sampled(found)
-    return _averaged(every, options)
+        made = from_sampled(sampled(blocks(every), sample_options(options)))
+        if any("realisation" not in piece.data and piece.data["value"].ndim == 1 for piece in every):
+            made.notes.insert(0, UNLABELLED)
+    else:
+        made = _averaged(every, options)
+    made.notes[:0] = [note for piece in every for note in piece.notes]
+    return made
 
 
 def from_sampled(found: Sampled) -> Assembled:

@@ -60,8 +60,17 @@ class Hdf5Layout(Layout):
     description = "HDF5 with /curves/<size>/{disorder,mean,error[,covariance][,samples]} and labels as attributes"
 
     def recognises(self, path: Path, options: InputOptions) -> bool:
-        """By the signature of HDF5, or by the name of a file that claims to be one."""
-        return hdf5_signed(path, str(path)) or path.suffix.lower() in _SUFFIXES
+        """By the group ``/curves`` as long as no option asks for another reading, or by the name of a file that lies.
+
+        A damaged file counts as one, so that reading it says what is wrong.
+        """
+        if not hdf5_signed(path, str(path)):
+            return path.suffix.lower() in _SUFFIXES
+        try:
+            with open_hdf5(path, str(path)) as file:
+                return "curves" in file and not options.given()
+        except InputError:
+            return True
 
     def contents(self, path: Path, place: str, options: InputOptions) -> Contents:
         """Read the file; see `Layout.contents`."""

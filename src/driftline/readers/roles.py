@@ -154,7 +154,8 @@ def _take_observable(roles: dict[str, str], free: Sequence[str], scene: Scene) -
     if "mean" in roles or "value" in roles:
         return
     able = [name for name in free if OBSERVABLE in known_as(name)]
-    averaged = "error" in roles or "deviation" in roles or scene.options.error_each is not None
+    spread = any(SPREAD in known_as(name) for name in free)  # which kind of spread is asked for afterwards
+    averaged = spread or "error" in roles or "deviation" in roles or scene.options.error_each is not None
     raw = "realisation" in roles or "realisation" in scene.elsewhere
     wide = len(able) == 1 and "{size}" in able[0]  # a row for each disorder: averaged, as long as nothing says raw
     if len(able) == 1 and averaged != raw:
@@ -185,8 +186,8 @@ def _refuse_missing(missing: Sequence[str], roles: Mapping[str, str], names: Seq
     spare = [name for name in names if name not in roles.values()][:MOST_COMPARED]
 
     def place(role: str) -> str:
-        near = get_close_matches(role, spare, n=1, cutoff=0.8)
-        return roles.get(role, near[0] if near else "...")
+        able = [name for name in spare if role in known_as(name)] or get_close_matches(role, spare, n=1, cutoff=0.8)
+        return roles.get(role, able[0] if len(able) == 1 else "...")
 
     example = [f"{role}={place(role)}" for role in ("size", "disorder") if role not in scene.elsewhere]
     example.append(f"value={roles['value']}" if "value" in roles else f"mean={place('mean')}")
@@ -223,8 +224,9 @@ def _check_error(roles: Mapping[str, str], names: Sequence[str], scene: Scene) -
         )
     raise InputError(
         f"no {scene.word} holds the error of the mean; {_seen(names, scene)}; name it with --columns error=... "
-        "(standard error) or deviation=... (standard deviation over realisations), or add it: the standard deviation "
-        "over realisations divided by the square root of their number",
+        "(standard error) or deviation=... (standard deviation over realisations), or declare raw values with "
+        "value=...; a standard error is the standard deviation over realisations divided by the square root of their "
+        "number",
         where=scene.where,
     )
 

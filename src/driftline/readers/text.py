@@ -200,8 +200,9 @@ def parsed(numbered: Iterable[tuple[int, str]], place: str, options: InputOption
         commented, header_line = names is not None, body.comment[0] if names is not None else None
     width = len(cells[0]) if names is None else len(names)
     _check_widths(cells, numbers, width, names, place)
+    whole = closed or options.skip_cut_lines
     return TextTable(
-        place, names, header_line, cells, np.array(numbers), body.labels, body.notes, separator, closed or options.skip_cut_lines, commented
+        place, names, header_line, cells, np.array(numbers), body.labels, body.notes, separator, whole, commented
     )  # fmt: skip
 
 
