@@ -83,7 +83,7 @@ def _analysed(path: Path, settings: Any, folder: Path | None, force: bool, quiet
     from driftline.analysis import analyse
     from driftline.progress import part, terminal_progress
 
-    curves = read_data(path, settings)
+    curves = read_data(path, settings, quiet=quiet)
     settings.select(curves)  # says what is wrong with a window before anything else happens
     with terminal_progress(quiet=quiet) as progress:
         end = 1.0 if folder is None else WRITING_FROM

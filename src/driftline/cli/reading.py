@@ -53,8 +53,10 @@ def taken(options: dict[str, Any]) -> dict[str, Any]:
     return {name: options.pop(name) for name in InputOptions.names()}
 
 
-def read_data(path: Path, settings: Settings) -> Curves:
-    """The curves at `path`, read as the settings say."""
+def read_data(path: Path, settings: Settings, *, quiet: bool = False) -> Curves:
+    """The curves at `path`, read as the settings say; a large file shows its progress."""
+    from driftline.progress import terminal_progress
     from driftline.readers import read
 
-    return read(path, input=settings.input, **settings.labels)
+    with terminal_progress(quiet=quiet) as progress:
+        return read(path, input=settings.input, progress=progress, **settings.labels)

@@ -13,6 +13,7 @@ from typing import Any
 
 from driftline.curves import Curves
 from driftline.errors import ConfigurationError, InputError
+from driftline.progress import Progress
 from driftline.readers.arrays import Hdf5TreeLayout, NpzLayout
 from driftline.readers.base import Layout
 from driftline.readers.folder import FolderLayout
@@ -34,7 +35,9 @@ LAYOUTS: tuple[Layout, ...] = (
 __all__ = ["LAYOUTS", "Layout", "read"]
 
 
-def read(path: str | os.PathLike[str], *, input: InputOptions | None = None, **words: Any) -> Curves:
+def read(
+    path: str | os.PathLike[str], *, input: InputOptions | None = None, progress: Progress | None = None, **words: Any
+) -> Curves:  # fmt: skip
     """Read the curves in a file or folder.
 
     Parameters
@@ -43,6 +46,8 @@ def read(path: str | os.PathLike[str], *, input: InputOptions | None = None, **w
         A file or folder in one of the `LAYOUTS`; the content decides which, not the name.
     input : InputOptions, optional
         How to read it, as far as the content does not say so.
+    progress : callable, optional
+        Called with (what is being done, fraction done) while a large file is read.
     **words
         Fields of `driftline.reading.InputOptions`, put over `input`: ``columns={"size": "L", "mean": "r"}``; and fields
         of `driftline.curves.Labels` that replace what the file says: ``ergodic_value=0.5307``.
@@ -70,7 +75,7 @@ def read(path: str | os.PathLike[str], *, input: InputOptions | None = None, **w
         if target.is_dir() != chosen.folder:
             kinds = ("file", "folder") if chosen.folder else ("folder", "file")
             raise InputError(f"this is a {kinds[0]}, and the layout {chosen.name} reads a {kinds[1]}", where=place)
-        return chosen.read(target, place, labels, options)
+        return chosen.read(target, place, labels, options, progress)
     except PermissionError as reason:
         raise InputError("the file may not be read; check its permissions", where=place) from reason
     except OSError as reason:

@@ -13,7 +13,8 @@ from typing import ClassVar
 
 from driftline.curves import FloatArray
 from driftline.errors import InputError
-from driftline.readers.assemble import Piece, assembled
+from driftline.progress import Progress
+from driftline.readers.assemble import UNLABELLED, Assembled, Piece, assembled, averaged_blocks
 from driftline.readers.base import Contents, Layout, number
 from driftline.readers.grids import rows_of
 from driftline.readers.guard import hdf5_signed
@@ -23,6 +24,7 @@ from driftline.readers.stores import Hdf5Store, NpzStore, Store, opened_store
 from driftline.reading import InputOptions
 from driftline.wording import listed
 
+STREAMED = 2_000_000  # values from which a long table is read a piece at a time
 ITSELF = "."  # the place of an array that the pattern matches itself
 
 
@@ -31,12 +33,15 @@ class ArrayLayout(Layout):
 
     store: ClassVar[type[Store]]
 
-    def contents(self, path: Path, place: str, options: InputOptions) -> Contents:
+    def contents(
+        self, path: Path, place: str, options: InputOptions, progress: Progress | None = None
+    ) -> Contents:  # fmt: skip
         """Read the arrays; see `Layout.contents`."""
         with opened_store(path, place, self.store) as store:
             plan = planned(store, options)
-            pieces = list(pieces_of_store(store, plan, options))
-        made = assembled(pieces, options)
+            made = _streamed(store, plan, options, progress) or assembled(
+                pieces_of_store(store, plan, options), options
+            )
         again = InputOptions(layout=self.name, pattern=plan.base or None, columns=plan.roles).over(options)
         columns = {**dict.fromkeys(plan.placeholders, "the path"), **plan.shown()}
         notes = [f"{plan.count} {store.word}{'s' * (plan.count != 1)} read by {plan.main_text}"]
@@ -214,6 +219,25 @@ def _names_below(store: Store, base: str) -> list[str]:
 
 
 # ---------------------------------------------------------------- reading by the plan
+
+
+def _streamed(store: Store, plan: Plan, options: InputOptions, progress: Progress | None) -> Assembled | None:
+    """A long table of raw values, a dataset for each column, that is too large to be held at once; else None."""
+    if not isinstance(store, Hdf5Store) or plan.main != "value" or plan.count != 1:
+        return None
+    path, texts = plan.matches[0]
+    shape = store.shapes[path]
+    if texts or len(shape) != 1 or shape[0] < STREAMED or any(place.startswith("@") for place in plan.roles.values()):
+        return None
+    paths = {role: path if role == plan.main else _companion(store, plan, path, texts, role) for role in plan.roles}
+    if any(store.shapes[other] != shape for other in paths.values()):
+        return None
+    from driftline.readers.streaming import LongDatasets, stream
+
+    source = LongDatasets(store.place, {role: store.dataset(other) for role, other in paths.items()})
+    made = averaged_blocks(stream(source, progress=progress), options)
+    made.notes.extend(source.notes if "realisation" in paths else [UNLABELLED, *source.notes])
+    return made
 
 
 def pieces_of_store(store: Store, plan: Plan, options: InputOptions) -> Iterator[Piece]:

@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import numpy.typing as npt
@@ -16,11 +16,13 @@ import numpy.typing as npt
 from driftline.curves import Curve, FloatArray
 from driftline.errors import InputError
 from driftline.readers.base import located
-from driftline.readers.samples import Block, Sampled, SampleOptions, sampled
 from driftline.reading import InputOptions
 from driftline.wording import listed
 
 UNLABELLED = "the values have no realisation labels: each counts as the one value of a realisation of its own"
+
+if TYPE_CHECKING:
+    from driftline.readers.samples import Block  # scipy comes with it, so only where there are raw values
 
 IntArray = npt.NDArray[np.int64]
 
@@ -74,7 +76,7 @@ def assembled(pieces: Iterable[Piece], options: InputOptions) -> Assembled:
     for piece in every:
         _check_positive(piece, "size", "a size must be positive, not {:g}")
     if any("value" in piece.data for piece in every):
-        made = from_sampled(sampled(blocks(every), sample_options(options)))
+        made = averaged_blocks(blocks(every), options)
         if any("realisation" not in piece.data and piece.data["value"].ndim == 1 for piece in every):
             made.notes.insert(0, UNLABELLED)
     else:
@@ -83,14 +85,12 @@ def assembled(pieces: Iterable[Piece], options: InputOptions) -> Assembled:
     return made
 
 
-def from_sampled(found: Sampled) -> Assembled:
-    """What `driftline.readers.samples` made of raw values."""
+def averaged_blocks(raw: Iterable[Block], options: InputOptions) -> Assembled:
+    """Curves of raw values, as `driftline.readers.samples` makes them."""
+    from driftline.readers.samples import SampleOptions, sampled
+
+    found = sampled(raw, SampleOptions(options.average, options.kind, options.paired))
     return Assembled(found.curves, found.rows, list(found.notes), found.record())
-
-
-def sample_options(options: InputOptions) -> SampleOptions:
-    """The part of the options that concerns raw values."""
-    return SampleOptions(options.average, options.kind, options.paired)
 
 
 # ---------------------------------------------------------------- raw values
@@ -98,6 +98,8 @@ def sample_options(options: InputOptions) -> SampleOptions:
 
 def blocks(pieces: Iterable[Piece]) -> Iterator[Block]:
     """One `Block` for each size and disorder of each piece, rows in the order of the file."""
+    from driftline.readers.samples import Block
+
     for piece in pieces:
         values, labels = piece.data["value"], _labels(piece)
         for rows in _groups(piece.data["size"], piece.data["disorder"]):

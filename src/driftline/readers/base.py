@@ -20,6 +20,7 @@ from typing import Any, ClassVar, cast
 
 from driftline.curves import LARGEST, Curve, Curves, Labels
 from driftline.errors import InputError
+from driftline.progress import Progress
 from driftline.readers.guard.files import opened
 from driftline.reading import InputOptions
 from driftline.wording import listed, shown
@@ -94,8 +95,12 @@ class Layout(ABC):
         """Whether the file at `path` looks like this layout; the first of the registry that says yes reads it."""
 
     @abstractmethod
-    def contents(self, path: Path, place: str, options: InputOptions) -> Contents:
+    def contents(
+        self, path: Path, place: str, options: InputOptions, progress: Progress | None = None
+    ) -> Contents:  # fmt: skip
         """Read `path`; faults name it as `place`, the path in the user's own words.
+
+        Layouts for large files tell `progress` what is being done and the fraction done.
 
         Raises
         ------
@@ -108,9 +113,12 @@ class Layout(ABC):
         with opened(path, place) as stream:
             return hashlib.file_digest(cast("io.BufferedReader", stream), "sha256").hexdigest()
 
-    def read(self, path: Path, place: str, labels: Mapping[str, Any], options: InputOptions) -> Curves:
+    def read(
+        self, path: Path, place: str, labels: Mapping[str, Any], options: InputOptions,
+        progress: Progress | None = None,
+    ) -> Curves:  # fmt: skip
         """The curves at `path`, with `labels` put over those of the file and the origin recorded."""
-        found = self.contents(path, place, options)
+        found = self.contents(path, place, options, progress)
         # The hash comes last: it would take long on a file too large to be read
         origin = {"path": place, "sha256": found.sha256 or self.fingerprint(path, place), "layout": self.name}
         return built(found, place, labels, origin)

@@ -15,6 +15,7 @@ from pathlib import Path
 import numpy as np
 
 from driftline.errors import InputError
+from driftline.progress import Progress
 from driftline.readers.assemble import Piece, assembled
 from driftline.readers.base import Contents, Layout, number
 from driftline.readers.columns import Choice
@@ -43,7 +44,9 @@ class FolderLayout(Layout):
         """Any folder."""
         return path.is_dir()
 
-    def contents(self, path: Path, place: str, options: InputOptions) -> Contents:
+    def contents(
+        self, path: Path, place: str, options: InputOptions, progress: Progress | None = None
+    ) -> Contents:  # fmt: skip
         """Read all files that fit the pattern; see `Layout.contents`."""
         pattern = Pattern.of(options.pattern) if options.pattern else _found_pattern(path, place)
         files = _files(path, pattern, place)

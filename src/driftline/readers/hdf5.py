@@ -22,6 +22,7 @@ import numpy.typing as npt
 
 from driftline.curves import Curve
 from driftline.errors import InputError
+from driftline.progress import Progress
 from driftline.readers.base import (
     LABEL_NAMES,
     NUMERIC_LABELS,
@@ -72,7 +73,9 @@ class Hdf5Layout(Layout):
         except InputError:
             return True
 
-    def contents(self, path: Path, place: str, options: InputOptions) -> Contents:
+    def contents(
+        self, path: Path, place: str, options: InputOptions, progress: Progress | None = None
+    ) -> Contents:  # fmt: skip
         """Read the file; see `Layout.contents`."""
         with open_hdf5(path, place) as file:
             labels, notes = _labels(file, place)

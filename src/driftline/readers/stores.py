@@ -106,6 +106,10 @@ class Hdf5Store(Store):
         """See `Store.read`."""
         return np.asarray(read_numbers(self._objects[path], self.where(path)), dtype=np.float64)
 
+    def dataset(self, path: str) -> h5py.Dataset:
+        """The dataset itself, for reading it a piece at a time."""
+        return self._objects[path]
+
     def attributes(self) -> list[str]:
         """See `Store.attributes`; a few objects are enough, since alike ones have alike attributes."""
         few = islice(self._objects.values(), 100)

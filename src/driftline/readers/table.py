@@ -17,6 +17,7 @@ one has a row for each disorder and columns for each size.
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Mapping
+from dataclasses import replace
 from itertools import islice
 from pathlib import Path
 
@@ -24,15 +25,18 @@ import numpy as np
 
 from driftline.curves import FloatArray
 from driftline.errors import InputError
-from driftline.readers.assemble import Assembled, Piece, assembled
+from driftline.progress import Progress
+from driftline.readers.assemble import UNLABELLED, Assembled, Piece, assembled, averaged_blocks
 from driftline.readers.base import NEEDED, OPTIONAL, Contents, Layout, check_columns
 from driftline.readers.columns import Choice, choose, wide_names
 from driftline.readers.guard import lines
 from driftline.readers.roles import Scene
 from driftline.readers.text import PROBED, TextTable, parsed, read_text
-from driftline.reading import InputOptions
+from driftline.reading import SEPARATORS, InputOptions
 from driftline.wording import listed
 
+RAW = ("size", "disorder", "value", "realisation")
+STREAMED = 30_000_000  # bytes from which a table of raw values is read a piece at a time, some 10^6 rows
 MAX_PACKED = 1 << 40  # bytes; only the first lines are read
 
 
@@ -49,7 +53,9 @@ class SummaryLayout(Layout):
         table = head(path, InputOptions(separator="comma"))
         return table is not None and table.names is not None and set(NEEDED) <= set(table.names)
 
-    def contents(self, path: Path, place: str, options: InputOptions) -> Contents:
+    def contents(
+        self, path: Path, place: str, options: InputOptions, progress: Progress | None = None
+    ) -> Contents:  # fmt: skip
         """Read the table; see `Layout.contents`."""
         table = read_text(path, place, InputOptions(separator="comma"))
         if table.names is None:
@@ -81,8 +87,18 @@ class TableLayout(Layout):
         """Any regular file: what is not text is refused with the reason while reading."""
         return path.is_file()
 
-    def contents(self, path: Path, place: str, options: InputOptions) -> Contents:
+    def contents(
+        self, path: Path, place: str, options: InputOptions, progress: Progress | None = None
+    ) -> Contents:  # fmt: skip
         """Read the table; see `Layout.contents`."""
+        if path.stat().st_size > STREAMED:
+            first = head(path, options)
+            if (
+                first is not None
+                and (choice := choice_of(replace(first, place=place), options)).raw
+                and not choice.wide
+            ):
+                return _streamed(path, replace(first, place=place), choice, options, progress)
         table = read_text(path, place, options)
         choice = choice_of(table, options)
         return table_contents(table, choice, options, resolved(self.name, table, choice, options))
@@ -133,6 +149,25 @@ def table_contents(table: TextTable, choice: Choice, options: InputOptions, agai
     return Contents(
         made.curves, table.labels, choice.columns, made.rows, [*notes, *made.notes], made.realisations, again
     )  # fmt: skip
+
+
+def _streamed(
+    path: Path, first: TextTable, choice: Choice, options: InputOptions, progress: Progress | None
+) -> Contents:  # fmt: skip
+    """A long table of raw values that is too large to be held at once; `first` is its beginning."""
+    from driftline.readers.streaming import LongText, Positions, stream
+
+    columns = {role: index for role, index in choice.sets[0][1].items() if role in RAW}
+    source = LongText(
+        path, first.place, Positions(first.width, **columns), separator=SEPARATORS[first.separator],
+        skip=int(first.lines[0]) - 1, skip_cut_lines=options.skip_cut_lines,
+    )  # fmt: skip
+    made = averaged_blocks(stream(source, progress=progress), options)
+    notes = [*first.notes, *unused_note(choice), *source.notes, *made.notes]
+    if "realisation" not in columns:
+        notes.append(UNLABELLED)
+    again = resolved(TableLayout.name, first, choice, options)
+    return Contents(made.curves, first.labels, choice.columns, made.rows, notes, made.realisations, again)
 
 
 def unused_note(choice: Choice) -> list[str]:
