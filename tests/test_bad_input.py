@@ -90,7 +90,7 @@ UNTOLD = "the names do not tell which column holds {}; the columns are {}; say i
          "value=...; a standard error is the standard deviation over realisations divided by the square root of their "
          "number"),
         ('size,"disorder,mean,error', "the quotation marks do not match; remove them"),
-        ("x" * 100_001, "the line is longer than 100000 characters; this is not a summary table"),
+        ("x" * 100_001, "the line is longer than 100000 characters; break it or give another file"),
     ],
 )  # fmt: skip
 def test_header(csv_fault, header, text):
@@ -207,14 +207,14 @@ def test_whole_table(csv_fault, content, text):
         ((HEADER + EIGHT).encode("utf-16"), ": the file is in UTF-16; save it as UTF-8"),
         ((HEADER + EIGHT).encode("utf-32"), ": the file is in UTF-32; save it as UTF-8"),
         ((HEADER + EIGHT).encode("utf-16-be"), ", line 1: there is a zero byte, so this is binary data or UTF-16; "
-         "save the table as text in UTF-8"),
+         "save it as text in UTF-8"),
         ((HEADER + EIGHT).encode() + b"\r\n12,\0", ", line 7: there is a zero byte, so this is binary data or UTF-16; "
-         "save the table as text in UTF-8"),
+         "save it as text in UTF-8"),
         (HEADER.encode() + "# Unschärfe\n".encode("latin-1"), ", line 2: byte 0xe4 is not valid UTF-8; "
          "save the file as UTF-8"),
         (b"\xef\xbb\xbfsize\r\xff", ", line 2: byte 0xff is not valid UTF-8; save the file as UTF-8"),
         (b"\x89PNG\r\n\x1a\n\0\0\0\rIHDR", ", line 3: there is a zero byte, so this is binary data or UTF-16; "
-         "save the table as text in UTF-8"),
+         "save it as text in UTF-8"),
         (b"\x1f\x8b\x08\0rest", ": the gzip file is truncated or damaged; copy or pack it again"),
         (b"PK\x03\x04rest", ": the file is a zip archive or a spreadsheet; save the table as CSV"),
     ],

@@ -126,8 +126,7 @@ def test_all_options_reach_the_settings(data, prepared):
         (["--out", "full"], "full: is not empty; give --force to replace it or choose another with --out"),
         (["--out", "full", "--force"], "full: holds no result.json, so it is not an output folder and --force does not "
                                        "delete it; choose another place with --out"),
-        (["--config", "none.toml"], "none.toml: cannot be read (No such file or directory); give a TOML file to "
-                                    "--config"),
+        (["--config", "none.toml"], "none.toml: there is no such file; check the path"),
     ],
 )  # fmt: skip
 def test_bad_options_are_one_sentence_and_nothing_is_computed(data, prepared, capsys, arguments, sentence):

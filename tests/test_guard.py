@@ -56,15 +56,15 @@ def test_gzip_reads_like_the_plain_text(tmp_path):
         (gzip.compress(gzip.compress(b"8,1.0\n")), ": the file is compressed with gzip twice; unpack it once"),
         (gzip.compress(b"PK\x03\x04"), ": the file is a zip archive or a spreadsheet; save the table as CSV"),
         (b"BZh9", ": the file is compressed with bzip2; unpack it first"),
-        (b"a\nb\0c", ", line 2: there is a zero byte, so this is binary data or UTF-16; save the table as text in "
+        (b"a\nb\0c", ", line 2: there is a zero byte, so this is binary data or UTF-16; save it as text in "
          "UTF-8"),
-        (b"a\n\xe9\n\0", ", line 3: there is a zero byte, so this is binary data or UTF-16; save the table as text in "
+        (b"a\n\xe9\n\0", ", line 3: there is a zero byte, so this is binary data or UTF-16; save it as text in "
          "UTF-8"),
         (b"a\n\nb\xe9c\n", ", line 3: byte 0xe9 is not valid UTF-8; save the file as UTF-8"),
         (b"a\r\n" * 360_000 + b"\xff", ", line 360001: byte 0xff is not valid UTF-8; save the file as UTF-8"),
         (b"a\nb\xc3", ", line 2: byte 0xc3 is not valid UTF-8; save the file as UTF-8"),
-        (b"a\n" + b"1," * 60_000 + b"1\n", ", line 2: the line is longer than 100000 characters; this is not a summary "
-         "table"),
+        (b"a\n" + b"1," * 60_000 + b"1\n", ", line 2: the line is longer than 100000 characters; break it or "
+         "give another file"),
         (b"", ": the file is empty"),
     ],
 )  # fmt: skip
@@ -83,7 +83,7 @@ def test_text_beyond_its_limits(tmp_path):
     for good in (path, packed):
         assert lines_of(good, most=100, longest=99) == [(1, "x" * 99)]
     advice = "a summary has one row per size and disorder, so average over realisations first"
-    plain = f"run.txt: the file is larger than 0 MB; {advice}"
+    plain = f"run.txt: the file is larger than 0.099 kB; {advice}"
     assert refusal(lambda: lines_of(path, most=99)) == plain
     assert refusal(lambda: lines_of(packed, most=99)) == plain.replace("the file", "what the file unpacks to")
     assert refusal(lambda: lines_of(path, longest=98)).startswith("run.txt, line 1: the line is longer than 98 ")

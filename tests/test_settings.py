@@ -98,13 +98,13 @@ def test_malformed_toml_is_refused_with_the_line(tmp_path):
 def test_unreadable_files_are_refused(tmp_path):
     """A missing file, a folder and text in another encoding get one sentence each."""
     missing = tmp_path / "none.toml"
-    with refusal(f"{missing}: cannot be read (No such file or directory); give a TOML file to --config"):
+    with refusal(f"{missing}: there is no such file; check the path"):
         Settings.resolve(missing)
-    with refusal(f"{tmp_path}: cannot be read (Is a directory); give a TOML file to --config"):
+    with refusal(f"{tmp_path}: this is a folder; give a file"):
         Settings.resolve(tmp_path)
     latin = tmp_path / "latin.toml"
     latin.write_bytes(b"[labels]\ndisorder_unit = '\xb5eV'\n")
-    with refusal(f"{latin}: is not UTF-8 text at byte 27; save it as UTF-8"):
+    with refusal(f"{latin}, line 2: byte 0xb5 is not valid UTF-8; save the file as UTF-8"):
         Settings.resolve(latin)
 
 

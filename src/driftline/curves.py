@@ -17,6 +17,7 @@ from driftline.covariance import doubt
 from driftline.display import Shown, symbol
 from driftline.errors import ConfigurationError, InputError
 from driftline.plain import attributes, plain
+from driftline.wording import brief, shown
 
 FloatArray = npt.NDArray[np.float64]
 DisorderKind = Literal["quenched", "quasiperiodic", "none"]
@@ -59,9 +60,8 @@ class Labels:
         for name in ("observable", "observable_symbol", "disorder_symbol", "disorder_unit"):
             object.__setattr__(self, name, _line_of_text(getattr(self, name), name))
         if self.disorder_kind not in ("quenched", "quasiperiodic", "none"):
-            raise InputError(
-                f"disorder_kind must be quenched, quasiperiodic or none, not {self.disorder_kind!r}", where="labels"
-            )
+            kind = brief(self.disorder_kind)
+            raise InputError(f"disorder_kind must be quenched, quasiperiodic or none, not {kind}", where="labels")
         for name in ("ergodic_value", "localised_value", "dimension"):
             value = getattr(self, name)
             if value is not None:
@@ -302,7 +302,7 @@ class Curves(Shown):
         names = [item.name for item in fields(Labels)]
         for name in changes:
             if name not in names:
-                raise ConfigurationError(f"there is no label {name!r}; the labels are {', '.join(names)}")
+                raise ConfigurationError(f"there is no label {shown(name)}; the labels are {', '.join(names)}")
         return Curves(self.curves, replace(self.labels, **changes), self.origin)
 
 
@@ -314,7 +314,7 @@ def _range_of(counts: npt.NDArray[np.int64]) -> str:
 def _line_of_text(value: object, name: str) -> str:
     text = value.strip() if isinstance(value, str) else ""
     if not isinstance(value, str) or not text.isprintable() or not (text or name == "disorder_unit"):
-        raise InputError(f"{name} must be one line of printable text, not {value!r}", where="labels")
+        raise InputError(f"{name} must be one line of printable text, not {brief(value)}", where="labels")
     return text
 
 
@@ -324,7 +324,7 @@ def _finite(value: object, name: str, *, where: str) -> float:
             raise TypeError
         result = float(value)  # type: ignore[arg-type]
     except (TypeError, ValueError, OverflowError) as reason:
-        raise InputError(f"{name} must be a number, not {value!r}", where=where) from reason
+        raise InputError(f"{name} must be a number, not {brief(value)}", where=where) from reason
     if not abs(result) <= LARGEST:  # NaN included
         raise InputError(f"{name} must be a finite number up to {LARGEST:g}, not {result:g}", where=where)
     return result

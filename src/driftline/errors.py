@@ -5,9 +5,17 @@ from __future__ import annotations
 from collections.abc import Iterable
 from difflib import get_close_matches
 
+from driftline.wording import printable
+
 
 class DriftlineError(ValueError):
-    """Base of every error a user can cause; its text is one clear sentence, fit to be shown as it is."""
+    """Base of every error a user can cause; its text is one clear sentence, fit to be shown as it is.
+
+    Names from files may end up in the text, so characters that a terminal would obey are written out as escapes.
+    """
+
+    def __init__(self, text: str) -> None:
+        super().__init__(printable(text))
 
 
 class InputError(DriftlineError):

@@ -6,7 +6,6 @@ Nothing numerical is imported before a label is checked or curves are cut, so th
 from __future__ import annotations
 
 import math
-import tomllib
 from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass, field, fields, replace
 from pathlib import Path
@@ -15,6 +14,7 @@ from typing import TYPE_CHECKING, Any
 from driftline.errors import ConfigurationError, InputError, suggestion
 from driftline.reading import InputOptions
 from driftline.scaling.defaults import DEFAULT_ANSATZE
+from driftline.wording import brief, shown
 
 if TYPE_CHECKING:
     from driftline.curves import Curves
@@ -22,6 +22,8 @@ if TYPE_CHECKING:
 
 FORMS_KEY = "ansatz"  # in a TOML file, where a form is a table [ansatz.NAME]
 MIN_DRAWS = 200  # the 95 % interval then still has five draws in each tail
+MAX_DRAWS = 1_000_000  # of some hundred points: a gigabyte
+MAX_JOBS = 4096  # beyond any machine; a system refuses many more processes with words of its own
 
 
 @dataclass(frozen=True)
@@ -156,21 +158,17 @@ class Settings:
 
 
 def _read_toml(path: Path) -> dict[str, Any]:
+    from driftline.readers.guard import read_toml  # numpy comes with it, so only where it is needed
+
     try:
-        content = tomllib.loads(path.read_text(encoding="utf-8"))
-    except OSError as reason:
-        raise ConfigurationError(
-            f"{path}: cannot be read ({reason.strerror}); give a TOML file to --config"
-        ) from reason
-    except UnicodeDecodeError as reason:
-        raise ConfigurationError(f"{path}: is not UTF-8 text at byte {reason.start + 1}; save it as UTF-8") from reason
-    except tomllib.TOMLDecodeError as reason:
-        raise ConfigurationError(f"{path}: is not valid TOML: {reason}") from reason
+        content = read_toml(path, str(path))
+    except InputError as reason:
+        raise ConfigurationError(str(reason)) from reason
     known = {FORMS_KEY if name == "forms" else name: name for name in _CHECKS}
     chosen = {}
     for key, value in content.items():
         if key not in known:
-            raise ConfigurationError(f"{path}: unknown key {key!r}; {suggestion(key, known)}")
+            raise ConfigurationError(f"{path}: unknown key {shown(key)}; {suggestion(key, known)}")
         chosen[known[key]] = _CHECKS[known[key]](value, f"{path}, {key}")
     _check_ansatz_names(chosen.get("ansatze", ()), chosen.get("forms", ()), f"{path}, ansatze")
     return chosen
@@ -182,27 +180,31 @@ def _number(value: Any, where: str) -> float:
     except OverflowError:  # TOML knows whole numbers of any length
         finite = False
     if not finite:
-        raise ConfigurationError(f"{where}: must be a finite number, not {value!r}")
+        raise ConfigurationError(f"{where}: must be a finite number, not {brief(value)}")
     return float(value)
 
 
-def _whole(value: Any, where: str, *, least: int) -> int:
+def _whole(value: Any, where: str, *, least: int, most: int) -> int:
     if isinstance(value, bool) or not isinstance(value, int):
-        raise ConfigurationError(f"{where}: must be a whole number, not {value!r}")
+        raise ConfigurationError(f"{where}: must be a whole number, not {brief(value)}")
     if value < least:
-        raise ConfigurationError(f"{where}: must be at least {least}, not {value}")
+        raise ConfigurationError(f"{where}: must be at least {least}, not {brief(value)}")
+    if value > most:
+        raise ConfigurationError(f"{where}: must be at most {most}, not {brief(value)}")
     return value
 
 
 def _ansatze(value: Any, where: str) -> tuple[str, ...]:
     if isinstance(value, str | Mapping) or not isinstance(value, Iterable):
-        raise ConfigurationError(f"{where}: must be a list of names, not {value!r}")
+        raise ConfigurationError(f"{where}: must be a list of names, not {brief(value)}")
     names = tuple(value)
+    seen: set[str] = set()
     for name in names:
         if not isinstance(name, str):
-            raise ConfigurationError(f"{where}: must be a list of names, but holds {name!r}")
-        if names.count(name) > 1:
-            raise ConfigurationError(f"{where}: {name!r} is given twice; give each ansatz once")
+            raise ConfigurationError(f"{where}: must be a list of names, but holds {brief(name)}")
+        if name in seen:
+            raise ConfigurationError(f"{where}: {shown(name)} is given twice; give each ansatz once")
+        seen.add(name)
     if not names:
         raise ConfigurationError(f"{where}: is empty; give at least one ansatz or leave the key out")
     return names
@@ -230,7 +232,7 @@ def _window(value: Any, where: str) -> tuple[float, float] | None:
     if value is None:
         return None
     if isinstance(value, str) or not isinstance(value, Iterable) or len(pair := tuple(value)) != 2:
-        raise ConfigurationError(f"{where}: must be two numbers, low and high, not {value!r}")
+        raise ConfigurationError(f"{where}: must be two numbers, low and high, not {brief(value)}")
     low, high = (_number(limit, where) for limit in pair)
     if low >= high:
         raise ConfigurationError(f"{where}: the low end {low:g} must lie below the high end {high:g}")
@@ -248,13 +250,13 @@ def _smallest_size(value: Any, where: str) -> float | None:
 
 def _switch(value: Any, where: str) -> bool:
     if not isinstance(value, bool):
-        raise ConfigurationError(f"{where}: must be true or false, not {value!r}")
+        raise ConfigurationError(f"{where}: must be true or false, not {brief(value)}")
     return value
 
 
 def _labels(value: Any, where: str) -> dict[str, Any]:
     if not isinstance(value, Mapping):
-        raise ConfigurationError(f"{where}: must be a table of labels, not {value!r}")
+        raise ConfigurationError(f"{where}: must be a table of labels, not {brief(value)}")
     if not value:
         return {}
     from driftline.curves import Labels  # numpy comes with it, so only where it is needed
@@ -263,7 +265,7 @@ def _labels(value: Any, where: str) -> dict[str, Any]:
     checked = {}
     for name, label in value.items():
         if name not in kinds:
-            raise ConfigurationError(f"{where}: unknown label {name!r}; {suggestion(name, kinds)}")
+            raise ConfigurationError(f"{where}: unknown label {shown(name)}; {suggestion(name, kinds)}")
         checked[name] = _label(label, f"{where}.{name}", kinds[name])
     try:
         Labels(**checked)
@@ -277,7 +279,7 @@ def _label(value: Any, where: str, kind: str) -> Any:
         # TOML has no null, so the word none stands for it
         return None if value is None or value == "none" else _number(value, where)
     if not isinstance(value, str):
-        raise ConfigurationError(f"{where}: must be text, not {value!r}")
+        raise ConfigurationError(f"{where}: must be text, not {brief(value)}")
     return value
 
 
@@ -285,11 +287,11 @@ _CHECKS: dict[str, Callable[[Any, str], Any]] = {
     "ansatze": _ansatze,
     "window": _window,
     "smallest_size": _smallest_size,
-    "seed": lambda value, where: _whole(value, where, least=0),
+    "seed": lambda value, where: _whole(value, where, least=0, most=2**63 - 1),
     "quick": _switch,
-    "jobs": lambda value, where: _whole(value, where, least=1),
+    "jobs": lambda value, where: _whole(value, where, least=1, most=MAX_JOBS),
     "labels": _labels,
-    "draws": lambda value, where: _whole(value, where, least=MIN_DRAWS),
+    "draws": lambda value, where: _whole(value, where, least=MIN_DRAWS, most=MAX_DRAWS),
     "forms": _forms,
     "input": InputOptions.of_table,
 }

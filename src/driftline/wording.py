@@ -3,7 +3,9 @@
 from __future__ import annotations
 
 import re
+import reprlib
 from collections.abc import Iterable
+from typing import Any
 
 # Control characters (a terminal obeys escape sequences, and a carriage return hides what stood before), line and
 # paragraph separators, marks that reverse the direction of writing, and halves of surrogate pairs, which stand for
@@ -32,3 +34,21 @@ def listed(names: Iterable[str], *, most: int = 12) -> str:
     every = [name if len(name) <= 30 and name.isprintable() else shown(name)[1:-1] for name in names]
     rest = f" and {len(every) - most} more" if len(every) > most else ""
     return ", ".join(every[:most]) + rest
+
+
+def brief(value: Any) -> str:
+    """A value of a configuration as Python writes it, shortened at every level, for use inside a sentence."""
+    return _BRIEF.repr(value)
+
+
+class _Brief(reprlib.Repr):
+    def __init__(self) -> None:
+        super().__init__()
+        self.maxstring = self.maxother = 60
+
+    def repr_int(self, x: int, level: int) -> str:
+        # the interpreter refuses to write out more than some thousand digits
+        return super().repr_int(x, level) if x.bit_length() < 1000 else f"a whole number of {x.bit_length()} bits"
+
+
+_BRIEF = _Brief()

@@ -16,6 +16,7 @@ from typing import TYPE_CHECKING
 import click
 
 from driftline.progress import columns_of
+from driftline.wording import printable
 
 if TYPE_CHECKING:
     from rich.console import Console
@@ -58,7 +59,7 @@ def safe(text: str) -> str:
     >>> safe("a\\x1b[31mb")
     'a\\\\x1b[31mb'
     """
-    return "".join(letter if letter.isprintable() or letter == "\n" else ascii(letter)[1:-1] for letter in text)
+    return printable(text, keep="\n")
 
 
 def text_width() -> int:

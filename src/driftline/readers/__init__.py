@@ -20,6 +20,7 @@ from driftline.readers.folder import FolderLayout
 from driftline.readers.hdf5 import Hdf5Layout
 from driftline.readers.table import SummaryLayout, TableLayout, WideLayout
 from driftline.reading import InputOptions
+from driftline.wording import shown
 
 #: Asked in this order; the table comes last because any text file might be one.
 LAYOUTS: tuple[Layout, ...] = (
@@ -95,7 +96,7 @@ def _named(name: str) -> Layout:
         if layout.name == name:
             return layout
     names = ", ".join(layout.name for layout in LAYOUTS)
-    raise ConfigurationError(f"there is no layout {name!r}; the layouts are {names}")
+    raise ConfigurationError(f"there is no layout {shown(name)}; the layouts are {names}")
 
 
 def _recognised(path: Path, place: str, options: InputOptions) -> Layout:

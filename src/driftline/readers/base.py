@@ -23,7 +23,7 @@ from driftline.errors import InputError
 from driftline.progress import Progress
 from driftline.readers.guard.files import opened
 from driftline.reading import InputOptions
-from driftline.wording import listed, shown
+from driftline.wording import listed, printable, shown
 
 NEEDED = ("size", "disorder", "mean", "error")
 OPTIONAL = ("samples",)
@@ -120,7 +120,7 @@ class Layout(ABC):
         """The curves at `path`, with `labels` put over those of the file and the origin recorded."""
         found = self.contents(path, place, options, progress)
         # The hash comes last: it would take long on a file too large to be read
-        origin = {"path": place, "sha256": found.sha256 or self.fingerprint(path, place), "layout": self.name}
+        origin = {"path": printable(place), "sha256": found.sha256 or self.fingerprint(path, place), "layout": self.name}
         return built(found, place, labels, origin)
 
 

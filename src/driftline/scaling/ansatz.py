@@ -23,6 +23,7 @@ from driftline.scaling.lengths import LENGTHS
 from driftline.scaling.parameters import Parameter
 from driftline.scaling.priors import LogNormal, Normal
 from driftline.scaling.trajectories import TRAJECTORIES, Hypothesis
+from driftline.wording import shown
 
 CORRECTED = "corrected"
 AMPLITUDE = "amplitude"
@@ -184,18 +185,19 @@ def check_ansatz_name(name: str, forms: Iterable[Form] = ()) -> None:
     known = [*LENGTHS, *FORMS, *(form.name for form in forms)]
     if first not in known:
         raise ConfigurationError(
-            f"ansatz {name!r} must begin with a scaled variable ({', '.join(known)})" + _suggestion(first, known)
+            f"ansatz {shown(name, longest=80)} must begin with a scaled variable ({', '.join(known)})"
+            + _suggestion(first, known)
         )
     parts = [*TRAJECTORIES, CORRECTED, AMPLITUDE] if first in LENGTHS else [CORRECTED, AMPLITUDE]
     for part in rest:
         if part not in parts and not _is_amplitude(part):
             raise ConfigurationError(
-                f"ansatz {name!r} has a part {part!r} that {first} does not take; it takes {', '.join(parts)}"
-                + _suggestion(part, parts)
+                f"ansatz {shown(name, longest=80)} has a part {shown(part)} that {first} does not take; it takes "
+                f"{', '.join(parts)}" + _suggestion(part, parts)
             )
     kinds = ["trajectory" if part in TRAJECTORIES else part.partition("=")[0] for part in rest]
     if len(set(kinds)) < len(kinds):
-        raise ConfigurationError(f"ansatz {name!r} names a part twice; one of each kind is enough")
+        raise ConfigurationError(f"ansatz {shown(name, longest=80)} names a part twice; one of each kind is enough")
 
 
 def _is_amplitude(part: str) -> bool:

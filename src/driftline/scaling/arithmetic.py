@@ -25,6 +25,7 @@ from numpy.typing import NDArray
 
 from driftline.curves import FloatArray
 from driftline.errors import ConfigurationError
+from driftline.wording import brief
 
 #: Longest text and deepest nesting of a formula (a sum of n terms is nested n deep): far above what a person writes,
 #: and enough to bound the time of parsing and evaluation.
@@ -106,7 +107,7 @@ def parse_formula(text: str, names: Iterable[str]) -> Formula:
 def _clean(text: str) -> str:
     """The text with single spaces; refused if it is too long or holds a character that arithmetic does not need."""
     if not isinstance(text, str):
-        raise ConfigurationError(f"must be text, not {text!r}")
+        raise ConfigurationError(f"must be text, not {brief(text)}")
     if len(text) > MOST_CHARACTERS:
         raise ConfigurationError(f"has {len(text)} characters; shorten it to at most {MOST_CHARACTERS}")
     clean = re.sub(r"[ \t\r\n]+", " ", text).strip(" ")

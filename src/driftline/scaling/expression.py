@@ -25,6 +25,7 @@ from driftline.scaling.lengths import LENGTHS
 from driftline.scaling.parameters import Parameter
 from driftline.scaling.priors import LogNormal, LogUniform, Normal, Prior, Uniform
 from driftline.scaling.trajectories import TRAJECTORIES, Hypothesis
+from driftline.wording import brief
 
 DISORDER, SIZE = "W", "L"
 TAKEN_NAMES = (*LENGTHS, *FORMS, *TRAJECTORIES, CORRECTED, AMPLITUDE)
@@ -68,7 +69,7 @@ class ExpressionForm(Form):
     Examples
     --------
     >>> from driftline.scaling.priors import LogUniform, Uniform
-    >>> priors = {"W_c": Uniform(2, 6), "nu": LogUniform.between(0.2, 10)}
+        >>> priors = {"W_c": Uniform(2, 6), "nu": LogUniform.between(0.2, 10)}
     >>> ExpressionForm("my-form", "(W - W_c) * L**(1/nu)", "transition", priors).formula
     'x = (W - W_c) * L**(1/nu)'
     """
@@ -90,7 +91,7 @@ class ExpressionForm(Form):
         if self.hypothesis not in get_args(Hypothesis):
             choices = ", ".join(get_args(Hypothesis))
             raise ConfigurationError(
-                f"form {self.name!r}: hypothesis must be one of {choices}, not {self.hypothesis!r}"
+                f"form {self.name!r}: hypothesis must be one of {choices}, not {brief(self.hypothesis)}"
             )
         object.__setattr__(self, "priors", priors)
         object.__setattr__(self, "x", self._formula.text)
@@ -208,7 +209,8 @@ def _check_parameter(form: str, name: str) -> None:
 def _check_prior(form: str, name: str, prior: Prior) -> None:
     if type(prior) not in PRIORS:
         kinds = ", ".join(kind.__name__ for kind in PRIORS)
-        raise ConfigurationError(f"form {form!r}: parameter {name!r}: the prior must be one of {kinds}, not {prior!r}")
+        where = f"form {form!r}: parameter {name!r}"
+        raise ConfigurationError(f"{where}: the prior must be one of {kinds}, not {brief(prior)}")
     with np.errstate(all="ignore"):
         ends = prior.value(prior.quantile(np.array([0.001, 0.999])))
     if not (np.isfinite(ends).all() and ends[0] < ends[1]):

@@ -23,6 +23,7 @@ import numpy as np
 from driftline.errors import ConfigurationError
 from driftline.scaling.expression import ExpressionForm
 from driftline.scaling.priors import LogNormal, LogUniform, Normal, Prior, Uniform
+from driftline.wording import brief, shown
 
 Numbers = Mapping[str, float]
 
@@ -116,8 +117,8 @@ def _given(value: Any) -> Iterable[ExpressionForm]:
     for item in items:
         if not isinstance(item, ExpressionForm):
             raise ConfigurationError(
-                f"must hold a table [ansatz.NAME] for each form of your own, not {item!r}; the list of ansätze to run "
-                "is called ansatze"
+                f"must hold a table [ansatz.NAME] for each form of your own, not {brief(item)}; the list of ansätze to "
+                "run is called ansatze"
             )
     return items
 
@@ -127,13 +128,13 @@ def _form(name: str, table: Any) -> ExpressionForm:
         return table
     where = f"form {name!r}"
     if not isinstance(table, Mapping):
-        raise ConfigurationError(f"{where}: must be a table with {', '.join(KEYS)}, not {table!r}")
+        raise ConfigurationError(f"{where}: must be a table with {', '.join(KEYS)}, not {brief(table)}")
     _require_keys(table, KEYS, KEYS[:2], where)
     if not isinstance(table["x"], str):
-        raise ConfigurationError(f"{where}: x must be text, not {table['x']!r}")
+        raise ConfigurationError(f"{where}: x must be text, not {brief(table['x'])}")
     parameters = table.get("parameters", {})
     if not isinstance(parameters, Mapping):
-        raise ConfigurationError(f"{where}: parameters must be a table of priors by name, not {parameters!r}")
+        raise ConfigurationError(f"{where}: parameters must be a table of priors by name, not {brief(parameters)}")
     priors = {each: _prior(given, f"{where}: parameter {each!r}") for each, given in parameters.items()}
     return ExpressionForm(name, table["x"], table["hypothesis"], priors)
 
@@ -143,10 +144,11 @@ def _prior(table: Any, where: str) -> Prior:
         return table
     example = '{ prior = "uniform", low = 2, high = 6 }'
     if not isinstance(table, Mapping) or "prior" not in table:
-        raise ConfigurationError(f"{where}: must be a prior such as {example}, not {table!r}")
+        raise ConfigurationError(f"{where}: must be a prior such as {example}, not {brief(table)}")
     name = table["prior"]
     if not isinstance(name, str) or name not in KINDS:
-        raise ConfigurationError(f"{where}: prior must be one of {', '.join(KINDS)}, not {name!r}{_near(name, KINDS)}")
+        kinds = ", ".join(KINDS)
+        raise ConfigurationError(f"{where}: prior must be one of {kinds}, not {brief(name)}{_near(name, KINDS)}")
     kind = KINDS[name]
     _require_keys(table, ("prior", *kind.keys), kind.keys, where)
     first, second = (_number(table[key], f"{where}: {key}") for key in kind.keys)
@@ -167,7 +169,8 @@ def _check_numbers(kind: Kind, first: float, second: float, where: str) -> None:
 def _require_keys(table: Mapping[str, Any], known: tuple[str, ...], needed: tuple[str, ...], where: str) -> None:
     for key in table:
         if key not in known:
-            raise ConfigurationError(f"{where}: unknown key {key!r}{_near(key, known)}; known are {', '.join(known)}")
+            keys = ", ".join(known)
+            raise ConfigurationError(f"{where}: unknown key {shown(key)}{_near(key, known)}; known are {keys}")
     for key in needed:
         if key not in table:
             raise ConfigurationError(f"{where}: {key} is missing; give {' and '.join(needed)}")
@@ -179,7 +182,7 @@ def _number(value: Any, where: str) -> float:
     except OverflowError:  # TOML knows whole numbers of any length
         finite = False
     if not finite:
-        raise ConfigurationError(f"{where} must be a finite number, not {value!r}")
+        raise ConfigurationError(f"{where} must be a finite number, not {brief(value)}")
     return float(value)
 
 

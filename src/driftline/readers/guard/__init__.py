@@ -14,6 +14,7 @@ HDF5                                    ``with open_hdf5(path, place) as file``,
                                         a dataset, `pieces` for a dataset that is too large for the memory
 ``.npz``, ``.npy``                      ``with open_npz(path, place) as archive`` (``archive.names``, ``.shape(name)``,
                                         ``.read(name)``), `read_npy`
+TOML                                    `read_toml`
 ======================================  ============================================================================
 
 `place` is the path in the user's own words and `where` the place within, both for the sentence of a fault. Limits are
@@ -39,6 +40,7 @@ from driftline.readers.guard.hdf5 import (
 from driftline.readers.guard.limits import MAX_FILES, MAX_LINE, MAX_NUMBERS, MAX_TEXT
 from driftline.readers.guard.npz import Archive, open_npz, read_npy
 from driftline.readers.guard.text import lines, table_bytes
+from driftline.readers.guard.toml import read_toml
 
 __all__ = [
     "MAX_FILES",
@@ -60,6 +62,7 @@ __all__ = [
     "pieces",
     "read_npy",
     "read_numbers",
+    "read_toml",
     "refuse_foreign_values",
     "resolve",
     "table_bytes",

@@ -16,3 +16,8 @@ MAX_OBJECTS = 200_000
 MAX_REPEATED = 10_000
 #: Groups inside groups.
 MAX_DEPTH = 32
+#: Bytes of a configuration, and dots in it: one dotted key of this length takes seconds to parse.
+MAX_CONFIG = 100_000
+MAX_CONFIG_DOTS = 5_000
+#: Tables inside tables of a configuration.
+MAX_CONFIG_DEPTH = 20

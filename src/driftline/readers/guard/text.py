@@ -20,6 +20,9 @@ from driftline.errors import InputError
 from driftline.readers.guard.files import opened, refusals
 from driftline.readers.guard.limits import MAX_LINE, MAX_TEXT
 
+#: What to do about a summary that is too large.
+SUMMARY = "a summary has one row per size and disorder, so average over realisations first"
+
 _BLOCK = 1 << 20
 _GZIP = b"\x1f\x8b"
 _FOREIGN = (
@@ -35,7 +38,13 @@ _FOREIGN = (
 
 
 def lines(
-    path: Path, place: str, *, most: int = MAX_TEXT, longest: int = MAX_LINE, ends: bool = False
+    path: Path,
+    place: str,
+    *,
+    most: int = MAX_TEXT,
+    longest: int = MAX_LINE,
+    ends: bool = False,
+    advice: str = SUMMARY,
 ) -> Iterator[tuple[int, str]]:
     """Lines of a text file, each with its number from 1 and without its end, read as they are asked for.
 
@@ -49,6 +58,8 @@ def lines(
         Most characters of a line.
     ends : bool
         Leave the end at each line, as a newline: a last line that was cut short has none.
+    advice : str
+        What to do about a file that is too large.
 
     Yields
     ------
@@ -64,7 +75,7 @@ def lines(
     -----
     A fault is raised when its line is reached, so use nothing of a file before its last line has come.
     """
-    with table_bytes(path, place, most=most) as stream:
+    with table_bytes(path, place, most=most, advice=advice) as stream:
         # utf-8-sig drops the mark that spreadsheets put in front
         reader = io.TextIOWrapper(stream, encoding="utf-8-sig", newline=None)
         for count in itertools.count(1):
@@ -80,7 +91,7 @@ def lines(
 
 
 @contextmanager
-def table_bytes(path: Path, place: str, *, most: int = MAX_TEXT) -> Iterator[BinaryIO]:
+def table_bytes(path: Path, place: str, *, most: int = MAX_TEXT, advice: str = SUMMARY) -> Iterator[BinaryIO]:
     """The bytes of a text file, unpacked if they are gzip, as a stream that stops with a fault after `most` bytes.
 
     For parsers that take a stream of bytes. Encoding, zero bytes and lengths of lines are left to them.
@@ -95,9 +106,9 @@ def table_bytes(path: Path, place: str, *, most: int = MAX_TEXT) -> Iterator[Bin
         size = stream.seek(0, io.SEEK_END)
         stream.seek(0)
         if size > most:
-            raise InputError(_too_large(most, packed=packed), where=place)
+            raise InputError(_too_large(most, advice, packed=packed), where=place)
         plain = cast("BinaryIO", gzip.GzipFile(fileobj=stream)) if packed else stream
-        bounded = io.BufferedReader(cast("io.RawIOBase", _Bounded(plain, most, place)), _BLOCK)
+        bounded = io.BufferedReader(cast("io.RawIOBase", _Bounded(plain, most, place, advice)), _BLOCK)
         _refuse_foreign(bounded.peek(8), packed, place)
         yield cast("BinaryIO", bounded)
 
@@ -105,8 +116,8 @@ def table_bytes(path: Path, place: str, *, most: int = MAX_TEXT) -> Iterator[Bin
 class _Bounded(io.RawIOBase):
     """At most `most` bytes of `source`; asking for more is a fault rather than an end, which would look complete."""
 
-    def __init__(self, source: BinaryIO, most: int, place: str) -> None:
-        self._source, self._left, self._most, self._place = source, most, most, place
+    def __init__(self, source: BinaryIO, most: int, place: str, advice: str) -> None:
+        self._source, self._left, self._most, self._place, self._advice = source, most, most, place, advice
 
     def readable(self) -> bool:
         return True
@@ -115,7 +126,7 @@ class _Bounded(io.RawIOBase):
         got = self._source.read(min(len(buffer), _BLOCK))
         self._left -= len(got)
         if self._left < 0:
-            raise InputError(_too_large(self._most, packed=True), where=self._place)
+            raise InputError(_too_large(self._most, self._advice, packed=True), where=self._place)
         buffer[: len(got)] = got
         return len(got)
 
@@ -134,12 +145,10 @@ def _gzip_faults(place: str) -> Iterator[None]:
         raise
 
 
-def _too_large(most: int, *, packed: bool) -> str:
+def _too_large(most: int, advice: str, *, packed: bool) -> str:
     subject = "what the file unpacks to" if packed else "the file"
-    return (
-        f"{subject} is larger than {most / 1e6:.0f} MB; a summary has one row per size and disorder, so average over "
-        "realisations first"
-    )
+    amount = f"{most / 1e6:.0f} MB" if most >= 1_000_000 else f"{most / 1e3:g} kB"
+    return f"{subject} is larger than {amount}; {advice}"
 
 
 def _refuse_foreign(start: bytes, packed: bool, place: str) -> None:
@@ -154,7 +163,7 @@ def _check_line(line: str, longest: int, where: str) -> None:
     if "\0" in line:
         raise _zero_byte(where)
     if len(line) > longest:
-        raise InputError(f"the line is longer than {longest} characters; this is not a summary table", where=where)
+        raise InputError(f"the line is longer than {longest} characters; break it or give another file", where=where)
 
 
 def _not_utf8(path: Path, place: str, most: int) -> InputError:
@@ -179,7 +188,7 @@ def _not_utf8(path: Path, place: str, most: int) -> InputError:
 
 
 def _zero_byte(where: str) -> InputError:
-    problem = "there is a zero byte, so this is binary data or UTF-16; save the table as text in UTF-8"
+    problem = "there is a zero byte, so this is binary data or UTF-16; save it as text in UTF-8"
     return InputError(problem, where=where)
 
 
