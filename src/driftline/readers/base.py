@@ -120,7 +120,11 @@ class Layout(ABC):
         """The curves at `path`, with `labels` put over those of the file and the origin recorded."""
         found = self.contents(path, place, options, progress)
         # The hash comes last: it would take long on a file too large to be read
-        origin = {"path": printable(place), "sha256": found.sha256 or self.fingerprint(path, place), "layout": self.name}
+        origin = {
+            "path": printable(place),
+            "sha256": found.sha256 or self.fingerprint(path, place),
+            "layout": self.name,
+        }
         return built(found, place, labels, origin)
 
 
