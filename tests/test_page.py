@@ -3,6 +3,7 @@
 import json
 import re
 from dataclasses import replace
+from html import escape
 from html.parser import HTMLParser
 from importlib.resources import files
 
@@ -16,7 +17,7 @@ from driftline.report.page.document import SCRIPTS, policy, resource
 from driftline.report.page.elements import embedded
 from driftline.report.page.limits import limits
 from driftline.report.page.panel import FORMS, LENGTHS, TRAJECTORIES, panel, panel_data
-from driftline.report.page.pictures import inline
+from driftline.report.page.pictures import figures, inline
 from driftline.report.page.sections import HEADINGS
 from driftline.report.page.symbols import mathtext_to_html
 from driftline.scaling import forms, lengths, trajectories
@@ -145,6 +146,19 @@ def test_the_picture_is_the_same_after_inlining(pictures):
         for each in (raw.decode(), small)
     ]
     assert np.max(np.abs(numbers[0] - numbers[1])) <= 0.005 + 1e-9  # half of the last digit, and rounding
+
+
+def test_a_huge_figure_becomes_a_bitmap(tmp_path):
+    """A figure of too many points is shown as the PNG that lies beside it, with the same words."""
+    (tmp_path / "curves.svg").write_text(
+        f'<svg xmlns="http://www.w3.org/2000/svg"><path d="{"M1 1" * 130_000}"/></svg>'
+    )
+    (tmp_path / "curves.png").write_bytes(b"picture")
+    shown = figures(made_analysis(), tmp_path)
+    assert "<svg" not in shown
+    (image,) = Outline(shown).all("img")
+    assert image["src"] == "data:image/png;base64,cGljdHVyZQ=="
+    assert f"<figcaption>{escape(image['alt'])}</figcaption>" in shown
 
 
 def test_nothing_of_the_data_file_becomes_markup(pictures):

@@ -14,7 +14,14 @@
 
   const current = () => Number(choice.value);
   const digits = (value) => String(Number(value.toPrecision(6)));
-  const tell = (text) => { find("panel-status").textContent = text; };
+
+  /* For screen readers, which cannot see the numbers change; a complaint is for everybody. */
+  function tell(text, complaint = false) {
+    const status = find("panel-status");
+    status.textContent = text;
+    status.className = complaint ? "complaint" : "silent";
+  }
+
   const misfit = (result) => (result === null ? "not defined here" : result.misfit.toPrecision(3));
   const reference = data.fits.map((fit, index) => Refit.at(data, fit, medians[index], whiten));
 
@@ -66,15 +73,15 @@
     number.addEventListener("input", () => {
       if (number.value === "" || !number.checkValidity()) {
         number.setAttribute("aria-invalid", "true");
-        tell(number.validationMessage || `${name} must be a number`);
+        tell(`${name}: ${number.validationMessage || "give a number."} The picture stays as it was.`, true);
         return;
       }
       values[index][name] = Number(number.value);
       write(index, order, number);
       show();
+      announce();
     });
     slider.addEventListener("change", announce);
-    number.addEventListener("change", () => { if (number.checkValidity()) announce(); });
   }
 
   data.fits.forEach((fit, index) => fit.parameters.forEach((each, order) => {
@@ -84,7 +91,12 @@
   choice.value = String(data.start);  // a reload would keep the choice of before
   choice.addEventListener("change", () => { choose(); announce(); });
   find("panel-reset").addEventListener("click", reset);
-  new ResizeObserver(show).observe(find("panel-plot").parentElement);
+  let width = 0;
+  new ResizeObserver(([entry]) => {
+    if (entry.contentRect.width === width) return;  // the picture's own height is no reason to draw it again
+    width = entry.contentRect.width;
+    show();
+  }).observe(find("panel-plot").parentElement);
   find("panel-fallback").hidden = true;
   find("panel").hidden = false;
   choose();

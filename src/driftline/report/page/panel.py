@@ -171,7 +171,7 @@ def _marker(name: str) -> str:
     """Outline of a marker of matplotlib as SVG, upside up."""
     from matplotlib.markers import MarkerStyle
 
-    style = MarkerStyle(name)  # type: ignore[arg-type]
+    style = MarkerStyle(name)
     outlines = style.get_path().transformed(style.get_transform()).to_polygons()
     reach = max(float(np.abs(outline).max()) for outline in outlines)
     return "".join(

@@ -129,7 +129,7 @@ def _reproduce(analysis: Analysis) -> str:
             *([f"<p>SHA-256 of the data file: <code>{text(str(digest))}</code></p>"] if digest else []),
             "<p>The file <code>analysis.toml</code> stands beside this page, and here in full:</p>",
             f"<pre>{text(to_toml(analysis.settings))}</pre>",
-            "<p>The same numbers come from:</p>",
+            "<p>The same numbers come from this command, with the path as it was given then:</p>",
             f"<pre>{text(command)}</pre>",
         ]
     )
