@@ -12,6 +12,7 @@ import pytest
 from analyses import CAUTION, OPENING, made_analysis, made_curves
 from pages import HOSTILE, draw
 
+from driftline.rates import Count, FalseAlarm
 from driftline.report.page import page
 from driftline.report.page.document import SCRIPTS, policy, resource
 from driftline.report.page.elements import embedded
@@ -272,8 +273,23 @@ def test_what_the_result_does_not_show():
     assert "How forms whose crossover moves on with size or forms without any critical disorder" in supported
     assert "no false-alarm rate was measured" in supported
     analysis = made_analysis()
-    measured = replace(analysis, verdict=replace(analysis.verdict, false_alarm={"drift": 0.02}))
+    measured = replace(analysis, verdict=replace(analysis.verdict, false_alarm=rates()))
+    unlike = replace(analysis, verdict=replace(analysis.verdict, false_alarm=replace(rates(), alike=False)))
+    assert "no false-alarm rate" in " ".join(limits(unlike))
     assert "no false-alarm rate" not in " ".join(limits(measured))
+
+
+def rates():
+    """Measured rates, three wrong in four hundred each."""
+    return FalseAlarm(0.02, (6.0, 14.0), *[Count(3, 400)] * 5, True)
+
+
+def test_measured_rates_stand_beside_the_verdict(tmp_path):
+    """How often verdicts were wrong on simulated data is part of the verdict's box."""
+    analysis = made_analysis()
+    shown = page(replace(analysis, verdict=replace(analysis.verdict, false_alarm=rates())), tmp_path)
+    box = shown[shown.index('<div class="verdict good">') : shown.index('id="numbers"')]
+    assert f"<p>{escape(rates().sentence)}</p>" in box
 
 
 @pytest.mark.parametrize(

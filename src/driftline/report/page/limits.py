@@ -40,10 +40,10 @@ def limits(analysis: Analysis) -> Iterator[str]:
             "What a full run adds: with --quick there is no chain to check the posterior, and there are fewer "
             "stability refits. Leave it out for numbers to publish."
         )
-    if not analysis.verdict.false_alarm:
+    if analysis.verdict.false_alarm is None or not analysis.verdict.false_alarm.alike:
         yield (
             "How often this verdict is wrong on data like these: no false-alarm rate was measured for this grid and "
-            "these errors."
+            "these errors; driftline calibrate does it."
         )
 
 

@@ -51,11 +51,10 @@ def sections(analysis: Analysis, pictures: Path) -> dict[str, str]:
 def _verdict(analysis: Analysis) -> str:
     verdict = analysis.verdict
     role = "verdict good" if verdict.code == SUPPORTED else "verdict"
-    rates = ", ".join(f"{name} {numerals.probability(rate)}" for name, rate in verdict.false_alarm.items())
     return (
         f'<div class="{role}">\n{paragraph(verdict.statement)}\n<p>Verdict: <code>{text(verdict.code)}</code></p>\n'
         + bullets(rows.reasons(analysis))
-        + (paragraph(f"Measured false-alarm rates: {rates}.") if rates else "")
+        + ("" if verdict.false_alarm is None else paragraph(verdict.false_alarm.sentence))
         + "</div>"
     )
 
