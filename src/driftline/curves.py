@@ -191,6 +191,36 @@ class Curves(Shown):
     def __reduce__(self) -> tuple[Any, ...]:
         return Curves, (self.curves, self.labels, dict(self.origin))  # a read-only mapping cannot be pickled
 
+    @classmethod
+    def from_table(cls, table: Any, **words: Any) -> Curves:
+        """Curves of a table in memory: averaged rows, or raw values with a row for each realisation.
+
+        Parameters
+        ----------
+        table : data frame, mapping, record array or array of rows
+            A frame of pandas or polars (neither is imported here), a mapping of names to arrays, a numpy array with
+            named fields, or an array of rows with ``columns=("size", "disorder", "mean", "error")``.
+        **words
+            Fields of `driftline.reading.InputOptions`, above all ``columns={"size": "L", "mean": "r"}``, and labels.
+
+        Raises
+        ------
+        InputError
+            If it is no table, its columns do not tell what they hold, or the numbers cannot be used.
+        ConfigurationError
+            If there is no such option or label.
+
+        Examples
+        --------
+        >>> L, W = np.repeat([8, 12], 5), np.tile(np.linspace(1, 5, 5), 2)
+        >>> table = {"L": L, "W": W, "r": np.tanh((3 - W) * L / 8), "sem": np.full(10, 0.01)}
+        >>> Curves.from_table(table, ergodic_value=1.0).sizes.tolist()
+        [8.0, 12.0]
+        """
+        from driftline.readers import read  # a floor above this one: only the convenience leads up there
+
+        return read(table, **words)
+
     @property
     def sizes(self) -> FloatArray:
         """Sizes in increasing order, shape (m,)."""

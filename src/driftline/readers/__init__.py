@@ -17,6 +17,7 @@ from driftline.progress import Progress
 from driftline.readers.arrays import Hdf5TreeLayout, NpzLayout
 from driftline.readers.base import Layout
 from driftline.readers.folder import FolderLayout
+from driftline.readers.frames import curves_of_table
 from driftline.readers.hdf5 import Hdf5Layout
 from driftline.readers.table import SummaryLayout, TableLayout, WideLayout
 from driftline.reading import InputOptions
@@ -37,14 +38,15 @@ __all__ = ["LAYOUTS", "Layout", "read"]
 
 
 def read(
-    path: str | os.PathLike[str], *, input: InputOptions | None = None, progress: Progress | None = None, **words: Any
+    path: Any, *, input: InputOptions | None = None, progress: Progress | None = None, **words: Any
 ) -> Curves:  # fmt: skip
     """Read the curves in a file or folder.
 
     Parameters
     ----------
-    path : path
-        A file or folder in one of the `LAYOUTS`; the content decides which, not the name.
+    path : path or table
+        A file or folder in one of the `LAYOUTS`; the content decides which, not the name. Or a table in memory, as
+        `Curves.from_table` takes it.
     input : InputOptions, optional
         How to read it, as far as the content does not say so.
     progress : callable, optional
@@ -68,6 +70,8 @@ def read(
         If there is no such layout, option or label, or an option cannot be used.
     """
     options, labels = split_words(input, words)
+    if not isinstance(path, str | os.PathLike):
+        return curves_of_table(path, options, labels)
     place, target = os.fspath(path), Path(path)
     chosen = None if options.layout is None else _named(options.layout)
     try:

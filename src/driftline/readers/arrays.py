@@ -174,7 +174,7 @@ def _roles(
 
 def _help(store: Store, names: Sequence[str]) -> str:
     """What else is in the file, and how to get at it."""
-    told = [f"the file holds {store.seen()}"]
+    told = [f"it holds {store.seen()}"]
     unknown = next((name for name in names if "{?}" in name), None)
     if unknown is not None:
         example = unknown.replace("{?}", "{size}", 1)

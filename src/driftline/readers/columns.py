@@ -170,11 +170,18 @@ def _refuse_nameless(names: Sequence[str], scene: Scene) -> None:
     example = [role for role in ("size", "disorder") if role not in scene.elsewhere]
     example += ["mean", "error"] if example and len(names) >= len(example) + 2 else ["value"]
     example += [SKIPPED] * (len(names) - len(example))
-    raise InputError(
-        f"the {len(names)} {scene.word}{'s' * (len(names) != 1)} have no names; say what they hold, in their order, "
-        f"for example --columns {','.join(example)}",
-        where=scene.where,
-    )
+    if len(names) == 1:
+        missing = " and ".join(role for role in ("size", "disorder") if role not in scene.elsewhere)
+        problem = (
+            f"there is one {scene.word}, so {missing} must stand in the paths of such files; give the folder, with "
+            "--pattern 'L{size}/W{disorder}/r.dat' or whatever the paths are"
+        )
+    else:
+        problem = (
+            f"the {len(names)} {scene.word}s have no names; say what they hold, in their order, for example --columns "
+            f"{','.join(example)}"
+        )
+    raise InputError(problem, where=scene.where)
 
 
 # ---------------------------------------------------------------- wide tables

@@ -68,7 +68,7 @@ def _measured(piece: Piece) -> Piece:
     if not gaps.any():
         return piece
     kept = np.flatnonzero(~gaps)
-    note = f"{piece.source}: {int(gaps.sum())} points hold no number and were taken as not measured"
+    note = f"{piece.source}: points without a number, taken as not measured: {int(gaps.sum())}"
     data = {name: values[kept] for name, values in piece.data.items()}
     return Piece(piece.source, data, lambda row, name: piece.place(int(kept[row]), name), (note,))
 

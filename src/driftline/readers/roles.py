@@ -146,6 +146,8 @@ def _only(role: str, free: Sequence[str], open_roles: Iterable[str]) -> str | No
     if len(able) != 1:
         return None
     others = [other for other in known_as(able[0]) if other in open_roles and other != role]
+    if role in ("size", "disorder"):  # needed, so the one column that can be it is it, whatever else it could be
+        others = [other for other in others if other in ("size", "disorder")]
     return able[0] if not others else None
 
 

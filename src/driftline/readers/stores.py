@@ -148,7 +148,7 @@ class NpzStore(Store):
 class MemoryStore(Store):
     """Arrays that are in memory already."""
 
-    word = "array"
+    word = "column"
 
     def __init__(self, arrays: dict[str, FloatArray], place: str) -> None:
         self._arrays = arrays

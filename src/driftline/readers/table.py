@@ -36,7 +36,7 @@ from driftline.reading import SEPARATORS, InputOptions
 from driftline.wording import listed
 
 RAW = ("size", "disorder", "value", "realisation")
-STREAMED = 30_000_000  # bytes from which a table of raw values is read a piece at a time, some 10^6 rows
+STREAMED = 5_000_000  # bytes from which a table of raw values is read a piece at a time, some 10^5 rows
 MAX_PACKED = 1 << 40  # bytes; only the first lines are read
 
 

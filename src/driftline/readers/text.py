@@ -151,14 +151,16 @@ class _Body:
     lines: list[tuple[int, str]] = field(default_factory=list)
     labels: dict[str, str | float | None] = field(default_factory=dict)
     notes: list[str] = field(default_factory=list)
-    comment: tuple[int, str] | None = None  # the last one above the first line, where numpy.savetxt puts its header
+    comments: list[tuple[int, str]] = field(
+        default_factory=list
+    )  # above the first line, as numpy.savetxt puts a header
 
     def take(self, count: int, line: str) -> None:
         text = line.strip()
         if text.startswith("#"):
             if not self.lines:
                 self._take_label(text, count)
-                self.comment = (count, text.lstrip("# \t"))
+                self.comments.append((count, text.lstrip("# \t")))
         elif text:
             self.lines.append((count, line))
 
@@ -195,9 +197,9 @@ def parsed(numbered: Iterable[tuple[int, str]], place: str, options: InputOption
     if not cells:
         where = place if header_line is None else f"{place}, line {header_line}"
         raise InputError("there is a header but no row below it", where=where)
-    if names is None and body.comment is not None:
-        names = _names_in_comment(body.comment[1], SEPARATORS[separator], len(cells[0]))
-        commented, header_line = names is not None, body.comment[0] if names is not None else None
+    if names is None:
+        header_line, names = _names_in_comments(body.comments, SEPARATORS[separator], len(cells[0]))
+        commented = names is not None
     width = len(cells[0]) if names is None else len(names)
     _check_widths(cells, numbers, width, names, place)
     whole = closed or options.skip_cut_lines
@@ -296,13 +298,16 @@ def _refuse_cut(line: str, where: str) -> None:
     )
 
 
-def _names_in_comment(comment: str, separator: str | None, width: int) -> tuple[str, ...] | None:
-    """Names of the columns in the comment above the first row, if there are as many words in it as columns."""
-    for mark in dict.fromkeys((separator, ",", None)):
-        names = [name.strip() for name in comment.split(mark)]
-        if len(names) == width and not is_number(names[0]):
-            return tuple(names)
-    return None
+def _names_in_comments(
+    comments: Sequence[tuple[int, str]], separator: str | None, width: int
+) -> tuple[int | None, tuple[str, ...] | None]:
+    """Names of the columns in the last comment above the first row with as many words in it as there are columns."""
+    for count, comment in reversed(comments[-PROBED:]):
+        for mark in dict.fromkeys((separator, ",", None)):
+            names = [name.strip() for name in comment.split(mark)]
+            if len(names) == width and not is_number(names[0]):
+                return count, tuple(names)
+    return None, None
 
 
 def _check_widths(
