@@ -15,7 +15,7 @@ from driftline.cli import main
 from driftline.errors import ConfigurationError
 from driftline.rates import Count
 from driftline.readers.write import write_csv
-from driftline.report.blocks import plain
+from driftline.blocks import plain
 from driftline.report.reliability import blocks
 from driftline.settings import Settings
 from driftline.simulate import PowerLawTruth, simulate

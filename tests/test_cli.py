@@ -2,24 +2,27 @@
 
 import json
 import os
+import shlex
 import signal
 import subprocess
 import sys
 import time
 
-import numpy as np
+import click
 import pytest
 from analyses import OPENING, made_analysis, made_curves
+from terminals import COMMAND
 
 import driftline
 from driftline import analysis as analysis_module
-from driftline.cli import main
+from driftline.cli import COMMANDS, main
+from driftline.cli import driftline as group
 from driftline.progress import part
 from driftline.report import writers
 from driftline.report.summary import summary
-from driftline.simulate import PowerLawTruth, simulate
 
 HEADER = "size,disorder,mean,error\n"
+REAL_OPTIONS = ("--seed", "3", "--window", "2.2", "4")
 
 
 @pytest.fixture
@@ -50,12 +53,7 @@ def prepared(monkeypatch):
 
 def run(*arguments, **options):
     """The installed command in a process of its own."""
-    command = [
-        sys.executable,
-        "-c",
-        "import sys; from driftline.cli import main; sys.exit(main())",
-        *map(str, arguments),
-    ]
+    command = [*COMMAND, *map(str, arguments)]
     return subprocess.run(command, capture_output=True, text=True, check=False, timeout=120, **options)
 
 
@@ -190,6 +188,77 @@ def test_wrong_usage(arguments, capsys):
     assert "Usage: driftline" in capsys.readouterr().err
 
 
+@pytest.mark.parametrize(
+    ("arguments", "suggested"),
+    [
+        (["analyze", "x.csv"], "there is no command 'analyze'; did you mean analyse"),
+        (["frobnicate"], "there is no command 'frobnicate'; known are: analyse, "),
+        (["analyse", "x.csv", "--sead", "1"], "--seed"),
+        (["collapse", "x.csv", "--ansats", "kt"], "--ansatz"),
+        (["simulate", "x.csv", "--disordr", "1", "2", "9"], "--disorder"),
+    ],
+)
+def test_mistyped_commands_and_options_get_a_suggestion(arguments, suggested, capsys):
+    """Wrong usage names what was probably meant, or all there is."""
+    assert main(arguments) == 2
+    out, err = capsys.readouterr()
+    assert suggested in err.rpartition("Error: ")[2]
+    assert out == ""
+
+
+@pytest.mark.parametrize("name", COMMANDS)
+def test_help_of_every_command(name, capsys):
+    """A sentence, every option explained, and examples that call this command with options that it has."""
+    assert main([name, "--help"]) == 0
+    text = capsys.readouterr().out
+    command = group.get_command(click.Context(group), name)
+    assert all(option.help for option in command.params if isinstance(option, click.Option))
+    examples = [line.strip() for line in text.partition("Examples:\n")[2].splitlines()]
+    assert examples, "give the command an epilog=examples(...)"
+    for line in examples:
+        words = shlex.split(line.partition(" | ")[0])
+        assert words[:2] == ["driftline", name]
+        command.make_context(name, words[2:]).close()
+
+
+def test_quiet_prints_nothing(data, prepared, capsys):
+    """The folder is written as ever, and neither stream gets a character."""
+    assert main(["analyse", str(data), "--quiet"]) == 0
+    assert capsys.readouterr() == ("", "")
+    assert (data.parent / "made-driftline" / "result.json").is_file()
+    assert main(["analyse", str(data), "--quiet"]) == 1
+    assert capsys.readouterr().err.startswith("driftline: made-driftline: is not empty")
+
+
+@pytest.mark.parametrize("out", [[], ["--out", "folder"]])
+def test_json_on_standard_output(data, prepared, capsys, out):
+    """Standard output gets `result.json` byte for byte; a folder is written only where --out asks for it."""
+    assert main(["analyse", str(data), "--json", *out]) == 0
+    text, err = capsys.readouterr()
+    assert (json.loads(text)["schema"], err) == ("driftline-result/1", "")
+    assert {path.name for path in data.parent.iterdir()} == {"made.csv", *out[1:]}
+    if out:
+        assert (data.parent / "folder" / "result.json").read_text(encoding="utf-8") == text
+
+
+def test_a_reader_that_has_seen_enough():
+    """A closed pipe, as `head` leaves it, is no failure and no traceback."""
+    reader, writer = os.pipe()
+    os.close(reader)
+    result = subprocess.run([*COMMAND, "--help"], stdout=writer, stderr=subprocess.PIPE, check=False, timeout=60)
+    os.close(writer)
+    assert (result.returncode, result.stderr) == (0, b"")
+
+
+def test_a_full_disk():
+    """Output that cannot be written is one sentence and exit code 1; /dev/full is a disk without room."""
+    with open("/dev/full", "w") as full:  # noqa: PTH123 - a device
+        result = subprocess.run([*COMMAND, "--help"], stdout=full, stderr=subprocess.PIPE, check=False, timeout=60)
+    assert result.returncode == 1
+    assert result.stderr.startswith(b"driftline: the output cannot be written (")
+    assert result.stderr.count(b"\n") == 1
+
+
 def test_force_replaces_an_earlier_output(data, prepared):
     """A second run is refused, and with force it replaces the first."""
     assert main(["analyse", str(data)]) == 0
@@ -225,9 +294,8 @@ def interrupt(process):
 
 def test_interruption_from_outside(data):
     """The same for a process that gets the signal while it computes."""
-    code = "import sys; from driftline.cli import main; sys.exit(main())"
     process = subprocess.Popen(
-        [sys.executable, "-c", code, "analyse", str(data)], stderr=subprocess.PIPE, stdout=subprocess.PIPE, text=True
+        [*COMMAND, "analyse", str(data)], stderr=subprocess.PIPE, stdout=subprocess.PIPE, text=True
     )  # fmt: skip
     time.sleep(2.5)  # past the start of the interpreter, far from the end of a full analysis
     out, err = interrupt(process)
@@ -281,14 +349,15 @@ def test_narrow_encodings_do_not_stop_the_summary(data):
 def real(tmp_path_factory):
     """One real run of the whole job on synthetic curves, and the folder it was made in."""
     place = tmp_path_factory.mktemp("real")
-    grid = np.linspace(2.0, 4.0, 9)
-    curves = simulate((8, 12, 18), grid, PowerLawTruth(W_c=3.0, nu=1.2), 0.003, 2)
-    size, disorder, mean, error = curves.flat()
-    rows = zip(size.tolist(), disorder.tolist(), mean.tolist(), error.tolist(), strict=True)
-    (place / "data.csv").write_text(HEADER + "".join(",".join(map(repr, row)) + "\n" for row in rows))
-    options = ("--quick", "--seed", "3", "--window", "2.2", "4", "--ansatz", "power-law:corrected")
-    first = run("analyse", "data.csv", *options, cwd=place)
+    truth = ("--set", "W_c=3", "--set", "nu=1.2", "--sizes", "8,12,18", "--disorder", "2", "4", "9", "--seed", "2")
+    assert main(["simulate", str(place / "data.csv"), "--quiet", *truth]) == 0
+    first = run("analyse", "data.csv", *REAL_OPTIONS, "--quick", "--ansatz", "power-law:corrected", cwd=place)
     return place, first
+
+
+def parts(text):
+    """The parts of `result.json`, but for the timing."""
+    return {name: part for name, part in json.loads(text).items() if name != "timing"}
 
 
 def test_the_whole_job(real):
@@ -304,14 +373,51 @@ def test_the_whole_job(real):
     assert first.stdout.startswith((place / "data-driftline" / "summary.txt").read_text(encoding="utf-8"))
 
 
-def test_the_written_configuration_reproduces_the_result(real):
+def test_the_written_configuration_reproduces_the_result(real, monkeypatch, capsys):
     """`analysis.toml` given back makes the same `result.json`, byte for byte but for the timing at its end."""
     place, _ = real
-    again = run("analyse", "data.csv", "--config", "data-driftline/analysis.toml", "--out", "again", cwd=place)
-    assert again.returncode == 0
-    old, new = ((place / name / "result.json").read_text().split('"timing"')[0] for name in ("data-driftline", "again"))
-    assert old == new
-    assert len(old) > 1000
+    monkeypatch.chdir(place)
+    assert main(["analyse", "data.csv", "--config", "data-driftline/analysis.toml", "--json"]) == 0
+    new = capsys.readouterr().out.split('"timing"')[0]
+    assert (place / "data-driftline" / "result.json").read_text().split('"timing"')[0] == new
+    assert len(new) > 1000
+
+
+def test_parts_give_the_numbers_of_the_whole_job(real, monkeypatch, capsys):
+    """Crossings, drift and collapse by themselves, with the same seed and options, are those of `result.json`."""
+    place, _ = real
+    monkeypatch.chdir(place)
+    whole = parts((place / "data-driftline" / "result.json").read_text())
+    assert main(["crossings", "data.csv", *REAL_OPTIONS, "--json"]) == 0
+    located = parts(capsys.readouterr().out)
+    assert main(["collapse", "data.csv", *REAL_OPTIONS, "--quick", "--json"]) == 0
+    fitted = parts(capsys.readouterr().out)
+    for found, keys in ((located, ["crossings", "drift"]), (fitted, ["collapse"])):
+        assert list(found) == ["schema", "software", "input", "seed", "config", *keys]
+        assert [key for key in ("software", "input", "seed", *keys) if found[key] != whole[key]] == []
+        assert found["config"].items() <= whole["config"].items()
+
+
+def test_folders_of_the_parts(real, monkeypatch, capsys):
+    """Each part writes its numbers, tables, figures and configuration, and prints where."""
+    place, _ = real
+    monkeypatch.chdir(place)
+    common = {"result.json", "summary.txt", "analysis.toml", "tables", "figures"}
+    expected = {
+        "crossings": (common, {"curves", "drift"}, {"crossings", "drift"}),
+        "collapse": (common | {"posterior.h5"}, {"collapse-power-law_corrected"}, {"ansatze", "costs",
+                                                                                   "collapsed-points"}),
+    }  # fmt: skip
+    for name, (files, figures, tables) in expected.items():
+        arguments = [name, "data.csv", *REAL_OPTIONS, "--out", name] + ["--quick"] * (name == "collapse")
+        assert main(arguments) == 0
+        out = capsys.readouterr().out
+        assert out.endswith(f"\nWritten to {name}{os.sep}\n")
+        assert {path.name for path in (place / name).iterdir()} == files
+        assert {path.name for path in (place / name / "figures").iterdir()} == {
+            f"{figure}.{kind}" for figure in figures for kind in ("pdf", "png")
+        }
+        assert {path.stem for path in (place / name / "tables").iterdir()} == tables
 
 
 def test_progress_of_a_part():

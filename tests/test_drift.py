@@ -339,7 +339,7 @@ def test_record_and_summary():
 @pytest.mark.parametrize(
     ("laws", "text"),
     [
-        (("cubic",), f"unknown drift law 'cubic'; choose from {', '.join(LAWS)}"),
+        (("cubic",), f"unknown drift law 'cubic'; known are: {', '.join(LAWS)}"),
         (("linear", "linear"), "drift law 'linear' is named twice; name it once"),
     ],
 )

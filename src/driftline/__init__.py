@@ -42,6 +42,10 @@ if TYPE_CHECKING:
     from driftline.figures.curves import draw_curves as draw_curves
     from driftline.figures.drift import draw_drift as draw_drift
     from driftline.inference.intervals import Interval as Interval
+    from driftline.partial import CollapseStudy as CollapseStudy
+    from driftline.partial import CrossingStudy as CrossingStudy
+    from driftline.partial import study_collapse as study_collapse
+    from driftline.partial import study_crossings as study_crossings
     from driftline.readers import read as read
     from driftline.reading import InputOptions as InputOptions
     from driftline.report.record import record as record
@@ -68,6 +72,7 @@ _HOMES = {
     "figures.curves": ("draw_curves",),
     "figures.drift": ("draw_drift",),
     "inference.intervals": ("Interval",),
+    "partial": ("CollapseStudy", "CrossingStudy", "study_collapse", "study_crossings"),
     "readers": ("read",),
     "reading": ("InputOptions",),
     "report.record": ("record",),

@@ -122,7 +122,7 @@ class Analysis(Shown):
         return {
             "schema": SCHEMA,
             "software": software(),
-            "input": _input(self.curves),
+            "input": described(self.curves),
             "seed": self.settings.seed,
             "config": self.settings.to_dict(),
             "crossings": self.crossings.to_dict(),
@@ -144,7 +144,8 @@ def _no_crossover() -> dict[str, Any]:
     return {"disorder": {**_NOTHING, "systematic": None}, "nu": {**_NOTHING}, "basis": []}
 
 
-def _input(curves: Curves) -> dict[str, Any]:
+def described(curves: Curves) -> dict[str, Any]:
+    """The object ``input`` of `result.json`."""
     return {
         "path": curves.origin.get("path"),
         "sha256": curves.origin.get("sha256"),
@@ -178,18 +179,18 @@ def analyse(curves: Curves, *, settings: Settings | None = None, progress: Progr
     chosen = (settings or Settings()).with_reading(curves)
     tell = progress or (lambda _text, _fraction: None)
     timing: dict[str, float] = {}
-    used = chosen.select(curves.relabel(**chosen.labels) if chosen.labels else curves)
-    for_crossings, for_collapse, for_stability, for_costs = np.random.default_rng(chosen.seed).spawn(4)
-    with _timed(timing, "crossings"):
+    used = chosen.select(curves)
+    for_crossings, for_collapse, for_stability, for_costs = streams(chosen)
+    with timed(timing, "crossings"):
         tell("finding crossings", 0.0)
         crossings = find_crossings(used, draws=chosen.draws, seed=for_crossings)
         drift = fit_drift(crossings)
         separation = separation_test(crossings)
-    with _timed(timing, "collapse"):
-        comparison = _compare(used, chosen, for_collapse, _within(tell, "crossings", "collapse"))
-        costs = _costs(comparison, for_costs)
+    with timed(timing, "collapse"):
+        comparison = compared(used, chosen, for_collapse, _within(tell, "crossings", "collapse"))
+        costs = costs_of(comparison, for_costs)
     basis = headline_basis(comparison)
-    with _timed(timing, "stability"):
+    with timed(timing, "stability"):
         stability = _stability(used, basis, chosen, for_stability, _within(tell, "collapse", "stability"))
     crossover = _crossover(basis, stability)
     case = Case(used, crossings, drift, separation, comparison, basis, stability)
@@ -199,8 +200,14 @@ def analyse(curves: Curves, *, settings: Settings | None = None, progress: Progr
     )  # fmt: skip
 
 
+def streams(settings: Settings) -> list[np.random.Generator]:
+    """Independent random streams of the parts: crossings, collapse, stability, cost functions."""
+    return np.random.default_rng(settings.seed).spawn(4)
+
+
 @contextmanager
-def _timed(timing: dict[str, float], name: str) -> Iterator[None]:
+def timed(timing: dict[str, float], name: str) -> Iterator[None]:
+    """Note under `name` how many seconds the block took."""
     start = time.perf_counter()
     yield
     timing[name] = time.perf_counter() - start
@@ -213,7 +220,8 @@ def _within(tell: Progress, after: str, part: str) -> Progress:
     return lambda text, fraction: tell(text, start + SHARES[part] * fraction)
 
 
-def _compare(curves: Curves, settings: Settings, rng: np.random.Generator, tell: Progress) -> Comparison:
+def compared(curves: Curves, settings: Settings, rng: np.random.Generator, tell: Progress) -> Comparison:
+    """Every ansatz of the settings fitted, on as many processes as they ask for."""
     names = settings.ansatze
     if names == DEFAULT_ANSATZE:  # what the user asked for by name must run or be refused; the default set adapts
         names = applicable(names, curves)
@@ -226,7 +234,7 @@ def _compare(curves: Curves, settings: Settings, rng: np.random.Generator, tell:
     return Comparison(tuple(fits), weigh(fits))
 
 
-def _costs(comparison: Comparison, rng: np.random.Generator) -> dict[str, tuple[Cost, ...]]:
+def costs_of(comparison: Comparison, rng: np.random.Generator) -> dict[str, tuple[Cost, ...]]:
     """Cost functions of the literature by ansatz: for the report, never for the verdict."""
     pairs = zip(comparison.fits, rng.spawn(len(comparison.fits)), strict=True)
     return {fit.ansatz.name: collapse_costs(fit, seed=stream) for fit, stream in pairs}

@@ -123,8 +123,8 @@ class Crossings(Shown):
         """The list `crossings` of `result.json`."""
         return [pair.to_dict() for pair in self.pairs]
 
-    def table(self) -> Table:
-        """One row for each pair of adjacent sizes."""
+    def table(self, *, every: bool = False) -> Table:
+        """One row for each pair of adjacent sizes, or for `every` pair."""
         rows = tuple(
             (
                 f"{each.sizes[0]:g}, {each.sizes[1]:g}",
@@ -134,10 +134,10 @@ class Crossings(Shown):
                 numerals.bracket(each.disorder),
                 numerals.short(each.inverse_nu),
             )
-            for each in self.adjacent
+            for each in (self.pairs if every else self.adjacent)
         )
         columns = ("sizes", "prob.", "separated", symbol(self.labels.disorder_symbol), "95 %", "1/nu")
-        return Table("Crossings of adjacent sizes", columns, rows)
+        return Table(f"Crossings of {'all pairs of' if every else 'adjacent'} sizes", columns, rows)
 
     def shown(self) -> tuple[Table, ...]:
         """The table of the adjacent sizes."""

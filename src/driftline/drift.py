@@ -35,7 +35,7 @@ from driftline.blocks import Table
 from driftline.crossings import Crossing, Crossings
 from driftline.curves import FloatArray
 from driftline.display import Shown
-from driftline.errors import ConfigurationError
+from driftline.errors import ConfigurationError, suggestion
 from driftline.inference.intervals import Interval
 from driftline.plain import attributes
 
@@ -416,15 +416,13 @@ class Drift(Shown):
             (
                 law.name,
                 law.formula,
-                "yes" if law.bounded else "no",
                 numerals.probability(law.probability),
-                numerals.MISSING if law.limit is None else limit_text(law),
-                numerals.MISSING if law.limit is None or law.one_sided else numerals.bracket(law.limit),
+                *_limit_cells(law),
                 numerals.fixed(law.chi2_per_dof, 2),
             )
             for law in sorted(self.laws, key=lambda law: -law.log_evidence)
         )
-        columns = ("law", "formula", "bounded", "prob.", "limit", "95 %", "chi2/dof")
+        columns = ("law", "formula", "prob.", "limit", "95 %", "chi2/dof")
         return Table(f"Drift of the {self.source} with size", columns, rows)
 
     def sentences(self) -> list[str]:
@@ -522,7 +520,7 @@ def _chosen(names: Sequence[str] | None) -> list[DriftLaw]:
     names = DEFAULT_LAWS if names is None else names
     for name in names:
         if name not in LAWS:
-            raise ConfigurationError(f"unknown drift law {name!r}; choose from {', '.join(LAWS)}")
+            raise ConfigurationError(f"unknown drift law {name!r}; {suggestion(name, LAWS)}")
         if list(names).count(name) > 1:
             raise ConfigurationError(f"drift law {name!r} is named twice; name it once")
     return [LAWS[name] for name in names]
@@ -702,6 +700,16 @@ def limit_text(law: LawFit, level: int = 68) -> str:
     if law.one_sided == "below":
         return f"below {numerals.rounded(law.limit.high95, law.limit.high95 - law.limit.median)} (97.5 %)"
     return numerals.short(law.limit) if level == 68 else numerals.bracket(law.limit, level)
+
+
+def _limit_cells(law: LawFit) -> tuple[str, str]:
+    """Limit at infinite size and its interval; where the data constrain one side only, that side and how surely."""
+    if law.limit is None:
+        return "unbounded", numerals.MISSING
+    if law.one_sided:
+        bound, _, surely = limit_text(law).partition(" (")
+        return bound, f"at {surely.rstrip(')')}"
+    return numerals.short(law.limit), numerals.bracket(law.limit)
 
 
 def _law_line(law: LawFit) -> str:

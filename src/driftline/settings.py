@@ -136,7 +136,7 @@ class Settings:
         return {**attributes(self, *names), "forms": forms, "input": self.input.to_dict()}
 
     def select(self, curves: Curves) -> Curves:
-        """The part of `curves` that window and smallest size leave.
+        """The part of `curves` that window and smallest size leave, under the labels that replace those of the file.
 
         Raises
         ------
@@ -151,8 +151,9 @@ class Settings:
                     f"smallest size {self.smallest_size:g} leaves {left} of the sizes {sizes}, and 2 are needed; "
                     f"choose {curves.sizes[-2]:g} or less"
                 )
+        labelled = curves.relabel(**self.labels) if self.labels else curves
         try:
-            return curves.select(smallest_size=self.smallest_size, window=self.window)
+            return labelled.select(smallest_size=self.smallest_size, window=self.window)
         except InputError as reason:
             raise ConfigurationError(str(reason)) from reason
 

@@ -8,6 +8,7 @@ Everything numerical is imported inside the commands, so that ``--help`` is imme
 
 from __future__ import annotations
 
+import errno
 import io
 import os
 import sys
@@ -17,13 +18,13 @@ import click
 
 from driftline.cli.completion import complete
 from driftline.cli.lazy import LazyGroup
-from driftline.cli.screen import safe
 from driftline.errors import DriftlineError
+from driftline.wording import printable
 
 DONE, BAD_INPUT, BAD_USAGE, INTERRUPTED = 0, 1, 2, 130
 
 #: The commands in the order in which the help lists them: each is the function of its name in the module of its name.
-COMMANDS = ("analyse", "inspect", "ansatze", "calibrate", "fields")
+COMMANDS = ("analyse", "inspect", "crossings", "collapse", "simulate", "ansatze", "calibrate", "fields")
 
 
 def main(argv: Sequence[str] | None = None) -> int:
@@ -38,25 +39,38 @@ def main(argv: Sequence[str] | None = None) -> int:
     if (answered := complete(driftline)) is not None:
         return answered
     try:
-        with driftline.make_context("driftline", list(sys.argv[1:] if argv is None else argv)) as context:
+        code = _run(list(sys.argv[1:] if argv is None else argv))
+        sys.stdout.flush()  # so that a closed pipe or a full disk shows here, not when the interpreter ends
+    except BrokenPipeError:
+        _stop_writing()  # whoever read the output has seen enough, as `head` does
+        return DONE
+    except OSError as reason:
+        if reason.errno != errno.ENOSPC:
+            raise
+        _stop_writing()
+        click.echo(f"driftline: the output cannot be written ({reason.strerror}); make room for it", err=True)
+        return BAD_INPUT
+    return code
+
+
+def _run(arguments: list[str]) -> int:
+    """Exit code of the command, with what went wrong on standard error."""
+    try:
+        with driftline.make_context("driftline", arguments) as context:
             driftline.invoke(context)
-        sys.stdout.flush()  # so that a full disk or a closed pipe shows here, not when the interpreter ends
     except click.exceptions.Exit as finished:
         return finished.exit_code
     except click.ClickException as wrong:
         shown = io.StringIO()
         wrong.show(shown)
-        click.echo(safe(shown.getvalue()), err=True, nl=False)
+        click.echo(printable(shown.getvalue(), keep="\n"), err=True, nl=False)
         return wrong.exit_code
     except DriftlineError as wrong:
-        click.echo(f"driftline: {safe(str(wrong))}", err=True)
+        click.echo(f"driftline: {printable(str(wrong))}", err=True)
         return BAD_INPUT
     except (KeyboardInterrupt, click.Abort):
         click.echo("driftline: interrupted, nothing was written", err=True)
         return INTERRUPTED
-    except BrokenPipeError:
-        _stop_writing()  # whoever read the output has seen enough, as `head` does
-        return DONE
     return DONE
 
 

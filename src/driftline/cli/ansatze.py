@@ -7,11 +7,18 @@ from typing import Any
 
 import click
 
-from driftline.cli.options import config_option, data_path
+from driftline.cli.options import config_option, data_path, examples
 from driftline.cli.reading import read_data, reading_options, taken
+from driftline.cli.screen import text_width
+
+EXAMPLES = examples(
+    "driftline ansatze",
+    "driftline ansatze curves.csv",
+    "driftline ansatze curves.csv --config forms.toml",
+)
 
 
-@click.command()
+@click.command(epilog=EXAMPLES)
 @data_path(required=False)
 @config_option("TOML file with forms of your own.")
 @reading_options
@@ -25,4 +32,4 @@ def ansatze(path: Path | None, config: Path | None, **options: Any) -> None:
 
     settings = Settings.resolve(config, {"input": taken(options)})
     curves = None if path is None else settings.select(read_data(path, settings))
-    click.echo(listing(curves, settings.forms), nl=False)
+    click.echo(listing(curves, settings.forms, width=text_width()), nl=False)

@@ -2,7 +2,7 @@
 
 The shell calls ``driftline`` with the variable `VARIABLE` set and gets suggestions, or a script to install them. Bash
 needs help: it breaks words at the colon and the equals sign, which names such as ``kt:linear-drift`` hold, so it gets
-the line as it stands and only the part of a suggestion that follows the last break.
+the line as it stands and only the part of a suggestion that follows the last break. Fish wants the whole token back.
 """
 
 from __future__ import annotations
@@ -12,7 +12,14 @@ import re
 from collections.abc import Callable, Iterable
 
 import click
-from click.shell_completion import BashComplete, CompletionItem, add_completion_class, shell_complete, split_arg_string
+from click.shell_completion import (
+    BashComplete,
+    CompletionItem,
+    FishComplete,
+    add_completion_class,
+    shell_complete,
+    split_arg_string,
+)
 
 VARIABLE = "_DRIFTLINE_COMPLETE"
 
@@ -41,7 +48,8 @@ class Name(click.ParamType):  # type: ignore[type-arg] # generic in newer versio
 
     def shell_complete(self, ctx: click.Context, param: click.Parameter, incomplete: str) -> list[CompletionItem[str]]:
         """The names that begin with what is there, but for those given before."""
-        taken = ctx.params.get(param.name or "") or ()
+        given = ctx.params.get(param.name or "")
+        taken = given if isinstance(given, tuple) else ()  # an option that is given once holds its default here
         return [CompletionItem(name) for name in self.names() if name.startswith(incomplete) and name not in taken]
 
 
@@ -86,3 +94,21 @@ complete -o nosort -F %(complete_func)s %(prog_name)s
         value = self.unfinished.partition("=")[2] if self.unfinished.startswith("--") else self.unfinished
         kept = re.match(r".*[:=]", value) if item.type == "plain" else None
         return f"{item.type},{item.value[kept.end() if kept else 0 :]}"
+
+
+@add_completion_class
+class WholeTokenFish(FishComplete):
+    """Fish completion of ``--option=value``, of which fish wants the whole back."""
+
+    def get_completion_args(self) -> tuple[list[str], str]:
+        """As in click; what stands before the value is kept."""
+        words, unfinished = super().get_completion_args()
+        option, equals, _ = unfinished.partition("=")
+        self.before = option + equals if equals and option.startswith("--") else ""
+        return words, unfinished
+
+    def format_completion(self, item: CompletionItem[str]) -> str:
+        """As in click, after what stood before the value."""
+        if item.type == "plain":
+            item.value = self.before + item.value
+        return super().format_completion(item)

@@ -4,8 +4,10 @@ from __future__ import annotations
 
 import click
 
+from driftline.cli.options import examples
 
-@click.command()
+
+@click.command(epilog=examples("driftline fields", "driftline fields | less"))
 def fields() -> None:
     """Explain result.json field by field.
 

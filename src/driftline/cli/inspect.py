@@ -7,11 +7,17 @@ from typing import Any
 
 import click
 
-from driftline.cli.options import config_option, data_path
+from driftline.cli.options import config_option, data_path, examples
 from driftline.cli.reading import read_data, reading_options, taken
 
+EXAMPLES = examples(
+    "driftline inspect curves.csv",
+    "driftline inspect runs --pattern 'L{size}/W{disorder}/r.dat'",
+    "driftline inspect table.txt --columns size=L,disorder=W,mean=r,error=sem",
+)
 
-@click.command()
+
+@click.command(epilog=EXAMPLES)
 @data_path()
 @config_option()
 @reading_options

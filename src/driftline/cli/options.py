@@ -35,14 +35,14 @@ def out_option(text: str) -> Decorator:
     return click.option("--out", type=click.Path(path_type=Path), metavar="DIR", help=text)
 
 
-def ansatz_option() -> Decorator:
+def ansatz_option(text: str = "Scaling ansatz; may be given repeatedly.") -> Decorator:
     """The option --ansatz, which may be repeated."""
-    return names_option("--ansatz", "ansatze", ansatz_names, "Scaling ansatz; may be given repeatedly.")
+    return names_option("--ansatz", "ansatze", ansatz_names, text)
 
 
-def names_option(option: str, parameter: str, names: Names, text: str) -> Decorator:
-    """An option that takes names out of a registry and may be repeated; the shell completes them."""
-    return click.option(option, parameter, type=Name(names), multiple=True, metavar="NAME", help=text)
+def names_option(option: str, parameter: str, names: Names, text: str, *, many: bool = True, **more: Any) -> Decorator:
+    """An option that takes a name out of a registry, or `many` when repeated; the shell completes it."""
+    return click.option(option, parameter, type=Name(names), multiple=many, metavar="NAME", help=text, **more)
 
 
 def selection_options(function: Function) -> Function:

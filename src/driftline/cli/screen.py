@@ -48,18 +48,7 @@ def say(text: str) -> None:
 def written(folder: Path | None) -> None:
     """Say where the files are, if any were written."""
     if folder is not None:
-        click.echo(f"\nWritten to {safe(str(folder))}{os.sep}")
-
-
-def safe(text: str) -> str:
-    """`text` with control characters escaped, so that a file's name or content cannot command the terminal.
-
-    Examples
-    --------
-    >>> safe("a\\x1b[31mb")
-    'a\\\\x1b[31mb'
-    """
-    return printable(text, keep="\n")
+        click.echo(f"\nWritten to {printable(str(folder))}{os.sep}")
 
 
 def text_width() -> int:
@@ -84,7 +73,7 @@ def _set(console: Console, block: Block) -> None:
 
     if isinstance(block, Paragraph):
         for line in block.lines(min(console.width, WIDEST)):
-            console.print(Text(safe(line), ROLES[block.role]), soft_wrap=True)
+            console.print(Text(printable(line), ROLES[block.role]), soft_wrap=True)
         return
     _set(console, Paragraph(block.heading, "heading"))
     if too_narrow(block, console.width):
@@ -105,8 +94,8 @@ def _table(table: Table, width: int) -> RichTable:
     # the rule under the head is drawn through a divider of one blank, so the padding is what is left of the gap
     drawn = RichTable(box=box.SIMPLE_HEAD, show_edge=False, pad_edge=False, padding=(0, gap - 1, 0, 0), expand=False)
     for name in table.columns:
-        drawn.add_column(Text(safe(name)), no_wrap=True, header_style="bold")
+        drawn.add_column(Text(printable(name)), no_wrap=True, header_style="bold")
     room = room_for_first(table, width, gap)
     for first, *others in table.rows:
-        drawn.add_row(*(Text(safe(cell)) for cell in ("\n".join(folded(first, room)), *others)))
+        drawn.add_row(*(Text(printable(cell)) for cell in ("\n".join(folded(first, room)), *others)))
     return drawn

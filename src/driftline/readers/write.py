@@ -7,10 +7,11 @@ covariances.
 from __future__ import annotations
 
 import os
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
 from contextlib import contextmanager
 from dataclasses import asdict
 from pathlib import Path
+from types import MappingProxyType
 from typing import TYPE_CHECKING
 
 from driftline.curves import Curve, Curves, Labels
@@ -20,9 +21,18 @@ from driftline.readers.hdf5 import FORMAT, VECTORS
 if TYPE_CHECKING:
     import h5py  # imported inside the functions that need it
 
+Facts = Mapping[str, str | float]
 
-def write_csv(curves: Curves, path: str | os.PathLike[str]) -> None:
+
+def write_csv(curves: Curves, path: str | os.PathLike[str], *, facts: Facts = MappingProxyType({})) -> None:
     """Write a summary CSV, with the labels as comments above the header.
+
+    Parameters
+    ----------
+    curves : Curves
+    path : path
+    facts : mapping, optional
+        Further comments, ``name = value``, which readers pass over.
 
     Raises
     ------
@@ -35,6 +45,7 @@ def write_csv(curves: Curves, path: str | os.PathLike[str]) -> None:
         raise InputError("a summary CSV has no place for the covariance of the points; write HDF5 instead")
     counted = any(curve.samples is not None for curve in curves.curves)
     lines = [f"# {name}: {value}".rstrip() for name, value in _label_texts(curves.labels)]
+    lines += [f"# {name} = {value}" for name, value in facts.items()]
     lines.append("size,disorder,mean,error" + ",samples" * counted)
     for curve in curves.curves:
         lines.extend(_rows(curve, counted))
@@ -42,8 +53,15 @@ def write_csv(curves: Curves, path: str | os.PathLike[str]) -> None:
         part.write_text("\n".join(lines) + "\n", encoding="utf-8", newline="\n")
 
 
-def write_hdf5(curves: Curves, path: str | os.PathLike[str]) -> None:
+def write_hdf5(curves: Curves, path: str | os.PathLike[str], *, facts: Facts = MappingProxyType({})) -> None:
     """Write the program's own HDF5 (see `driftline.readers.hdf5`); the same curves give the same bytes.
+
+    Parameters
+    ----------
+    curves : Curves
+    path : path
+    facts : mapping, optional
+        Attributes of the group ``/curves``, which readers pass over.
 
     Raises
     ------
@@ -55,6 +73,9 @@ def write_hdf5(curves: Curves, path: str | os.PathLike[str]) -> None:
     with replacing(path) as part, h5py.File(part, "w") as file:
         for name, value in {"format": FORMAT, **asdict(curves.labels)}.items():
             _set_attribute(file, name, "none" if value is None else value)
+        group = file.create_group("curves")
+        for name, value in facts.items():
+            _set_attribute(group, name, value)
         for curve in curves.curves:
             group = file.create_group(f"curves/{_text(curve.size)}")
             for name in (*VECTORS, "covariance"):
@@ -63,15 +84,15 @@ def write_hdf5(curves: Curves, path: str | os.PathLike[str]) -> None:
                     group.create_dataset(name, data=values, track_times=False)
 
 
-def _set_attribute(file: h5py.File, name: str, value: str | float) -> None:
+def _set_attribute(place: h5py.Group, name: str, value: str | float) -> None:
     """Text goes in with a fixed length: the HDF5 library can hang for ever in the damaged heap of variable lengths."""
     import h5py
 
     if isinstance(value, str):
         raw = value.encode("utf-8")
-        file.attrs.create(name, raw, dtype=h5py.string_dtype("utf-8", max(1, len(raw))))
+        place.attrs.create(name, raw, dtype=h5py.string_dtype("utf-8", max(1, len(raw))))
     else:
-        file.attrs[name] = value
+        place.attrs[name] = value
 
 
 @contextmanager

@@ -12,6 +12,7 @@ from driftline.settings import Settings
 
 if TYPE_CHECKING:
     from driftline.analysis import Analysis
+    from driftline.partial import CollapseStudy, CrossingStudy
     from driftline.scaling.expression import ExpressionForm
 
 
@@ -51,7 +52,7 @@ class ConfigurationFile(Writer):
 
     title = "analysis.toml"
 
-    def write(self, analysis: Analysis, folder: Path) -> None:
+    def write(self, analysis: Analysis | CrossingStudy | CollapseStudy, folder: Path) -> None:
         """Write `folder/analysis.toml`."""
         path = analysis.curves.origin.get("path")
         head = "# Resolved configuration; to repeat: driftline analyse DATA --config analysis.toml\n"

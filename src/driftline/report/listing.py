@@ -16,7 +16,7 @@ from driftline.scaling.forms import Form
 EXAMPLE = "Priors that depend on the data are shown for sizes 8 to 16 and disorders from 1 to 11; give PATH for yours."
 
 
-def listing(curves: Curves | None = None, forms: Sequence[Form] = ()) -> str:
+def listing(curves: Curves | None = None, forms: Sequence[Form] = (), *, width: int = WIDTH) -> str:
     """Every ansatz with formula, parameters and priors, as text.
 
     Parameters
@@ -25,27 +25,29 @@ def listing(curves: Curves | None = None, forms: Sequence[Form] = ()) -> str:
         Data that the priors refer to; without them a made-up grid is used, and said so.
     forms : sequence of Form
         Forms of the user's own, listed last.
+    width : int
+        Columns to wrap at.
     """
-    lines = [] if curves is not None else [*textwrap.wrap(EXAMPLE, WIDTH), ""]
+    lines = [] if curves is not None else [*textwrap.wrap(EXAMPLE, width), ""]
     for name in available(forms):
-        lines += [*_entry(name, curves, forms), ""]
+        lines += [*_entry(name, curves, forms, width), ""]
     return "\n".join(lines)
 
 
-def _entry(name: str, curves: Curves | None, forms: Sequence[Form]) -> list[str]:
+def _entry(name: str, curves: Curves | None, forms: Sequence[Form], width: int) -> list[str]:
     try:
         # a form of the user's own need not be defined on a made-up grid, so only on real data it is tried
         ansatz = compose(name, _example(), forms) if curves is None else parse_ansatz(name, curves, forms)
     except ConfigurationError as reason:
         text = f"not for these data: {reason}"
-        return [name, *textwrap.wrap(text, WIDTH, initial_indent="  ", subsequent_indent="    ")]
+        return [name, *textwrap.wrap(text, width, initial_indent="  ", subsequent_indent="    ")]
     lines = [f"{name}  ({ansatz.hypothesis})"]
-    lines += textwrap.wrap(ansatz.formula, WIDTH, initial_indent="  ", subsequent_indent="    ")
+    lines += textwrap.wrap(ansatz.formula, width, initial_indent="  ", subsequent_indent="    ")
     for each in ansatz.parameters:
         text = f"{each.name:6} {each.prior.describe()} ({each.meaning})"
-        lines += textwrap.wrap(text, WIDTH, initial_indent="  ", subsequent_indent=" " * 9, break_on_hyphens=False)
+        lines += textwrap.wrap(text, width, initial_indent="  ", subsequent_indent=" " * 9, break_on_hyphens=False)
     source = f"source: {ansatz.form.source}"
-    return lines + textwrap.wrap(source, WIDTH, initial_indent="  ", subsequent_indent="    ")
+    return lines + textwrap.wrap(source, width, initial_indent="  ", subsequent_indent="    ")
 
 
 def _example() -> Curves:

@@ -9,6 +9,7 @@ from driftline.report.base import Writer
 
 if TYPE_CHECKING:
     from driftline.analysis import Analysis
+    from driftline.partial import CollapseStudy
 
 
 class PosteriorFile(Writer):
@@ -16,7 +17,7 @@ class PosteriorFile(Writer):
 
     title = "posterior.h5"
 
-    def write(self, analysis: Analysis, folder: Path) -> None:
+    def write(self, analysis: Analysis | CollapseStudy, folder: Path) -> None:
         """Write `folder/posterior.h5`."""
         import h5py
 

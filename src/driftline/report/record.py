@@ -21,6 +21,7 @@ if TYPE_CHECKING:
     from driftline.analysis import Analysis
     from driftline.collapse import CollapseFit
     from driftline.costs import Cost
+    from driftline.partial import CollapseStudy, CrossingStudy
 
 
 def record(analysis: Analysis) -> dict[str, Any]:
@@ -38,21 +39,34 @@ def record(analysis: Analysis) -> dict[str, Any]:
     return analysis.to_dict()
 
 
-def to_json(analysis: Analysis) -> str:
-    """`record` as the text of `result.json`."""
-    return json.dumps(record(analysis), indent=2, ensure_ascii=False, allow_nan=False) + "\n"
+def to_json(result: Analysis | CrossingStudy | CollapseStudy) -> str:
+    """`record`, or what a part of the job found, as the text of `result.json`."""
+    return json.dumps(result.to_dict(), indent=2, ensure_ascii=False, allow_nan=False) + "\n"
 
 
 def tables(analysis: Analysis) -> dict[str, list[dict[str, Any]]]:
     """The tables by file stem, each a list of rows with equal keys; missing cells are None."""
-    result = record(analysis)
     return {
-        "crossings": [_flat(row) for row in result["crossings"]],
-        "drift": [_flat(row) for row in result["drift"]["laws"]],
-        "ansatze": [_flat({name: cell for name, cell in row.items() if name != "costs"}) for row in result["collapse"]],
-        "stability": [_flat(row) for row in result["stability"]],
-        "costs": [row for name, costs in analysis.costs.items() for row in _costs(name, costs)],
-        "collapsed-points": [row for fit in analysis.comparison.fits for row in _points(fit)],
+        **crossing_tables(analysis),
+        **collapse_tables(analysis),
+        "stability": [_flat(row) for row in plain(analysis.stability)],
+    }
+
+
+def crossing_tables(found: Analysis | CrossingStudy) -> dict[str, list[dict[str, Any]]]:
+    """The tables of crossings and drift laws."""
+    return {
+        "crossings": [_flat(row) for row in found.crossings.to_dict()],
+        "drift": [_flat(row) for row in found.drift.to_dict()["laws"]],
+    }
+
+
+def collapse_tables(found: Analysis | CollapseStudy) -> dict[str, list[dict[str, Any]]]:
+    """The tables of ansätze, cost functions and collapsed points."""
+    return {
+        "ansatze": [_flat({k: v for k, v in row.items() if k != "costs"}) for row in found.comparison.to_dict()],
+        "costs": [row for name, costs in found.costs.items() for row in _costs(name, costs)],
+        "collapsed-points": [row for fit in found.comparison.fits for row in _points(fit)],
     }
 
 
@@ -61,7 +75,7 @@ class ResultFile(Writer):
 
     title = "result.json"
 
-    def write(self, analysis: Analysis, folder: Path) -> None:
+    def write(self, analysis: Analysis | CrossingStudy | CollapseStudy, folder: Path) -> None:
         """Write `folder/result.json`."""
         (folder / "result.json").write_text(to_json(analysis), encoding="utf-8", newline="\n")
 
@@ -72,12 +86,17 @@ class Tables(Writer):
     title = "tables"
 
     def write(self, analysis: Analysis, folder: Path) -> None:
-        """Write `folder/tables/*.csv`; a table without rows is written with its first columns only."""
-        place = folder / "tables"
-        place.mkdir()
-        for name, rows in tables(analysis).items():
-            with (place / f"{name}.csv").open("w", encoding="utf-8", newline="") as stream:
-                _write_csv(rows, _FIRST_COLUMNS[name], stream)
+        """Write `folder/tables/*.csv`."""
+        write_tables(tables(analysis), folder)
+
+
+def write_tables(tables: Mapping[str, list[dict[str, Any]]], folder: Path) -> None:
+    """Write `folder/tables/*.csv`; a table without rows is written with its first columns only."""
+    place = folder / "tables"
+    place.mkdir()
+    for name, rows in tables.items():
+        with (place / f"{name}.csv").open("w", encoding="utf-8", newline="") as stream:
+            _write_csv(rows, _FIRST_COLUMNS[name], stream)
 
 
 _FIRST_COLUMNS = {

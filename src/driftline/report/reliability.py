@@ -8,7 +8,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING
 
 from driftline.errors import InputError
-from driftline.report.blocks import BLANK, HEADING, Block, Paragraph, Table
+from driftline.blocks import BLANK, HEADING, Block, Paragraph, Table
 
 if TYPE_CHECKING:
     from driftline.calibration import Assumed, Calibration
