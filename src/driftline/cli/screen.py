@@ -75,12 +75,13 @@ def _set(console: Console, block: Block) -> None:
         for line in block.lines(min(console.width, WIDEST)):
             console.print(Text(printable(line), ROLES[block.role]), soft_wrap=True)
         return
-    _set(console, Paragraph(block.heading, "heading"))
-    if too_narrow(block, console.width):
-        for row in records(block, console.width):
+    table = block.aligned()
+    _set(console, Paragraph(table.heading, "heading"))
+    if too_narrow(table, console.width):
+        for row in records(table, console.width):
             _set(console, row)
     else:
-        console.print(Padding(_table(block.aligned(), console.width), (0, 0, 0, 2), expand=False))
+        console.print(Padding(_table(table, console.width), (0, 0, 0, 2), expand=False))
 
 
 def _table(table: Table, width: int) -> RichTable:
@@ -97,5 +98,5 @@ def _table(table: Table, width: int) -> RichTable:
         drawn.add_column(Text(printable(name)), no_wrap=True, header_style="bold")
     room = room_for_first(table, width, gap)
     for first, *others in table.rows:
-        drawn.add_row(*(Text(printable(cell)) for cell in ("\n".join(folded(first, room)), *others)))
+        drawn.add_row(*(Text(printable(cell, keep="\n")) for cell in ("\n".join(folded(first, room)), *others)))
     return drawn

@@ -7,8 +7,8 @@ from collections.abc import Iterator
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from driftline.errors import InputError
 from driftline.blocks import BLANK, HEADING, Block, Paragraph, Table
+from driftline.errors import InputError
 
 if TYPE_CHECKING:
     from driftline.calibration import Assumed, Calibration
