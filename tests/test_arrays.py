@@ -225,13 +225,15 @@ def test_eigenstates_of_the_random_field_chain():
 
 # ---------------------------------------------------------------- npz
 
+PER_SIZE = (("r", MEAN), ("sem", ERROR))
+
 
 @pytest.mark.parametrize(
     ("content", "options"),
     [
         ({**AXES, "r": MEAN, "sem": ERROR}, {}),
         ({"size": LONG[0], "disorder": LONG[1], "mean": MEAN.ravel(), "error": ERROR.ravel()}, {}),
-        ({"W": DISORDERS, **{f"{n}_L{SIZES[i]}": a[i] for i in range(3) for n, a in (("r", MEAN), ("sem", ERROR))}}, {}),
+        ({"W": DISORDERS, **{f"{n}_L{SIZES[i]}": a[i] for i in range(3) for n, a in PER_SIZE}}, {}),
         ({"W": DISORDERS, **{f"r{s}": VALUES[i].mean(axis=2).T for i, s in enumerate(SIZES)}},
          {"columns": {"disorder": "W", "value": "r{size}"}}),
         ({**AXES, "r": VALUES.mean(axis=3)}, {"columns": {"value": "r"}}),
