@@ -203,8 +203,9 @@ def test_the_folder_is_complete(folder):
     figures = {f"figures/{name}.{kind}" for name in ("curves", "drift", "collapse") for kind in ("pdf", "png", "svg")}
     stems = ("crossings", "drift", "ansatze", "stability", "costs", "collapsed-points")
     sheets = {f"tables/{name}.csv" for name in stems}
-    assert names == figures | sheets | {
-        "result.json", "summary.txt", "report.html", "analysis.toml", "posterior.h5",
+    tex = {f"tables/{name}.tex" for name in ("crossover", "ansatze", "crossings", "drift")}
+    assert names == figures | sheets | tex | {
+        "result.json", "summary.txt", "report.html", "analysis.toml", "posterior.h5", "methods.txt", "methods.bib",
     }  # fmt: skip
     assert all((folder / name).stat().st_size > 0 for name in names)
     assert [path.name for path in folder.parent.iterdir()] == ["out"]
@@ -221,7 +222,7 @@ def test_two_runs_write_equal_files(folder, tmp_path):
 
 def test_csv_files_are_rectangular_and_read_back(folder):
     """Every row has as many cells as the header, and numbers are in full precision."""
-    for path in (folder / "tables").iterdir():
+    for path in (folder / "tables").glob("*.csv"):
         header, *body = list(csv.reader(io.StringIO(path.read_text(encoding="utf-8"))))
         assert body, path.name
         assert all(len(row) == len(header) for row in body)

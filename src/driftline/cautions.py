@@ -34,7 +34,9 @@ UNDERSTATED_FROM = 1.1
 ASSUMED_INDEPENDENT_BELOW = 0.85
 PLATEAU_SIGMAS = 5.0
 PLATEAU_SHARE = 0.05  # of the distance between the two reference values
-CLOSE_EVIDENCE = 3.0  # difference of log evidences below which it is not strong (Kass, Raftery 1995)
+CLOSE_EVIDENCE = (
+    3.0  # difference of log evidences below which it is not strong (Kass, Raftery, J. Am. Stat. Assoc. 90, 773 (1995))
+)
 TWO_BLOCKS = 0.4234  # gap ratio of two unresolved orthogonal blocks (Giraud et al., PRX 12, 011006 (2022), from memory)
 OUTSIDE_SHARE = 0.05
 ENOUGH_SIZES = 4  # three sizes give two neighbouring crossings: a line through them leaves nothing to check it with
@@ -324,7 +326,10 @@ def exponent_bound(case: Case) -> Caution | None:
 
 
 def exponent_limit(curves: Curves) -> tuple[float, str] | None:
-    """Lower bound on nu with its source; None where none is known."""
+    """Lower bound on nu with its source; None where none is known.
+
+    Chayes, Chayes, Fisher, Spencer, PRL 57, 2999 (1986); Luck, Europhys. Lett. 24, 359 (1993).
+    """
     d = curves.labels.dimension
     if d is None or curves.labels.disorder_kind == "none":
         return None

@@ -249,7 +249,7 @@ class Curves(Shown):
 
     @property
     def correlated(self) -> bool:
-        """Whether any size brings a covariance of its points."""
+        """Whether any size brings a covariance of its points; fits need it (Weigel, Janke, PRE 81, 066701 (2010))."""
         return any(curve.covariance is not None for curve in self.curves)
 
     def table(self) -> Table:

@@ -76,8 +76,8 @@ class DriftLaw(ABC):
 
     Attributes
     ----------
-    name, formula : str
-        Name on the command line and formula in one line.
+    name, formula, tex : str
+        Name on the command line, and formula in one line, as plain text and in LaTeX.
     bounded : bool
         Whether W* stays finite as L grows.
     symbols : tuple of str
@@ -90,6 +90,7 @@ class DriftLaw(ABC):
 
     name: ClassVar[str]
     formula: ClassVar[str]
+    tex: ClassVar[str]
     bounded: ClassVar[bool]
     symbols: ClassVar[tuple[str, ...]] = ("a", "b")
     has_shift: ClassVar[bool] = True
@@ -134,6 +135,7 @@ class Constant(DriftLaw):
     """No drift at all."""
 
     name, formula, bounded = "constant", "a", True
+    tex = "a"
     symbols = ("a",)
     has_shift = False
 
@@ -151,6 +153,7 @@ class Inverse(DriftLaw):
     """Convergence as 1/L."""
 
     name, formula, bounded = "inverse", "a + b/L", True
+    tex = "a + b/L"
 
     def basis(self, sizes: FloatArray, shape: FloatArray) -> FloatArray:
         return 1 / sizes
@@ -160,6 +163,7 @@ class InversePower(DriftLaw):
     """Convergence with a free power, p between 0.2 and 5."""
 
     name, formula, bounded = "inverse-power", "a + b L^-p", True
+    tex = "a + b L^{-p}"
     symbols = ("a", "b", "p")
 
     def shapes(self, span: Span) -> tuple[float, float] | None:
@@ -173,6 +177,7 @@ class KosterlitzThouless(DriftLaw):
     """Logarithmically slow convergence from below; L0 lies between 1/1000 and 8/10 of the smallest size."""
 
     name, formula, bounded = "kt", "a - (b/ln(L/L0))^2", True
+    tex = r"a - [b/\ln(L/L_0)]^2"
     symbols = ("a", "b", "L0")
     rising_only = True
 
@@ -195,6 +200,7 @@ class Logarithmic(DriftLaw):
     """Unbounded, slow."""
 
     name, formula, bounded = "logarithmic", "a + b ln L", False
+    tex = r"a + b\ln L"
 
     def basis(self, sizes: FloatArray, shape: FloatArray) -> FloatArray:
         return np.log(sizes)
@@ -204,6 +210,7 @@ class Linear(DriftLaw):
     """Unbounded, in proportion to size."""
 
     name, formula, bounded = "linear", "a + b L", False
+    tex = "a + b L"
 
     def basis(self, sizes: FloatArray, shape: FloatArray) -> FloatArray:
         return sizes
@@ -213,6 +220,7 @@ class Power(DriftLaw):
     """Unbounded, a pure power with p between 0.01 and 5, which the priors of m and D decide."""
 
     name, formula, bounded = "power", "b L^p", False
+    tex = "b L^p"
     symbols = ("b", "p")
     rising_only = True
 

@@ -216,20 +216,27 @@ def fit_trends(disorder: FloatArray, log_size: FloatArray, means: FloatArray, no
     return Trends(disorder, slope, np.einsum("mi,mij,mj->ij", lever, noise, lever))
 
 
-def _table(
-    curves: Curves, smooth: tuple[SmoothCurve, ...] | None, rng: np.random.Generator
-) -> tuple[FloatArray, FloatArray, FloatArray]:  # fmt: skip
-    """Disorders (k,), means (m, k) and covariances (m, k, k): measured where all sizes share enough disorders."""
+def shared_disorders(curves: Curves) -> FloatArray | None:
+    """Disorders that all sizes share, shape (k,), where the means can be compared there; None if they are too few."""
     low, high = curves.common_range
     shared = curves.curves[0].disorder
     for curve in curves.curves[1:]:
         shared = np.intersect1d(shared, curve.disorder)
     most = max(np.count_nonzero((c.disorder >= low) & (c.disorder <= high)) for c in curves.curves)
-    if shared.size >= MIN_DISORDERS and shared.size >= most / 2:
+    return shared if shared.size >= MIN_DISORDERS and shared.size >= most / 2 else None
+
+
+def _table(
+    curves: Curves, smooth: tuple[SmoothCurve, ...] | None, rng: np.random.Generator
+) -> tuple[FloatArray, FloatArray, FloatArray]:  # fmt: skip
+    """Disorders (k,), means (m, k) and covariances (m, k, k): measured where all sizes share enough disorders."""
+    shared = shared_disorders(curves)
+    if shared is not None:
         at = [np.searchsorted(curve.disorder, shared) for curve in curves.curves]
         means = np.array([curve.mean[i] for curve, i in zip(curves.curves, at, strict=True)])
         noise = np.array([curve.noise[np.ix_(i, i)] for curve, i in zip(curves.curves, at, strict=True)])
         return shared, means, noise
+    low, high = curves.common_range
     smooth = smooth or smooth_curves(curves, rng=rng)
     inside = [(curve.grid >= low) & (curve.grid <= high) for curve in smooth]
     places = np.unique(np.linspace(0, np.count_nonzero(inside[0]) - 1, SMOOTH_POINTS).round().astype(int))

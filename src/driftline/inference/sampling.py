@@ -1,4 +1,7 @@
-"""A chain of the posterior: emcee's ensemble (Goodman, Weare 2010) with differential-evolution moves."""
+"""A chain of the posterior: emcee's ensemble of walkers with differential-evolution moves.
+
+Goodman, Weare, Commun. Appl. Math. Comput. Sci. 5, 65 (2010).
+"""
 
 from __future__ import annotations
 

@@ -11,10 +11,12 @@ from driftline.report.base import Writer
 from driftline.report.configuration import ConfigurationFile
 from driftline.report.drawings import Drawings
 from driftline.report.folder import output_folder
+from driftline.report.methods import MethodsFiles
 from driftline.report.page import Page
 from driftline.report.posterior import PosteriorFile
 from driftline.report.record import ResultFile, Tables
 from driftline.report.summary import SummaryFile
+from driftline.report.tex_tables import TexTables
 
 if TYPE_CHECKING:
     from driftline.analysis import Analysis
@@ -23,6 +25,8 @@ if TYPE_CHECKING:
 WRITERS: tuple[Writer, ...] = (
     ResultFile(),
     Tables(),
+    TexTables(),
+    MethodsFiles(),
     SummaryFile(),
     ConfigurationFile(),
     PosteriorFile(),

@@ -5,6 +5,8 @@
 The parts are the scaled variable x (a correlation length with a trajectory of the critical disorder, or a form without
 one), the leading irrelevant term (`corrected`) and an amplitude L^kappa (`amplitude`, or `amplitude=VALUE` to hold the
 exponent).  Names join with a colon: ``power-law``, ``power-law:corrected``, ``kt:linear-drift``.
+
+On the irrelevant term: Slevin, Ohtsuki, PRL 82, 382 (1999).
 """
 
 from __future__ import annotations

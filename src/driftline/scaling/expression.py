@@ -81,6 +81,7 @@ class ExpressionForm(Form):
 
     source = "the user's own"
     label = "x"
+    tex = ""  # the text of the formula stands for itself
 
     def __post_init__(self) -> None:
         _check_name(self.name)

@@ -31,6 +31,9 @@ class Form(ABC):
     hypothesis: Hypothesis
     #: mathtext of x as a format string; {W} becomes the disorder symbol
     label: str
+    #: the formula in LaTeX, as a format string like `label`, and keys of its sources in `report/references.bib`
+    tex: str
+    citations: tuple[str, ...] = ()
 
     @abstractmethod
     def parameters(self, curves: Curves) -> tuple[Parameter, ...]:
@@ -100,6 +103,15 @@ class Critical(Form):
         return self.length.label
 
     @property
+    def tex(self) -> str:  # type: ignore[override]
+        moving = self.trajectory.name != FIXED
+        return f"{self.length.tex},\\ {self.trajectory.tex}" if moving else self.length.tex
+
+    @property
+    def citations(self) -> tuple[str, ...]:  # type: ignore[override]
+        return self.length.citations
+
+    @property
     def hypothesis(self) -> Hypothesis:  # type: ignore[override]
         return self.trajectory.hypothesis
 
@@ -140,6 +152,8 @@ class SizeRatio(Form):
     source = "Suntajs, Bonca, Prosen, Vidmar, PRB 102, 064207 (2020), for kappa = 1"
     hypothesis = "drift"
     label = r"{W}/L^{{\kappa}}"
+    tex = r"x = {W}/L^{{\kappa}}"
+    citations = ("suntajs2020",)
 
     def parameters(self, curves: Curves) -> tuple[Parameter, ...]:
         _require_positive(self.name, curves)
@@ -179,6 +193,8 @@ class FiniteLength(_FiniteLength):
     name = "finite-length"
     formula = "x = L/xi(W), ln xi = c (W_mid/W)^alpha, finite for every W"
     source = "Abrahams et al., PRL 42, 673 (1979); L/xi scaling: MacKinnon, Kramer, Z. Phys. B 53, 1 (1983)"
+    tex = r"x = L/\xi({W}),\ \ln\xi = c\,({W}_\mathrm{{mid}}/{W})^{{\alpha}}"
+    citations = ("abrahams1979", "mackinnon1983")
 
     def parameters(self, curves: Curves) -> tuple[Parameter, ...]:
         _require_positive(self.name, curves)
@@ -199,6 +215,8 @@ class FiniteLengthQuadratic(_FiniteLength):
     name = "finite-length-quadratic"
     formula = "x = L/xi(W), ln xi = -p_1 ln W - p_2 (ln W)^2, falling over the whole range"
     source = "Abrahams et al., PRL 42, 673 (1979); low-order polynomial"
+    tex = r"x = L/\xi({W}),\ \ln\xi = -p_1\ln {W} - p_2(\ln {W})^2"
+    citations = ("abrahams1979",)
 
     def parameters(self, curves: Curves) -> tuple[Parameter, ...]:
         _require_positive(self.name, curves)
@@ -223,6 +241,7 @@ class SizeIndependent(Form):
     source = "null hypothesis"
     hypothesis = "none"
     label = "{W}"
+    tex = "x = {W}"
 
     def parameters(self, curves: Curves) -> tuple[Parameter, ...]:
         return ()

@@ -30,6 +30,9 @@ class CorrelationLength(ABC):
     source: str
     #: mathtext of x as a format string; {W} becomes the disorder symbol
     label: str
+    #: the formula in LaTeX, as a format string like `label`, and keys of its sources in `report/references.bib`
+    tex: str
+    citations: tuple[str, ...]
 
     @abstractmethod
     def parameters(self, curves: Curves) -> tuple[Parameter, ...]:
@@ -66,6 +69,8 @@ class PowerLaw(CorrelationLength):
     formula = "xi = |W - W_c|^-nu"
     source = "Fisher, Barber, PRL 28, 1516 (1972)"
     label = r"({W} - {W}_c)\,L^{{1/\nu}}"
+    tex = r"\xi = |{W} - {W}_c|^{{-\nu}}"
+    citations = ("fisher1972",)
 
     def parameters(self, curves: Curves) -> tuple[Parameter, ...]:
         return (_exponent("nu", r"\nu", "correlation-length exponent"),)
@@ -85,6 +90,8 @@ class AsymmetricPowerLaw(CorrelationLength):
     formula = "xi = |W - W_c|^-nu_below for W < W_c, |W - W_c|^-nu_above for W > W_c"
     source = "Fisher, Barber, PRL 28, 1516 (1972), with one exponent a side"
     label = r"({W} - {W}_c)\,(L/L_0)^{{1/\nu_\pm}}"
+    tex = r"\xi = |{W} - {W}_c|^{{-\nu_\pm}}"
+    citations = ("fisher1972",)
 
     def parameters(self, curves: Curves) -> tuple[Parameter, ...]:
         return (
@@ -108,6 +115,8 @@ class KosterlitzThouless(CorrelationLength):
     formula = "xi = exp(b/sqrt|W - W_c|), b on each side"
     source = "Goremykina, Vasseur, Serbyn, PRL 122, 040601 (2019); Dumitrescu et al., PRB 99, 094205 (2019)"
     label = r"\mathrm{{sgn}}({W} - {W}_c)\,\mathrm{{asinh}}(c\,L/\xi)"
+    tex = r"\xi = \exp(b_\pm/\sqrt{{|{W} - {W}_c|}})"
+    citations = ("goremykina2019", "dumitrescu2019")
 
     def parameters(self, curves: Curves) -> tuple[Parameter, ...]:
         low, high = curves.disorder_range

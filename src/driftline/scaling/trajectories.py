@@ -32,6 +32,8 @@ class Trajectory(ABC):
     name: str
     formula: str
     hypothesis: Hypothesis
+    #: the formula in LaTeX, as a format string; {W} becomes the disorder symbol
+    tex: str
 
     @abstractmethod
     def parameters(self, curves: Curves) -> tuple[Parameter, ...]:
@@ -64,6 +66,7 @@ class Fixed(Trajectory):
     name = "fixed"
     formula = "W_c(L) = W_c"
     hypothesis = "transition"
+    tex = "{W}_c(L) = {W}_c"
 
     def parameters(self, curves: Curves) -> tuple[Parameter, ...]:
         return (Parameter("W_c", "W_c", _location(curves), "critical disorder"),)
@@ -79,6 +82,7 @@ class Drifting(Trajectory):
     name: str
     formula: str
     hypothesis: Hypothesis
+    tex: str
     shape: Callable[[FloatArray], FloatArray]
     shape_at_infinity: float | None = None
 
@@ -110,8 +114,8 @@ TRAJECTORIES: dict[str, Trajectory] = {
     trajectory.name: trajectory
     for trajectory in (
         Fixed(),
-        Drifting("inverse-drift", "W_c(L) = a + b/L", "transition", np.reciprocal, 0.0),
-        Drifting("log-drift", "W_c(L) = a + b ln L", "drift", np.log),
-        Drifting("linear-drift", "W_c(L) = a + b L", "drift", _identity),
+        Drifting("inverse-drift", "W_c(L) = a + b/L", "transition", "{W}_c(L) = a + b/L", np.reciprocal, 0.0),
+        Drifting("log-drift", "W_c(L) = a + b ln L", "drift", r"{W}_c(L) = a + b\ln L", np.log),
+        Drifting("linear-drift", "W_c(L) = a + b L", "drift", "{W}_c(L) = a + b L", _identity),
     )
 }
