@@ -11,6 +11,7 @@ from analyses import OPENING, made_analysis, made_curves
 from driftline.collapse import Comparison, HeldOut, SamplerHealth, weigh
 from driftline.curves import Curve, Curves
 from driftline.drift import LAWS
+from driftline.rates import nearest
 from driftline.report.bibliography import REMEMBERED, bibtex, cited, references
 from driftline.report.methods import methods
 from driftline.scaling.defaults import DEFAULT_ANSATZE
@@ -122,6 +123,17 @@ def test_no_transition_is_claimed_where_there_is_none(code):
     assert "would give $W_{c}$ = $16.53(12)(5)$" in text
     assert "which is no evidence that there is one" in text
     assert "the data support a transition, with" not in text
+
+
+def test_measured_rates_and_what_is_not_excluded():
+    """The rates of wrong verdicts on simulated data and the drift left open stand with the outcome."""
+    analysis = made_analysis(names=("power-law:corrected", "power-law:linear-drift"))
+    rates = replace(analysis.verdict, false_alarm=nearest(analysis.curves))
+    text = methods(replace(analysis, verdict=rates)).replace("\n", " ")
+    assert "the forms with a critical disorder hold a probability of 0.5 or more" in text
+    assert "A critical disorder that moves by less than" in text
+    assert "Measured on simulated data of known truth" in text
+    assert "Measured on simulated data" not in methods(made_analysis()).replace("\n", " ")
 
 
 def test_nothing_to_quote():
@@ -306,7 +318,7 @@ def test_constants_are_read_from_the_code(monkeypatch):
     monkeypatch.setattr(cautions, "ESTABLISHED", 0.987)
     monkeypatch.setattr(module, "THRESHOLD", 4.0)
     text = methods(made_analysis()).replace("\n", " ")
-    assert "hold a probability of 0.987 or more" in text
+    assert "the laws of the drift with a limit hold a probability of 0.987 or more" in text  # one hypothesis alone
     assert text.count("resolved at 4 standard deviations") == 2
 
 

@@ -11,7 +11,7 @@ from typing import Any
 
 from driftline import numerals
 from driftline.cautions import CROSSES, ESTABLISHED, POOR_P, Case, Caution, cautions
-from driftline.collapse import averaged
+from driftline.collapse import Comparison, averaged
 from driftline.display import Shown
 from driftline.plain import attributes
 from driftline.rates import FalseAlarm, nearest
@@ -171,16 +171,16 @@ def _transition_statement(case: Case) -> str:
     return (
         "The data support a transition: curves separate on both sides of a crossing, and forms with a critical "
         f"disorder describe them best, with {case.curves.labels.disorder_symbol}_c in {numerals.bracket(wc)} (95 %)."
-        + _slowest_drift(case)
+        + slowest_drift(case.comparison)
     )
 
 
-def _slowest_drift(case: Case) -> str:
+def slowest_drift(comparison: Comparison) -> str:
     """What these data do not exclude: the fastest drift inside the 95 % interval of the linearly drifting forms."""
-    moving = [fit for fit in case.comparison.fits if "linear-drift" in fit.ansatz.name.split(":")]
+    moving = [fit for fit in comparison.fits if "linear-drift" in fit.ansatz.name.split(":")]
     if not moving:
         return ""
-    shift, sizes = averaged(moving, "D"), case.curves.sizes
+    shift, sizes = averaged(moving, "D"), moving[0].curves.sizes
     fastest = max(abs(shift.low95), abs(shift.high95)) / float(sizes[-1] - sizes[0])
     return f" A critical disorder that moves by less than {fastest:.2g} per unit of size is not excluded."
 

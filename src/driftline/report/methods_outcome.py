@@ -6,9 +6,10 @@ from typing import TYPE_CHECKING
 
 from driftline import cautions, numerals, versions
 from driftline import separation as separation_module
+from driftline import verdict as verdict_module
 from driftline.report.latex import escape, limits, listed, name, number, plain_number, value
 from driftline.report.methods_curves import critical
-from driftline.verdict import FINITE_SIZES
+from driftline.verdict import FINITE_SIZES, slowest_drift
 
 if TYPE_CHECKING:
     from driftline.analysis import Analysis, Crossover
@@ -22,19 +23,21 @@ _CALLED = {"numpy": "NumPy", "scipy": "SciPy", "numba": "Numba"}
 def rules(analysis: Analysis) -> str:
     """When a transition counts as supported, and the bound that the exponent is held against."""
     wc = critical(analysis.curves)
+    rivals = len({fit.ansatz.hypothesis for fit in analysis.comparison.fits}) > 1
+    models, asked = ("forms", verdict_module.SUPPORTED) if rivals else ("laws of the drift", cautions.ESTABLISHED)
+    ending = "critical disorder" if rivals else "limit"
     text = (
-        f"A transition counts as supported only if the forms with a critical disorder hold a probability of "
-        f"{cautions.ESTABLISHED:g} or more, every pair of neighbouring sizes crosses with probability "
-        f"{cautions.CROSSES:g} or more, size dependence of opposite sign is resolved at "
-        f"{separation_module.THRESHOLD:g} "
-        f"standard deviations on both sides, the fit has $p \\geq {cautions.POOR_P:g}$, ${wc}$ lies inside the "
-        f"measured "
-        f"range but for {cautions.OUTSIDE_SHARE:g} of its posterior, and it does not move significantly (at "
-        f"{cautions.UNSTABLE_P:g}, all refits counted) without the smallest sizes; further, "
-        "the crossings must not establish an unbounded drift, the values must not be set by their priors, and "
-        "the sampler "
-        "must have converged. A drift is established if forms or "
-        f"laws without a limit hold {cautions.ESTABLISHED:g} and the crossings do not establish a limit."
+        f"A transition counts as supported only if the {models} with a {ending} hold a probability of {asked:g} "
+        f"or more, "
+        f"every pair of neighbouring sizes crosses with probability {cautions.CROSSES:g} or more, size dependence of "
+        f"opposite sign is resolved at {separation_module.THRESHOLD:g} standard deviations on both sides, the fit has "
+        f"$p \\geq {cautions.POOR_P:g}$, ${wc}$ lies inside the measured range but for "
+        f"{cautions.OUTSIDE_SHARE:g} of its "
+        f"posterior, and it does not move significantly (at {cautions.UNSTABLE_P:g}, all refits counted) without the "
+        "smallest sizes; further, the crossings must not establish an unbounded drift, the values must not be set by "
+        "their priors, and the sampler must have converged. A drift is established if the "
+        f"{models} without a {ending} hold {cautions.ESTABLISHED:g}"
+        + (" and the crossings do not establish a limit." if rivals else ".")
     )
     labels, found = analysis.curves.labels, analysis.crossover
     if found is not None and found.nu is not None and cautions.exponent_limit(analysis.curves) is not None:
@@ -51,7 +54,8 @@ def outcome(analysis: Analysis) -> str:
     """The verdict with its numbers; a critical disorder is quoted as such only where a transition is supported."""
     verdict, found = analysis.verdict, analysis.crossover
     if verdict.code == SUPPORTED and found is not None:
-        text = f"Outcome: the data support a transition, with {_headline(analysis, found)}. {FINITE_SIZES}"
+        text = f"Outcome: the data support a transition, with {_headline(analysis, found)}."
+        text += f"{escape(slowest_drift(analysis.comparison))} {FINITE_SIZES}"
     else:
         text = f"Outcome ({name(verdict.code)}): {escape(verdict.statement)}"
         if found is not None:
@@ -69,7 +73,7 @@ def outcome(analysis: Analysis) -> str:
         text += f" Posterior probabilities: {listed(known)}."
     if verdict.warnings:
         text += f" Warnings raised: {listed(name(each.code) for each in verdict.warnings)}."
-    return text
+    return text if verdict.false_alarm is None else f"{text} {escape(verdict.false_alarm.sentence)}"
 
 
 def _headline(analysis: Analysis, found: Crossover) -> str:
