@@ -10,12 +10,12 @@ import numpy as np
 import pytest
 
 import driftline as dl
+from driftline.blocks import plain
 from driftline.calibration import Calibration, assumed, calibrate, simulated
 from driftline.cli import main
 from driftline.errors import ConfigurationError
 from driftline.rates import Count
 from driftline.readers.write import write_csv
-from driftline.blocks import plain
 from driftline.report.reliability import blocks
 from driftline.settings import Settings
 from driftline.simulate import PowerLawTruth, simulate

@@ -79,15 +79,17 @@ def test_agrees_with_dense_gaussian(ansatz: str, correlation: float) -> None:
 
 
 @pytest.mark.parametrize("ansatz", ["power-law", "power-law:linear-drift:corrected", "kt:corrected:amplitude=0.3"])
-def test_compiled_loop_agrees_with_dense_algebra(ansatz: str) -> None:
-    """The banded compiled loop and the batched dense algebra are the same function."""
-    curves = simulate(SIZES, GRID, PowerLawTruth(4.0), 0.003, 6)
-    target = Posterior(curves, parse_ansatz(ansatz, curves))
+@pytest.mark.parametrize(("correlation", "left_out"), [(0.0, None), (0.6, None), (0.6, SIZES[-1])])
+def test_compiled_loops_agree_with_dense_algebra(ansatz: str, correlation: float, left_out: float | None) -> None:
+    """Both compiled loops, and a batched Cholesky factor of the dense system, are the same function."""
+    curves = simulate(SIZES, GRID, PowerLawTruth(4.0), 0.003, 6, correlation=correlation)
+    target = Posterior(curves, parse_ansatz(ansatz, curves), left_out=left_out)
     z = coordinates(target, 50, seed=3)
-    banded, dense = target._banded(z), target._dense(z)
+    quadratic, log_det = target._solved(z)
+    diagonal = np.diagonal(np.linalg.cholesky(target.system(z)), axis1=1, axis2=2)
     # cancelling y^T C^-1 y ~ 1e5 down to Q ~ 1e2 or more costs eps * 1e5 / 1e2 = 2e-13, times ~100 roundings
-    np.testing.assert_allclose(banded[0], dense[0], rtol=1e-9)
-    np.testing.assert_allclose(banded[1], dense[1], rtol=1e-12)
+    np.testing.assert_allclose(quadratic, diagonal[:, -1] ** 2, rtol=1e-9)
+    np.testing.assert_allclose(log_det, 2 * np.sum(np.log(diagonal[:, :-1]), axis=1), rtol=1e-12)
 
 
 def test_wrong_model_does_not_agree() -> None:

@@ -181,7 +181,8 @@ def nearest(curves: Curves) -> FalseAlarm | None:
 def _false_alarm(like: list[Cell], alike: bool) -> FalseAlarm:
     real = [cell for cell in like if cell.truth == "transition"]
     drift = [cell for cell in like if cell.truth == "drift"]
-    without = [cell for cell in like if cell.truth != "transition"]
+    # a drift too slow to be resolved ("slow") is in the table of the study, but in none of its rates
+    without = [cell for cell in like if cell.truth not in ("transition", "slow")]
     return FalseAlarm(
         noise=like[0].noise / HEIGHT,
         sizes=like[0].sizes,

@@ -115,11 +115,12 @@ class Rates:
     false_drift: tuple[int, int]
     power_transition: tuple[int, int]
     power_drift: tuple[int, int]
+    slow_transition: tuple[int, int]  # a transition seen where there is a drift too slow for these errors
 
 
 def rates(rows: Iterable[Row], thresholds: Thresholds) -> Rates:
     """False alarms and power of all rows together."""
-    kinds: dict[str, list[str]] = {"transition": [], "drift": [], "finite": [], "none": []}
+    kinds: dict[str, list[str]] = {"transition": [], "drift": [], "finite": [], "none": [], "slow": []}
     for row in rows:
         kinds[FAMILIES[row["family"]].kind].append(rejudge(row, thresholds))
     no_transition = kinds["drift"] + kinds["finite"] + kinds["none"]
@@ -129,6 +130,7 @@ def rates(rows: Iterable[Row], thresholds: Thresholds) -> Rates:
         (real.count("drifting"), len(real)),
         (real.count("transition-supported"), len(real)),
         (drifts.count("drifting"), len(drifts)),
+        (kinds["slow"].count("transition-supported"), len(kinds["slow"])),
     )
 
 

@@ -27,7 +27,7 @@ from numpy.typing import NDArray
 from driftline.curves import Curves, FloatArray
 from driftline.scaling.ansatz import Ansatz
 from driftline.scaling.function import SplineFunction
-from driftline.scaling.kernel import solve_batch
+from driftline.scaling.kernel import Prior, solve_batch, solve_correlated
 from driftline.scaling.parameters import Parameter
 from driftline.scaling.priors import LOG_2PI, LogNormal, LogUniform
 
@@ -137,6 +137,13 @@ class Posterior:
             scipy.linalg.solve_triangular(f, np.eye(len(f)), lower=True) * keep
             for f, keep in zip(factors, kept, strict=True)
         )
+
+    @cached_property
+    def _inverse(self) -> tuple[FloatArray, NDArray[np.int64]]:
+        """Inverse covariance of all points, shape (points, points), and the first point of every size and their end."""
+        factor = scipy.linalg.block_diag(*self._whitener)
+        lengths = [curve.mean.size for curve in self.curves.curves]
+        return factor.T @ factor, np.concatenate([[0], np.cumsum(lengths)]).astype(np.int64)
 
     def _whiten(self, matrix: FloatArray) -> None:
         """Multiply `matrix`, shape (..., points, columns), by the inverse root of C from the left, in place."""
@@ -253,7 +260,7 @@ class Posterior:
     def log_likelihood(self, z: FloatArray) -> FloatArray:
         """Log marginal likelihood, shape (batch,), of coordinates `z`, shape (batch, dimension)."""
         log_tau, log_s = self._nuisance(z)
-        quadratic, log_det = self._dense(z) if self.curves.correlated else self._banded(z)
+        quadratic, log_det = self._solved(z)
         terms = CORRECTION_TERMS if self.ansatz.corrected else 0
         log_det_prior = self.function.log_det_precision(log_tau) - 2 * terms * np.log(self.correction_sd)
         scale = 2 * (self.points - self.function.count - terms) * log_s
@@ -261,22 +268,18 @@ class Posterior:
         sound = np.isfinite(total) & (quadratic >= 0)  # below zero rounding has eaten the number
         return np.where(sound, total, -np.inf)
 
-    def _banded(self, z: FloatArray) -> tuple[FloatArray, FloatArray]:
-        """s^2 Q and ln det(M + s^2 P) for independent points; Q is NaN where the positions make no axis."""
+    def _solved(self, z: FloatArray) -> tuple[FloatArray, FloatArray]:
+        """s^2 Q and ln det(M + s^2 P); Q is NaN where the positions make no axis."""
         size, sizes = self._points[0], self.curves.sizes
         correction, amplitude = self.ansatz.correction(z, size, sizes), self.ansatz.amplitude(z, size, sizes)
         u, sound = self._axis(z)
-        quadratic, log_det = solve_batch(
-            u, correction, amplitude, self.targets(amplitude), np.asarray(self._whitener),
-            *self._nuisance(z), self.function.roughness_band, self.function.line, self.correction_sd,
-        )  # fmt: skip
+        prior = Prior(*self._nuisance(z), self.function.roughness_band, self.function.line, self.correction_sd)
+        y = self.targets(amplitude)
+        if isinstance(self._whitener, tuple):
+            quadratic, log_det = solve_correlated(u, correction, amplitude, y, *self._inverse, prior)
+        else:
+            quadratic, log_det = solve_batch(u, correction, amplitude, y, self._whitener, prior)
         return np.where(sound, quadratic, np.nan), log_det
-
-    def _dense(self, z: FloatArray) -> tuple[FloatArray, FloatArray]:
-        """The same by dense algebra, whatever the covariance of the points."""
-        diagonal = np.diagonal(_cholesky(self.system(z)), axis1=1, axis2=2)
-        quadratic = np.where(self._axis(z)[1], diagonal[:, -1] ** 2, np.nan)
-        return quadratic, 2 * np.sum(np.log(diagonal[:, :-1]), axis=1)
 
     def coefficients(self, z: FloatArray) -> tuple[FloatArray, FloatArray]:
         """Posterior mean and covariance of c, in units of the range of y, at one vector `z`, shape (dimension,)."""
@@ -313,17 +316,3 @@ class Posterior:
         upper = np.linalg.cholesky(matrix).swapaxes(1, 2)
         normal = rng.standard_normal(mean.shape)
         return mean + s * np.linalg.solve(upper, normal[..., None])[..., 0], phi, data
-
-
-def _cholesky(matrix: FloatArray) -> FloatArray:
-    """Batched Cholesky factor; NaN where a matrix is not positive definite to working precision."""
-    try:
-        return np.asarray(np.linalg.cholesky(matrix), dtype=np.float64)
-    except np.linalg.LinAlgError:
-        factors = np.full_like(matrix, np.nan)
-        for i, single in enumerate(matrix):
-            try:
-                factors[i] = np.linalg.cholesky(single)
-            except np.linalg.LinAlgError:
-                continue  # stays NaN: reported as zero likelihood
-        return factors
