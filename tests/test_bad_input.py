@@ -86,7 +86,8 @@ UNTOLD = "the names do not tell which column holds {}; the columns are {}; say i
         ("W,8,10,12", "the columns are W, 8, 10, 12; if there is one for each size, say so with --columns "
          "disorder=W,mean={size} (and error=... or deviation=... in the same way)"),
         ("W,L8,L10,L12", "no column holds the error of the mean; the columns are L{size}, W; name it with --columns "
-         "error=... (standard error) or deviation=... (standard deviation over realisations), or declare raw values with "
+         "error=... (standard error) or deviation=... (standard deviation over realisations), or declare raw values "
+         "with "
          "value=...; a standard error is the standard deviation over realisations divided by the square root of their "
          "number"),
         ('size,"disorder,mean,error', "the quotation marks do not match; remove them"),

@@ -14,6 +14,7 @@ import pytest
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 
+import driftline as dl
 from driftline.cli import main
 from driftline.errors import ConfigurationError, InputError
 from driftline.readers import read, table
@@ -555,6 +556,14 @@ def test_options_on_the_command_line_and_in_toml(tmp_path, capsys):
     arguments = ["--config", str(toml), "--separator", "blanks", "--samples-each", "4"]
     assert main(["inspect", str(path), *arguments]) == 0
     assert "standard deviations were divided" in capsys.readouterr().out
+    raw = tmp_path / "raw.csv"
+    raw_frame().to_csv(raw, index=False)
+    toml.write_text('[input]\naverage = "median"\npaired = false\n')
+    medians = dl.read(raw, average="median", paired=False)
+    means = dl.Settings.resolve(toml, {"input": {"average": "mean", "paired": None}}).input
+    assert (means.average, means.paired) == ("mean", False)
+    assert dl.read(raw, input=dl.Settings.resolve(toml).input).flat()[2].tolist() == medians.flat()[2].tolist()
+    assert_averages(dl.read(raw, input=means))
 
 
 @pytest.mark.parametrize(

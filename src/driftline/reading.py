@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable, Iterable, Mapping
-from dataclasses import dataclass, field, fields
+from dataclasses import dataclass, field, fields, replace
 from types import MappingProxyType
 from typing import Any, Literal
 
@@ -137,9 +137,8 @@ class InputOptions:
         found = {part.name: getattr(self, part.name) for part in fields(self)}
         return {name: _plain(value) for name, value in found.items() if value != getattr(default, name)}
 
-    @classmethod
-    def of_options(cls, given: Mapping[str, Any]) -> InputOptions:
-        """The options of the command line, by field; those that are None count as not given.
+    def with_options(self, given: Mapping[str, Any]) -> InputOptions:
+        """These with the options of the command line, by field, put over them; those that are None are not given.
 
         Raises
         ------
@@ -147,7 +146,8 @@ class InputOptions:
             If a value cannot be used; the text names the option.
         """
         kept = {name: value for name, value in given.items() if value is not None}
-        return cls(**{name: _CHECKS[name](kept[name], f"option --{name.replace('_', '-')}") for name in kept})
+        checked = {name: _CHECKS[name](kept[name], f"option --{name.replace('_', '-')}") for name in kept}
+        return replace(self, **checked)
 
     @property
     def named(self) -> dict[str, str]:

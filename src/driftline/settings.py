@@ -110,7 +110,7 @@ class Settings:
         chosen = {**(defaults or {}), **({} if file is None else _read_toml(Path(file)))}
         for name, value in (options or {}).items():
             if name == "input":
-                chosen[name] = InputOptions.of_options(value).over(chosen.get(name, InputOptions()))
+                chosen[name] = chosen.get(name, InputOptions()).with_options(value)
             elif value is not None:
                 where = f"option --{'ansatz' if name == 'ansatze' else name}".replace("_", "-")
                 chosen[name] = _CHECKS[name](value, where)

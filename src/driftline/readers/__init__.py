@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import os
 from collections.abc import Mapping
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -90,9 +91,9 @@ def read(
 def split_words(input: InputOptions | None, words: Mapping[str, Any]) -> tuple[InputOptions, dict[str, Any]]:
     """Keywords of `read` as options and labels."""
     names = InputOptions.names()
-    given = InputOptions(**{name: value for name, value in words.items() if name in names})
+    given = {name: value for name, value in words.items() if name in names}
     labels = {name: value for name, value in words.items() if name not in names}
-    return given.over(input or InputOptions()), labels
+    return replace(input or InputOptions(), **given), labels
 
 
 def _named(name: str) -> Layout:

@@ -14,10 +14,10 @@ from typing import ClassVar
 from driftline.curves import FloatArray
 from driftline.errors import InputError
 from driftline.progress import Progress
-from driftline.readers.assemble import UNLABELLED, Assembled, Piece, assembled, averaged_blocks
+from driftline.readers.assemble import Assembled, Piece, assembled, averaged_blocks, without_labels
 from driftline.readers.base import Contents, Layout, number
 from driftline.readers.grids import rows_of
-from driftline.readers.guard import hdf5_signed
+from driftline.readers.guard import hdf5_signed, opened
 from driftline.readers.pattern import Pattern, inferred, is_fixed
 from driftline.readers.roles import Scene, assigned
 from driftline.readers.stores import Hdf5Store, NpzStore, Store, opened_store
@@ -72,7 +72,7 @@ class NpzLayout(ArrayLayout):
 
     def recognises(self, path: Path, options: InputOptions) -> bool:
         """By the signature of a zip archive whose first member is an array; spreadsheets are zip archives too."""
-        with path.open("rb") as stream:
+        with opened(path, str(path)) as stream:
             start = stream.read(300)
         return start.startswith(b"PK\x03\x04") and b".npy" in start
 
@@ -236,7 +236,7 @@ def _streamed(store: Store, plan: Plan, options: InputOptions, progress: Progres
 
     source = LongDatasets(store.place, {role: store.dataset(other) for role, other in paths.items()})
     made = averaged_blocks(stream(source, progress=progress), options)
-    made.notes.extend(source.notes if "realisation" in paths else [UNLABELLED, *source.notes])
+    made.notes.extend(source.notes if "realisation" in paths else [without_labels(options), *source.notes])
     return made
 
 

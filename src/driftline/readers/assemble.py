@@ -20,6 +20,7 @@ from driftline.reading import InputOptions
 from driftline.wording import listed
 
 UNLABELLED = "the values have no realisation labels: each counts as the one value of a realisation of its own"
+MATCHED = "the values have no realisation labels: those at the same place in the order count as one realisation"
 
 if TYPE_CHECKING:
     from driftline.readers.samples import Block  # scipy comes with it, so only where there are raw values
@@ -78,11 +79,16 @@ def assembled(pieces: Iterable[Piece], options: InputOptions) -> Assembled:
     if any("value" in piece.data for piece in every):
         made = averaged_blocks(blocks(every), options)
         if any("realisation" not in piece.data and piece.data["value"].ndim == 1 for piece in every):
-            made.notes.insert(0, UNLABELLED)
+            made.notes.insert(0, without_labels(options))
     else:
         made = _averaged(every, options)
     made.notes[:0] = [note for piece in every for note in piece.notes]
     return made
+
+
+def without_labels(options: InputOptions) -> str:
+    """What is said about values without labels of realisations."""
+    return MATCHED if options.paired else UNLABELLED
 
 
 def averaged_blocks(raw: Iterable[Block], options: InputOptions) -> Assembled:

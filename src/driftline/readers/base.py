@@ -108,11 +108,6 @@ class Layout(ABC):
             If the file cannot be used.
         """
 
-    def fingerprint(self, path: Path, place: str) -> str:
-        """SHA-256 of what is read, in hexadecimal."""
-        with opened(path, place) as stream:
-            return hashlib.file_digest(cast("io.BufferedReader", stream), "sha256").hexdigest()
-
     def read(
         self, path: Path, place: str, labels: Mapping[str, Any], options: InputOptions,
         progress: Progress | None = None,
@@ -122,10 +117,16 @@ class Layout(ABC):
         # The hash comes last: it would take long on a file too large to be read
         origin = {
             "path": printable(place),
-            "sha256": found.sha256 or self.fingerprint(path, place),
+            "sha256": found.sha256 or sha256(path, place),
             "layout": self.name,
         }
         return built(found, place, labels, origin)
+
+
+def sha256(path: Path, place: str) -> str:
+    """SHA-256 of a file, in hexadecimal."""
+    with opened(path, place) as stream:
+        return hashlib.file_digest(cast("io.BufferedReader", stream), "sha256").hexdigest()
 
 
 def built(found: Contents, place: str, labels: Mapping[str, Any], origin: Mapping[str, Any]) -> Curves:

@@ -17,7 +17,7 @@ import numpy as np
 from driftline.errors import InputError
 from driftline.progress import Progress
 from driftline.readers.assemble import Piece, assembled
-from driftline.readers.base import Contents, Layout, number
+from driftline.readers.base import Contents, Layout, number, sha256
 from driftline.readers.columns import Choice
 from driftline.readers.guard import matching_files, read_npy
 from driftline.readers.pattern import Pattern, inferred
@@ -222,5 +222,5 @@ def _fingerprint(files: Sequence[_File]) -> str:
     """SHA-256 of the paths and contents of all files, as ``sha256sum`` would list them."""
     total = hashlib.sha256()
     for file in sorted(files, key=lambda file: file.relative):
-        total.update(f"{hashlib.sha256(file.path.read_bytes()).hexdigest()}  {file.relative}\n".encode())
+        total.update(f"{sha256(file.path, file.place)}  {file.relative}\n".encode())
     return total.hexdigest()

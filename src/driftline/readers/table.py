@@ -26,7 +26,7 @@ import numpy as np
 from driftline.curves import FloatArray
 from driftline.errors import InputError
 from driftline.progress import Progress
-from driftline.readers.assemble import UNLABELLED, Assembled, Piece, assembled, averaged_blocks
+from driftline.readers.assemble import Assembled, Piece, assembled, averaged_blocks, without_labels
 from driftline.readers.base import NEEDED, OPTIONAL, Contents, Layout, check_columns
 from driftline.readers.columns import Choice, choose, wide_names
 from driftline.readers.guard import lines
@@ -165,7 +165,7 @@ def _streamed(
     made = averaged_blocks(stream(source, progress=progress), options)
     notes = [*first.notes, *unused_note(choice), *source.notes, *made.notes]
     if "realisation" not in columns:
-        notes.append(UNLABELLED)
+        notes.append(without_labels(options))
     again = resolved(TableLayout.name, first, choice, options)
     return Contents(made.curves, first.labels, choice.columns, made.rows, notes, made.realisations, again)
 
