@@ -39,8 +39,8 @@ def sections(analysis: Analysis, pictures: Path) -> dict[str, str]:
         "figures": figures(analysis, pictures),
         "panel-section": panel(analysis),
         "tables": _tables(analysis),
-        "priors": table(details.priors(analysis)) + paragraph(details.PRIORS_BESIDE, "note"),
-        "sampler": paragraph(details.sampler_sentence(analysis)) + table(details.sampler(analysis)),
+        "priors": table(details.priors(analysis), "prose") + paragraph(details.PRIORS_BESIDE, "note"),
+        "sampler": paragraph(details.sampler_sentence(analysis)) + table(details.sampler(analysis), "prose"),
         "limits": bullets(limits(analysis)),
         "reproduce": _reproduce(analysis),
         "versions": bullets(_versions()),
@@ -63,9 +63,9 @@ def _numbers(analysis: Analysis) -> str:
     items = "".join(_number(*each) for each in _headline(analysis))
     found, note = analysis.crossover, ""
     if found is not None:
-        note = f"Crossover disorder and exponent: average over {' and '.join(found.basis)}, by evidence."
+        note = f"The crossover is an average over {' and '.join(found.basis)}, by evidence."
         if analysis.verdict.code != SUPPORTED:
-            note += " They hold only if there is a transition, which these data do not establish."
+            note += " It means something only if there is a transition, which these data do not establish."
     return (f'<dl class="numbers">\n{items}</dl>' if items else "") + (paragraph(note, "note") if note else "")
 
 
@@ -76,19 +76,15 @@ def _number(label: str, value: str, lines: list[str]) -> str:
 
 def _headline(analysis: Analysis) -> Iterator[tuple[str, str, list[str]]]:
     """Label (HTML), value and further lines (text) of each headline number."""
-    labels, found, verdict = analysis.curves.labels, analysis.crossover, analysis.verdict
-    if found is not None:
-        unit = f" ({text(labels.disorder_unit)})" if labels.disorder_unit else ""
-        symbol = mathtext_to_html(f"{{{labels.disorder_symbol}}}_c")
-        systematic = found.systematic_text.replace("+-", "±")
-        lines = [
-            f"95 % {numerals.bracket(found.disorder)}",
-            f"systematic {systematic}",
-        ]
-        yield f"crossover disorder {symbol}{unit}", numerals.up_down(found.disorder).text, lines
-        if found.nu is not None:
-            exponent = mathtext_to_html(r"\nu")
-            yield f"exponent {exponent}", numerals.up_down(found.nu).text, [f"95 % {numerals.bracket(found.nu)}"]
+    labels, verdict = analysis.curves.labels, analysis.verdict
+    symbols = mathtext_to_html(f"{{{labels.disorder_symbol}}}_c"), mathtext_to_html(r"\nu")
+    unit = f" ({text(labels.disorder_unit)})" if labels.disorder_unit else ""
+    names = f"crossover disorder {symbols[0]}{unit}", f"exponent {symbols[1]}"
+    # the very cells of the table below, so that the two agree to the digit
+    for name, (_, value, _, limits95, systematic) in zip(names, rows.crossover(analysis).rows, strict=False):
+        if value != numerals.MISSING:
+            beside = [] if systematic == numerals.MISSING else [f"systematic {systematic.replace('+-', '±')}"]
+            yield name, value, [f"95 % {limits95}", *beside]
     laws = "among the drift laws"  # which also speak where no rival form was fitted
     among = laws if analysis.comparison.probability("transition") is None else "among the forms fitted"
     for label, value, whole in (
