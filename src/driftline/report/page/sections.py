@@ -81,10 +81,10 @@ def _headline(analysis: Analysis) -> Iterator[tuple[str, str, list[str]]]:
     unit = f" ({text(labels.disorder_unit)})" if labels.disorder_unit else ""
     names = f"crossover disorder {symbols[0]}{unit}", f"exponent {symbols[1]}"
     # the very cells of the table below, so that the two agree to the digit
-    for name, (_, value, _, limits95, systematic) in zip(names, rows.crossover(analysis).rows, strict=False):
-        if value != numerals.MISSING:
+    for name, (_, cell, _, limits95, systematic) in zip(names, rows.crossover(analysis).rows, strict=False):
+        if cell != numerals.MISSING:
             beside = [] if systematic == numerals.MISSING else [f"systematic {systematic.replace('+-', '±')}"]
-            yield name, value, [f"95 % {limits95}", *beside]
+            yield name, cell, [f"95 % {limits95}", *beside]
     laws = "among the drift laws"  # which also speak where no rival form was fitted
     among = laws if analysis.comparison.probability("transition") is None else "among the forms fitted"
     for label, value, whole in (
