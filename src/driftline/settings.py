@@ -109,7 +109,11 @@ class Settings:
         """
         chosen = {**(defaults or {}), **({} if file is None else _read_toml(Path(file)))}
         for name, value in (options or {}).items():
-            if name == "input":
+            if name == "observable":
+                if value is not None:
+                    labels = {**chosen.get("labels", {}), "observable": value}
+                    chosen["labels"] = _labels(labels, "option --observable")
+            elif name == "input":
                 chosen[name] = chosen.get(name, InputOptions()).with_options(value)
             elif value is not None:
                 where = f"option --{'ansatz' if name == 'ansatze' else name}".replace("_", "-")

@@ -24,7 +24,7 @@ from driftline.wording import printable
 DONE, BAD_INPUT, BAD_USAGE, INTERRUPTED = 0, 1, 2, 130
 
 #: The commands in the order in which the help lists them: each is the function of its name in the module of its name.
-COMMANDS = ("analyse", "inspect", "crossings", "collapse", "simulate", "ansatze", "calibrate", "fields")
+COMMANDS = ("analyse", "inspect", "reduce", "crossings", "collapse", "simulate", "ansatze", "calibrate", "fields")
 
 
 def main(argv: Sequence[str] | None = None) -> int:

@@ -22,7 +22,7 @@ from driftline.cli.options import (
     seed_option,
     selection_options,
 )
-from driftline.cli.reading import read_data, reading_options, taken
+from driftline.cli.reading import observable_option, read_data, reading_options, taken
 from driftline.cli.screen import say, show, written
 
 WRITING_FROM = 0.93  # share of the wall time after which only files are written, for the progress bar
@@ -48,6 +48,7 @@ EXAMPLES = examples(
 @force_option()
 @quiet_option()
 @json_option("Print result.json and nothing else; a folder is then written only if --out names one.")
+@observable_option()
 @reading_options
 def analyse(
     path: Path, config: Path | None, out: Path | None, force: bool, quiet: bool, as_json: bool, **options: Any

@@ -8,7 +8,7 @@ from typing import Any
 import click
 
 from driftline.cli.options import config_option, data_path, examples
-from driftline.cli.reading import read_data, reading_options, taken
+from driftline.cli.reading import observable_option, read_data, reading_options, taken
 
 EXAMPLES = examples(
     "driftline inspect curves.csv",
@@ -20,6 +20,7 @@ EXAMPLES = examples(
 @click.command(epilog=EXAMPLES)
 @data_path()
 @config_option()
+@observable_option()
 @reading_options
 def inspect(path: Path, config: Path | None, **options: Any) -> None:
     """Say what is read from PATH.
@@ -29,5 +30,5 @@ def inspect(path: Path, config: Path | None, **options: Any) -> None:
     from driftline.readers.inspection import inspect_text
     from driftline.settings import Settings
 
-    settings = Settings.resolve(config, {"input": taken(options)})
+    settings = Settings.resolve(config, {"input": taken(options), **options})
     click.echo(inspect_text(read_data(path, settings)), nl=False)

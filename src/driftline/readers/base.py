@@ -20,6 +20,7 @@ from typing import Any, ClassVar, cast
 
 from driftline.curves import LARGEST, Curve, Curves, Labels
 from driftline.errors import InputError
+from driftline.observables import named, of_file, references
 from driftline.progress import Progress
 from driftline.readers.guard.files import opened
 from driftline.reading import InputOptions
@@ -131,14 +132,23 @@ def sha256(path: Path, place: str) -> str:
 
 def built(found: Contents, place: str, labels: Mapping[str, Any], origin: Mapping[str, Any]) -> Curves:
     """Curves of what a layout found, with `labels` put over those of the file and the origin completed."""
-    record = {**origin, "columns": dict(found.columns), "rows": found.rows, "notes": list(found.notes)}
+    record: dict[str, Any] = {**origin, "columns": dict(found.columns), "rows": found.rows, "notes": list(found.notes)}
     if given := found.options.given():
         record["input"] = given
     if found.realisations:
         record["realisations"] = [dict(size) for size in found.realisations]
+    own, remarks = of_file(found.labels)
+    record["notes"] += remarks
     with located(place):
-        curves = Curves(found.curves, Labels(**found.labels), record)  # type: ignore[arg-type]
-    return curves.relabel(**labels) if labels else curves
+        curves = Curves(found.curves, Labels(**own), record)
+    if not labels:
+        return curves
+    known = named(labels.get("observable"))
+    curves = curves.relabel(**references(labels))
+    if known is None:
+        return curves
+    with located(place):
+        return known.applied(curves)  # never because of a comment in the file: what the data are, the user must say
 
 
 @contextmanager

@@ -48,8 +48,8 @@ class FolderLayout(Layout):
         self, path: Path, place: str, options: InputOptions, progress: Progress | None = None
     ) -> Contents:  # fmt: skip
         """Read all files that fit the pattern; see `Layout.contents`."""
-        pattern = Pattern.of(options.pattern) if options.pattern else _found_pattern(path, place)
-        files = _files(path, pattern, place)
+        pattern = Pattern.of(options.pattern) if options.pattern else found_pattern(path, place)
+        files = files_of(path, pattern, place)
         gathered = _Gathered()
         for file in files:
             gathered.take(file, options)
@@ -77,7 +77,7 @@ class _File:
         return {role: number(text, self.place) for role, text in self.texts.items()}
 
 
-def _files(root: Path, pattern: Pattern, place: str) -> list[_File]:
+def files_of(root: Path, pattern: Pattern, place: str) -> list[_File]:
     """Files that fit `pattern`, in the order of size, disorder and realisation."""
     parts = [pattern.part(index) for index in range(len(pattern.parts))]
     found = []
@@ -112,7 +112,7 @@ def _all_files(root: Path, place: str) -> list[str]:
     ]
 
 
-def _found_pattern(root: Path, place: str) -> Pattern:
+def found_pattern(root: Path, place: str) -> Pattern:
     """The pattern that the names of the files leave no doubt about."""
     names = _all_files(root, place)
     numbered = [name for name in names if re.search(r"\d", name)]  # a README carries no parameters

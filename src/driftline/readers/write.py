@@ -12,7 +12,9 @@ from contextlib import contextmanager
 from dataclasses import asdict
 from pathlib import Path
 from types import MappingProxyType
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
+
+import numpy.typing as npt
 
 from driftline.curves import Curve, Curves, Labels
 from driftline.errors import ConfigurationError, InputError
@@ -84,6 +86,72 @@ def write_hdf5(curves: Curves, path: str | os.PathLike[str], *, facts: Facts = M
                     group.create_dataset(name, data=values, track_times=False)
 
 
+def check_new(path: str | os.PathLike[str], *, force: bool = False) -> None:
+    """See that a file may be written at `path`; meant to be called before a long computation.
+
+    Raises
+    ------
+    ConfigurationError
+        If something stands there and `force` does not replace it, or there is no such folder.
+    """
+    target = Path(path)
+    if not target.parent.is_dir():
+        raise ConfigurationError(f"{target}: the file cannot be written (there is no such folder)")
+    if target.is_symlink() or (target.exists() and not target.is_file()):
+        raise ConfigurationError(f"{target}: exists and is not a file; choose another place with --out")
+    if target.exists() and not force:
+        raise ConfigurationError(f"{target}: exists; give --force to replace it or choose another with --out")
+
+
+def write_realisations(
+    table: Mapping[str, npt.NDArray[Any]], labels: Mapping[str, str | float | None], path: str | os.PathLike[str],
+    remark: str = "",
+) -> None:  # fmt: skip
+    """Write a realisation table: HDF5 where the name ends in ``.h5`` or ``.hdf5``, otherwise CSV.
+
+    Parameters
+    ----------
+    table : mapping
+        Equally long columns ``size``, ``disorder``, ``realisation`` and ``value``; in HDF5 a dataset each.
+    labels : mapping
+        Fields of `driftline.curves.Labels`: comments above the header of the CSV, attributes of the HDF5 file.
+    path : path
+        Where; the file appears when it is complete.
+    remark : str
+        A further line of comment.
+
+    Raises
+    ------
+    ConfigurationError
+        If the file cannot be written.
+    """
+    columns = {name: table[name] for name in ("size", "disorder", "realisation", "value")}
+    with replacing(path) as part:
+        if Path(path).suffix.lower() in (".h5", ".hdf5"):
+            _write_columns(columns, labels, part, remark)
+            return
+        with part.open("w", encoding="utf-8", newline="\n") as stream:
+            if remark:
+                stream.write(f"# {remark}\n")
+            for name, value in labels.items():
+                stream.write(f"# {name}: {'none' if value is None else value}\n")
+            stream.write(",".join(columns) + "\n")
+            for row in zip(*(column.tolist() for column in columns.values()), strict=True):
+                stream.write(",".join(_text(value) for value in row) + "\n")
+
+
+def _write_columns(
+    columns: Mapping[str, npt.NDArray[Any]], labels: Mapping[str, str | float | None], part: Path, remark: str
+) -> None:
+    import h5py
+
+    with h5py.File(part, "w") as file:
+        for name, value in {**({"remark": remark} if remark else {}), **labels}.items():
+            _set_attribute(file, name, "none" if value is None else value)
+        for name, column in columns.items():
+            file.create_dataset(name, data=column, track_times=False)
+
+
 def _set_attribute(place: h5py.Group, name: str, value: str | float) -> None:
     """Text goes in with a fixed length: the HDF5 library can hang for ever in the damaged heap of variable lengths."""
     import h5py
@@ -134,6 +202,6 @@ def _label_texts(labels: Labels) -> Iterator[tuple[str, str]]:
             yield name, _text(value) if isinstance(value, float) else value
 
 
-def _text(value: float) -> str:
+def _text(value: float | int) -> str:
     """Shortest text that reads back as the same double, without a needless ``.0``."""
     return repr(value).removesuffix(".0")

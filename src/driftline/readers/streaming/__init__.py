@@ -13,7 +13,8 @@ The sources are `LongText` (text, plain or gzip) and `LongDatasets` (HDF5, a dat
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator, Mapping, Sequence
+from pathlib import Path
 from typing import Protocol
 
 from driftline.errors import InputError
@@ -24,8 +25,10 @@ from driftline.readers.streaming.datasets import LongDatasets
 from driftline.readers.streaming.gathering import MOST_ENTRIES, PointGatherer, PointValues
 from driftline.readers.streaming.runs import Rows
 from driftline.readers.streaming.text import LongText, Positions
+from driftline.readers.text import TextTable
+from driftline.reading import SEPARATORS
 
-__all__ = ["LongDatasets", "LongText", "Positions", "Source", "stream"]
+__all__ = ["LongDatasets", "LongText", "Positions", "Source", "long_text", "stream"]
 
 
 class Source(Protocol):
@@ -78,6 +81,30 @@ def stream(
                     returned.append(point)
                 yield _block(point, source.place, averaged)
     source.notes.extend(_returns(returned))
+
+
+def long_text(
+    path: Path, place: str, table: TextTable, columns: Mapping[str, int], *, skip_cut_lines: bool = False
+) -> LongText:
+    """A text file to be streamed, whose first lines were read as `table`.
+
+    Parameters
+    ----------
+    path, place : Path, str
+        The file, and what faults call it.
+    table : TextTable
+        What `driftline.readers.table.head` found in its first lines.
+    columns : mapping
+        Index of the columns ``size``, ``disorder``, ``value`` and, if there are labels, ``realisation``.
+    skip_cut_lines : bool
+        Leave out a last line without a line end.
+    """
+    positions = Positions(
+        table.width, columns["size"], columns["disorder"], columns["value"], columns.get("realisation")
+    )  # fmt: skip
+    above = int(table.lines[0]) - 1  # lines above the first row
+    separator = SEPARATORS[table.separator]
+    return LongText(path, place, positions, separator=separator, skip=above, skip_cut_lines=skip_cut_lines)
 
 
 def _block(point: PointValues, place: str, averaged: bool) -> Block:
