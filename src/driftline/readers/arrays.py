@@ -38,14 +38,14 @@ class ArrayLayout(Layout):
     ) -> Contents:  # fmt: skip
         """Read the arrays; see `Layout.contents`."""
         with opened_store(path, place, self.store) as store:
-            plan = planned(store, options)
+            plan, labels = planned(store, options), store.labels()
             made = _streamed(store, plan, options, progress) or assembled(
                 pieces_of_store(store, plan, options), options
             )
         again = InputOptions(layout=self.name, pattern=plan.base or None, columns=plan.roles).over(options)
         columns = {**dict.fromkeys(plan.placeholders, "the path"), **plan.shown()}
         notes = [f"{plan.count} {store.word}{'s' * (plan.count != 1)} read by {plan.main_text}"]
-        return Contents(made.curves, {}, columns, made.rows, [*notes, *made.notes], made.realisations, again)
+        return Contents(made.curves, labels, columns, made.rows, [*notes, *made.notes], made.realisations, again)
 
 
 class Hdf5TreeLayout(ArrayLayout):

@@ -14,7 +14,7 @@ import numpy as np
 
 from driftline.curves import FloatArray
 from driftline.errors import InputError
-from driftline.readers.base import number
+from driftline.readers.base import LABEL_NAMES, label, number
 from driftline.readers.guard import Archive, attribute, open_hdf5, open_npz, read_numbers, refuse_foreign_values, walk
 from driftline.wording import listed, printable, shown
 
@@ -23,6 +23,9 @@ if TYPE_CHECKING:
 
 
 MOST_SHOWN = 12  # kinds of arrays in a sentence
+
+#: Attribute ``format`` of a realisation table that the program wrote
+REALISATIONS = "driftline-realisations/1"
 
 
 class Store(ABC):
@@ -64,6 +67,10 @@ class Store(ABC):
     def attributes(self) -> list[str]:
         """Names of attributes, each once."""
         return []
+
+    def labels(self) -> dict[str, str | float | None]:
+        """Labels that the file carries; only the program's own files do, elsewhere such names could mean anything."""
+        return {}
 
     def seen(self) -> str:
         """The arrays with their shapes, for a sentence; those whose paths differ in numbers only count as one."""
@@ -114,6 +121,14 @@ class Hdf5Store(Store):
         """See `Store.attributes`; a few objects are enough, since alike ones have alike attributes."""
         few = islice(self._objects.values(), 100)
         return list(dict.fromkeys(name for item in few for name in islice(item.attrs, 20)))
+
+    def labels(self) -> dict[str, str | float | None]:
+        """See `Store.labels`."""
+        file = self._objects[""]
+        if "format" not in file.attrs or attribute(file, "format", self.place) != REALISATIONS:
+            return {}
+        places = {name: f"{self.place}, attribute {name}" for name in LABEL_NAMES if name in file.attrs}
+        return {name: label(name, attribute(file, name, where), where) for name, where in places.items()}
 
     def parameter(self, path: str, name: str) -> float | None:
         """See `Store.parameter`."""

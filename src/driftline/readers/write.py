@@ -19,6 +19,7 @@ import numpy.typing as npt
 from driftline.curves import Curve, Curves, Labels
 from driftline.errors import ConfigurationError, InputError
 from driftline.readers.hdf5 import FORMAT, VECTORS
+from driftline.readers.stores import REALISATIONS
 
 if TYPE_CHECKING:
     import h5py  # imported inside the functions that need it
@@ -146,7 +147,7 @@ def _write_columns(
     import h5py
 
     with h5py.File(part, "w") as file:
-        for name, value in {**({"remark": remark} if remark else {}), **labels}.items():
+        for name, value in {"format": REALISATIONS, **({"remark": remark} if remark else {}), **labels}.items():
             _set_attribute(file, name, "none" if value is None else value)
         for name, column in columns.items():
             file.create_dataset(name, data=column, track_times=False)
