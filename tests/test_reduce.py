@@ -125,7 +125,7 @@ def test_an_earlier_table_is_kept(tmp_path: Path, capsys: pytest.CaptureFixture[
     arguments = ["reduce", str(_table(tmp_path)), "--out", str(out), "--quiet"]
     assert main(arguments) == 1
     assert capsys.readouterr().err == (
-        f"driftline: {out}: exists; give --force to replace it or choose another with --out\n"
+        f"driftline: {out}: exists already; give --force to replace it or choose another name\n"
     )
     assert out.read_text(encoding="utf-8") == "precious"
     assert main([*arguments, "--force"]) == 0

@@ -9,8 +9,9 @@ import click
 
 from driftline.cli.options import data_path, examples, force_option, quiet_option
 from driftline.cli.reading import spectra_options
-from driftline.cli.screen import safe, show
+from driftline.cli.screen import show
 from driftline.reading import InputOptions
+from driftline.wording import printable
 
 if TYPE_CHECKING:
     from driftline.blocks import Block
@@ -69,22 +70,23 @@ def reduce(
     """
     from driftline.observables import references
     from driftline.progress import terminal_progress
-    from driftline.readers.write import check_new, write_realisations
+    from driftline.readers.write import write_realisations
     from driftline.reduction import reduce_spectra
+    from driftline.report.simulated import check_target
     from driftline.spectra import Window
 
     window = Window.of(fraction, states, centre)
     labels = references({"observable": observable})
     target = Path(f"{path.stem or path.name}-gap-ratio.csv") if out is None else out
-    check_new(target, force=force)
+    check_target(target, force=force)
     with terminal_progress(quiet=quiet) as progress:
         reduction = reduce_spectra(
-            path, window=window, degenerate=degenerate, input=InputOptions.of_options(options), progress=progress
+            path, window=window, degenerate=degenerate, input=InputOptions().with_options(options), progress=progress
         )  # fmt: skip
         write_realisations(reduction.columns(), labels, target, f"Each value is the mean over {window}.")
     if not quiet:
         show(_report(reduction, labels))
-        click.echo(f"\nWritten to {safe(str(target))}")
+        click.echo(f"\nWritten to {printable(str(target))}")
 
 
 def _report(reduction: Reduction, labels: dict[str, Any]) -> list[Block]:

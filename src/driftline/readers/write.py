@@ -87,23 +87,6 @@ def write_hdf5(curves: Curves, path: str | os.PathLike[str], *, facts: Facts = M
                     group.create_dataset(name, data=values, track_times=False)
 
 
-def check_new(path: str | os.PathLike[str], *, force: bool = False) -> None:
-    """See that a file may be written at `path`; meant to be called before a long computation.
-
-    Raises
-    ------
-    ConfigurationError
-        If something stands there and `force` does not replace it, or there is no such folder.
-    """
-    target = Path(path)
-    if not target.parent.is_dir():
-        raise ConfigurationError(f"{target}: the file cannot be written (there is no such folder)")
-    if target.is_symlink() or (target.exists() and not target.is_file()):
-        raise ConfigurationError(f"{target}: exists and is not a file; choose another place with --out")
-    if target.exists() and not force:
-        raise ConfigurationError(f"{target}: exists; give --force to replace it or choose another with --out")
-
-
 def write_realisations(
     table: Mapping[str, npt.NDArray[Any]], labels: Mapping[str, str | float | None], path: str | os.PathLike[str],
     remark: str = "",

@@ -30,6 +30,8 @@ def check_target(file: Path, *, force: bool = False) -> None:
         raise ConfigurationError(f"{file}: the name decides the format, so let it end in .csv or .h5")
     if file.is_dir():
         raise ConfigurationError(f"{file}: is a folder; give the name of a file")
+    if not file.parent.is_dir():
+        raise ConfigurationError(f"{file}: the file cannot be written (there is no such folder)")
     if (file.exists() or file.is_symlink()) and not force:
         raise ConfigurationError(f"{file}: exists already; give --force to replace it or choose another name")
 
