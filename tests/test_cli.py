@@ -17,6 +17,7 @@ import driftline
 from driftline import analysis as analysis_module
 from driftline.cli import COMMANDS, main
 from driftline.cli import driftline as group
+from driftline.figures import style
 from driftline.progress import part
 from driftline.report import writers
 from driftline.report.summary import summary
@@ -402,6 +403,8 @@ def test_folders_of_the_parts(real, monkeypatch, capsys):
     """Each part writes its numbers, tables, figures and configuration, and prints where."""
     place, _ = real
     monkeypatch.chdir(place)
+    # drawn, but not rendered twice each: the files of figures have their own tests
+    monkeypatch.setattr(style, "save", lambda figure, path: path.write_text(type(figure).__name__))
     common = {"result.json", "summary.txt", "analysis.toml", "tables", "figures"}
     expected = {
         "crossings": (common, {"curves", "drift"}, {"crossings", "drift"}),

@@ -43,6 +43,19 @@ def time_left(fraction: float, reached_after: float, elapsed: float) -> float | 
     return max(0.0, reached_after / fraction - elapsed)
 
 
+def left_text(seconds: float | None) -> str:
+    """Time left in words; an estimate that has run out is not shown as nothing left.
+
+    Examples
+    --------
+    >>> left_text(65.2), left_text(0.0), left_text(None)
+    ('0:01:05 left', 'a little longer', '')
+    """
+    if seconds is None:
+        return ""
+    return f"{timedelta(seconds=round(seconds))} left" if seconds >= 0.5 else "a little longer"
+
+
 @contextmanager
 def terminal_progress(*, quiet: bool = False) -> Iterator[Progress | None]:
     """A function to be called with what is being done and the fraction done, 0 to 1; None without a terminal.
@@ -86,7 +99,7 @@ def _bar() -> Bar:
 
         def render(self, task: Task) -> Text:
             seconds = time_left(task.completed, task.fields.get("reached_after", 0.0), task.elapsed or 0.0)
-            return Text("" if seconds is None else f"{timedelta(seconds=round(seconds))} left")
+            return Text(left_text(seconds))
 
     colours = None if os.environ.get("NO_COLOR") else "auto"
     console = Console(stderr=True, width=columns_of(sys.stderr), color_system=colours)  # type: ignore[arg-type]
