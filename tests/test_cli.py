@@ -55,7 +55,7 @@ def prepared(monkeypatch):
 def run(*arguments, **options):
     """The installed command in a process of its own."""
     command = [*COMMAND, *map(str, arguments)]
-    return subprocess.run(command, capture_output=True, text=True, check=False, timeout=120, **options)
+    return subprocess.run(command, capture_output=True, text=True, check=False, timeout=300, **options)
 
 
 def test_help_imports_no_numerics():
