@@ -13,7 +13,7 @@ from analyses import CAUTION, OPENING, made_analysis, made_curves
 from pages import HOSTILE, draw
 
 from driftline.rates import Count, FalseAlarm
-from driftline.report.page import page
+from driftline.report.page import details, page
 from driftline.report.page.document import SCRIPTS, policy, resource
 from driftline.report.page.elements import embedded
 from driftline.report.page.limits import limits
@@ -258,6 +258,28 @@ def test_sliders_stay_inside_the_prior(text):
     # omega has a Gaussian prior of its logarithm, which has no ends but zero and infinity
     assert numbers["number-0-2"]["min"] == "0.0"
     assert "max" not in numbers["number-0-2"]
+
+
+def test_each_prior_stands_once():
+    """Parameters that several ansätze share with the same prior have one row, which counts them."""
+    table = details.priors(made_analysis(names=("power-law", "power-law:corrected", "kt")))
+    by_name = {row[0]: row for row in table.rows}
+    assert len(table.rows) == len(by_name)
+    assert by_name["W_c"][1:] == ("critical disorder", "uniform from 11.25 to 21.75", "3 of 3")
+    assert by_name["nu"][3] == "2 of 3"
+    assert by_name["omega"][3] == "1 of 3"
+    assert {"b_below", "b_above", "tau", "s"} <= set(by_name)
+
+
+def test_every_parameter_has_its_posterior():
+    """Each parameter of each ansatz, roughness and noise scale included, with its value and what limits it."""
+    analysis = made_analysis(names=("power-law:corrected",))
+    limited = replace(analysis.comparison.fits[0], prior_limited=("omega",))
+    analysis = replace(analysis, comparison=replace(analysis.comparison, fits=(limited,)))
+    rows = details.posteriors(analysis).rows
+    assert [row[1] for row in rows] == ["W_c", "nu", "omega", "tau", "s"]
+    assert rows[0][2:] == ("16.53(12)", "[16.41, 16.65]", "[16.29, 16.77]", "no")
+    assert rows[2][-1] == "yes"
 
 
 def test_what_the_result_does_not_show():

@@ -21,25 +21,30 @@ def by_evidence(analysis: Analysis) -> list[CollapseFit]:
 
 
 def priors(analysis: Analysis) -> Table:
-    """One row for each parameter of each ansatz: its prior, and what the data made of it."""
+    """One row for each prior, in the order in which the most probable forms bring them."""
+    fits = by_evidence(analysis)
+    users: dict[tuple[str, str, str], int] = {}
+    for fit in fits:
+        for each in (*fit.ansatz.parameters, *NUISANCE):
+            row = each.name, each.meaning, each.prior.describe()
+            users[row] = users.get(row, 0) + 1
+    rows = tuple((*row, f"{count} of {len(fits)}") for row, count in users.items())
+    return Table("Priors", ("parameter", "meaning", "prior", "ansätze with it"), rows)
+
+
+def posteriors(analysis: Analysis) -> Table:
+    """One row for each parameter of each ansatz: what the data made of its prior."""
     rows = tuple(row for fit in by_evidence(analysis) for row in _parameters(fit))
-    columns = ("ansatz", "parameter", "meaning", "prior", "posterior", "95 %", "set by the prior")
-    return Table("Parameters with their priors", columns, rows)
+    columns = ("ansatz", "parameter", "value", "68 %", "95 %", "set by the prior")
+    return Table("Parameters of every ansatz", columns, rows)
 
 
 def _parameters(fit: CollapseFit) -> Iterator[tuple[str, ...]]:
     for each in (*fit.ansatz.parameters, *NUISANCE):
         found = fit.parameters.get(each.name)
+        intervals = numerals.bracket(found, 68), numerals.bracket(found)
         limited = "yes" if each.name in fit.prior_limited else "no"
-        yield (
-            fit.ansatz.name,
-            each.name,
-            each.meaning,
-            each.prior.describe(),
-            numerals.short(found),
-            numerals.bracket(found),
-            limited,
-        )
+        yield (fit.ansatz.name, each.name, numerals.short(found), *intervals, limited)
 
 
 #: What the table of priors does not hold, in sentences.

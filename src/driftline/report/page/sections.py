@@ -24,7 +24,7 @@ if TYPE_CHECKING:
 #: Name and heading of each section, as the contents list them.
 HEADINGS = {
     "verdict": "Verdict", "numbers": "Headline numbers", "warnings": "Warnings", "figures": "Figures",
-    "panel-section": "Move the collapse yourself", "tables": "Tables", "priors": "Priors",
+    "panel-section": "Move the collapse yourself", "tables": "Tables", "priors": "Priors and parameters",
     "sampler": "Sampler health", "limits": "What this result does not show", "reproduce": "How to reproduce it",
     "versions": "Versions",
 }  # fmt: skip
@@ -39,7 +39,7 @@ def sections(analysis: Analysis, pictures: Path) -> dict[str, str]:
         "figures": figures(analysis, pictures),
         "panel-section": panel(analysis),
         "tables": _tables(analysis),
-        "priors": table(details.priors(analysis), "prose") + paragraph(details.PRIORS_BESIDE, "note"),
+        "priors": _priors(analysis),
         "sampler": paragraph(details.sampler_sentence(analysis)) + table(details.sampler(analysis), "prose"),
         "limits": bullets(limits(analysis)),
         "reproduce": _reproduce(analysis),
@@ -112,6 +112,11 @@ def _tables(analysis: Analysis) -> str:
     )  # fmt: skip
     sentences = rows.drift_sentences(analysis)
     return "\n".join([*(table(each) for each in found), *map(paragraph, sentences)])
+
+
+def _priors(analysis: Analysis) -> str:
+    tables = table(details.priors(analysis), "prose"), table(details.posteriors(analysis))
+    return paragraph(details.PRIORS_BESIDE, "note").join(tables)
 
 
 def _reproduce(analysis: Analysis) -> str:
