@@ -49,13 +49,23 @@ def restarted(n, rng):
     return np.concatenate([table, table[-20:]])
 
 
+def states(n, rng):
+    """Five values of each realisation one below the other, which share half of their variance."""
+    return (rng.normal(size=(n, 1, GRID.size)) + rng.normal(size=(n, 5, GRID.size))).reshape(5 * n, GRID.size)
+
+
 CASES = {
+    "VALUES_NOT_INDEPENDENT": (states, {}),
     "CORRELATION_UNDECLARED": (shared, {}),
     "REALISATIONS_REPEATED": (restarted, {}),
     "HEAVY_TAILS": (heavy, {}),
     "FEW_REALISATIONS": (shared, {"n": int(FEW * GRID.size) - 1, "labels": True}),
 }
 REMEDIED = {
+    "VALUES_NOT_INDEPENDENT": (
+        lambda n, rng: states(n, rng).reshape(n, 5, GRID.size).transpose(0, 2, 1),
+        {},
+    ),
     "CORRELATION_UNDECLARED": (shared, {"options": SampleOptions(paired=True)}),
     "REALISATIONS_REPEATED": (independent, {}),
     "HEAVY_TAILS": (heavy, {"options": SampleOptions(average="log-mean")}),
@@ -83,8 +93,8 @@ def test_sentences():
     """Numbers, sizes and remedies stand in the sentence."""
     (finding,) = raw_findings(curves(restarted))
     assert finding.sentence == (  # twenty rows at six disorders of two sizes
-        "240 values of size 8, 12 stood in the data twice and were counted once: see `inspect` for the places; check "
-        "how the runs were restarted, and that other realisations got seeds of their own."
+        "240 values of size 8, 12 stood in the data twice and were counted once: their places stand in the notes "
+        "of `inspect`; check how the runs were restarted, and that other realisations got seeds of their own."
     )
     (finding,) = raw_findings(curves(shared))
     assert "the points of size 8, 12 count as independent: give realisation labels" in finding.sentence

@@ -17,6 +17,8 @@ Sizes = Sequence[Mapping[str, Any]]
 
 #: A correlation this many standard errors from zero is no chance; for independent values, once in 16 000 sizes.
 CORRELATED = 4.0
+#: The same for values that follow one another, whose lists are longer; one-sided, once in 3 million sizes.
+SERIAL = 5.0
 #: Excess kurtosis from which tails are called heavy (3 and 6 are those of Laplace's and the exponential distribution).
 HEAVY = 10.0
 #: Relative uncertainty of an error from which heavy tails matter. Below it, 95 % intervals of means of log-normal and
@@ -63,6 +65,21 @@ def undeclared_correlation(sizes: Sizes) -> Iterator[Finding]:
         )
 
 
+def states_as_realisations(sizes: Sizes) -> Iterator[Finding]:
+    """Values that follow one another are correlated, as states of one realisation are."""
+    found = [s for s in sizes if (s["serial_z"] or 0.0) > SERIAL]
+    if found:
+        worst = max(found, key=lambda size: float(size["serial_z"]))
+        yield Finding(
+            "VALUES_NOT_INDEPENDENT",
+            f"values that follow one another in the data correlate by {worst['serial']:.2f} at size {worst['size']:g} "
+            f"({worst['serial_z']:.0f} standard errors from zero), so those of size {_names(found)} are no independent "
+            "realisations, and their errors are too small",
+            "give every value the label of its realisation, so that states of one realisation are averaged first",
+            {"correlation": worst["serial"], "standard_errors": worst["serial_z"]},
+        )
+
+
 def repeats(sizes: Sizes) -> Iterator[Finding]:
     """Values stood in the data twice."""
     found = [s for s in sizes if s["repeats"]]
@@ -72,8 +89,8 @@ def repeats(sizes: Sizes) -> Iterator[Finding]:
             "REALISATIONS_REPEATED",
             f"{total} value{'s' * (total > 1)} of size {_names(found)} stood in the data twice and {_were(total)} "
             "counted once",
-            "see `inspect` for the places; check how the runs were restarted, and that other realisations got seeds of "
-            "their own",
+            "their places stand in the notes of `inspect`; check how the runs were restarted, and that other "
+            "realisations got seeds of their own",
             {"repeats": float(total)},
         )
 
@@ -109,6 +126,7 @@ def few_realisations(sizes: Sizes) -> Iterator[Finding]:
 
 RULES: tuple[Callable[[Sizes], Iterator[Finding]], ...] = (
     undeclared_correlation,
+    states_as_realisations,
     repeats,
     heavy_tails,
     few_realisations,

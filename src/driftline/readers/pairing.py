@@ -107,16 +107,37 @@ def _matched(points: Sequence[Point]) -> IntArray | None:
     return overlap
 
 
+def following(points: Sequence[Point]) -> tuple[float | None, float | None]:
+    """Mean correlation of values with the next ones in the file, and its z; None for labelled or sorted values.
+
+    States of one realisation stand together in a file; where nothing tells them apart they count as realisations, and
+    show themselves by this.
+    """
+    pairs = []
+    for point in points:
+        step = np.diff(point.values)
+        if point.labels is None and step.min(initial=0) < 0 < step.max(initial=0):
+            pairs.append((point.values[:-1], point.values[1:]))
+    return _mean_correlation(pairs)
+
+
 def _neighbours(points: Sequence[Point], overlap: IntArray) -> tuple[float | None, float | None]:
-    """Mean correlation at neighbouring disorders and its z, from the variance 1/(n - 1) of independent values.
+    """Mean correlation at neighbouring disorders and its z."""
+    pairs = []
+    for (first, at), (second, to) in pairwise(zip(points, overlap.T, strict=True)):
+        both = (at >= 0) & (to >= 0)
+        pairs.append((first.values[at[both]], second.values[to[both]]))
+    return _mean_correlation(pairs)
+
+
+def _mean_correlation(pairs: Sequence[tuple[FloatArray, FloatArray]]) -> tuple[float | None, float | None]:
+    """Mean correlation of pairs of lists, and its z, from the variance 1/(n - 1) of independent values.
 
     That variance holds for values of any distribution, since it is that over all ways to match them (E. J. G. Pitman,
     Supplement to the Journal of the Royal Statistical Society 4, 225 (1937)).
     """
     found, freedom = [], []
-    for (first, at), (second, to) in pairwise(zip(points, overlap.T, strict=True)):
-        both = (at >= 0) & (to >= 0)
-        x, y = first.values[at[both]], second.values[to[both]]
+    for x, y in pairs:
         if x.size > 2 and np.ptp(x) > 0 and np.ptp(y) > 0:
             found.append(float(np.corrcoef(x, y)[0, 1]))
             freedom.append(x.size - 1)

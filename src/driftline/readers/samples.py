@@ -16,7 +16,7 @@ import numpy as np
 from driftline.curves import Curve, FloatArray
 from driftline.errors import InputError
 from driftline.readers.averages import Average, Estimate, chosen
-from driftline.readers.pairing import Pairing, pairing
+from driftline.readers.pairing import Pairing, following, pairing
 from driftline.readers.points import Block, Point, identical, merged
 
 __all__ = ["Block", "SampleOptions", "Sampled", "SizeDiagnostics", "sampled"]
@@ -75,6 +75,9 @@ class SizeDiagnostics:
         Largest excess kurtosis of the realisations at any disorder, and there; None where no moments are taken.
     error_doubt : float or None
         Relative standard error of the standard error at that disorder.
+    serial, serial_z : float or None
+        Mean correlation of values that follow one another in the file, and its distance from zero in standard errors;
+        None where realisations have labels, or values are sorted.
     """
 
     size: float
@@ -88,6 +91,8 @@ class SizeDiagnostics:
     kurtosis: float | None
     kurtosis_at: float | None
     error_doubt: float | None
+    serial: float | None
+    serial_z: float | None
 
 
 @dataclass(frozen=True)
@@ -186,6 +191,7 @@ def _diagnostics(size: float, points: Sequence[Point], bonds: Pairing, average: 
     ratios = [error / single for single, error in errors if single]
     tails = [(*_tail(point.values), point.disorder) for point in points] if average.moments else []
     doubt, kurtosis, at = max(tails, default=(None, None, None))
+    serial, serial_z = following(points)
     return SizeDiagnostics(
         size=size,
         points=len(points),
@@ -198,6 +204,8 @@ def _diagnostics(size: float, points: Sequence[Point], bonds: Pairing, average: 
         kurtosis=kurtosis,
         kurtosis_at=at,
         error_doubt=doubt,
+        serial=serial,
+        serial_z=serial_z,
     )
 
 
