@@ -147,6 +147,23 @@ class CollapseFit(Shown):
     held_out: HeldOut | None = None
     prior_sensitivity: tuple[PriorShift, ...] = ()
 
+    @property
+    def log_tau(self) -> float:
+        """Logarithm of the roughness at which the physical parameters were inferred; see the module's docstring."""
+        return float(TAU_PRIOR.coordinate(np.array(self.parameters["tau"].median))) + UNDERSMOOTHING
+
+    def to_arviz(self) -> Any:
+        """The posterior draws for arviz (extra ``arviz``), see `driftline.export.to_arviz`.
+
+        Raises
+        ------
+        ConfigurationError
+            If arviz is not installed.
+        """
+        from driftline.export import to_arviz
+
+        return to_arviz(self)
+
     def draws(self, name: str) -> FloatArray:
         """Posterior draws of one parameter, shape (n,)."""
         return self.samples[:, self.names.index(name)]
@@ -247,6 +264,16 @@ class Comparison(Shown):
     def shown(self) -> tuple[Table, ...]:
         """The table of the ansätze."""
         return (self.table(),)
+
+    def to_arviz(self) -> dict[str, Any]:
+        """Each fit for arviz by the name of its ansatz, as its `compare` takes them.
+
+        Raises
+        ------
+        ConfigurationError
+            If arviz is not installed.
+        """
+        return {fit.ansatz.name: fit.to_arviz() for fit in self.fits}
 
     def to_dict(self, costs: Mapping[str, Sequence[Cost]] = MappingProxyType({})) -> list[dict[str, Any]]:
         """The list ``collapse`` of `result.json`; `costs` are those of each ansatz by name, where computed."""

@@ -488,6 +488,15 @@ def fit_drift(
     ------
     ConfigurationError
         If a law is unknown or named twice.
+
+    Examples
+    --------
+    >>> from driftline.crossings import find_crossings
+    >>> from driftline.simulate import PowerLawTruth, simulate
+    >>> curves = simulate([8, 12, 16], np.linspace(2, 6, 9), PowerLawTruth(W_c=4.0), 0.003, 1)
+    >>> drift = fit_drift(find_crossings(curves, draws=200), laws=["constant", "linear"])
+    >>> [law.name for law in drift.laws], drift.laws[0].parameters["a"].contains(4.0)
+    (['constant', 'linear'], True)
     """
     chosen = _chosen(laws)
     rng = np.random.default_rng(seed)

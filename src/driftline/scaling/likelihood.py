@@ -289,6 +289,26 @@ class Posterior:
         mean = scipy.linalg.cho_solve(factor, matrix[:-1, -1])
         return mean, s2 * scipy.linalg.cho_solve(factor, np.eye(len(mean)))
 
+    def leave_one_out(self, z: FloatArray) -> FloatArray:
+        """ln p(y_i | all other y, z) of each point in the user's unit, shape (batch, points).
+
+        With S the covariance s^2 C + Phi P^-1 Phi^T of the data about their prior mean, and g = S^-1 y, the density is
+        normal with variance 1 / (S^-1)_ii and distance g_i / (S^-1)_ii (Sundararajan, Keerthi, Neural Comput. 13, 1103
+        (2001), from memory; the tests compare with the definition). These conditional densities, not those given F, are
+        what leave-one-out methods ask for where F is integrated out.
+        """
+        design = self.design(z)
+        columns = design.shape[2] - 1
+        log_tau, log_s = self._nuisance(z)
+        covariance = np.linalg.inv(self._precision(log_tau, columns))
+        phi, data = design[..., :-1], design[..., -1]
+        noise = scipy.linalg.block_diag(*(curve.noise / self.spread**2 for curve in self.curves.curves))
+        total = np.exp(2 * log_s)[:, None, None] * noise + phi @ covariance @ phi.swapaxes(1, 2)
+        precision = np.linalg.inv(total)
+        diagonal = np.diagonal(precision, axis1=1, axis2=2)
+        weighted = np.einsum("bij,bj->bi", precision, data)
+        return np.asarray(0.5 * (np.log(diagonal) - LOG_2PI - weighted**2 / diagonal) - np.log(self.spread))
+
     def predictions(self, z: FloatArray, rng: np.random.Generator) -> FloatArray:
         """One draw of the noiseless model at all points, left out or not, for each row of `z`; (batch, points)."""
         bare = self.design(z)[..., :-1]
