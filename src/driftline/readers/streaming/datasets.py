@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
+from itertools import cycle
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -17,7 +18,7 @@ from driftline.readers.streaming.text import ahead
 if TYPE_CHECKING:
     import h5py  # imported inside the functions that need it: nobody else should wait for it
 
-AT_ONCE = 2**18  # rows: what is in use fits into the cache of most processors
+AT_ONCE = 2**19  # rows: some 30 MB in all, and two threads need not wait for each other too often
 NEEDED = ("size", "disorder", "value")
 
 
@@ -58,18 +59,23 @@ class LongDatasets:
         self._at_once = -(-at_once // chunk) * chunk
 
     def rows(self) -> Iterator[Rows]:
-        """The rows in order; the next part is read in a thread of its own meanwhile.
+        """The rows in order; the next part is read in a thread of its own, into the arrays of the last but one.
 
         Raises
         ------
         InputError
             If a number cannot be used; the text names its row, counted from 1.
         """
+        # fresh arrays for each part would cost as much as reading: the system clears the memory that it hands out
+        held = [{name: np.empty(self._at_once, d.dtype) for name, d in self._datasets.items()} for _ in range(2)]
         starts = range(0, self._length, self._at_once)
-        return ahead(self._part(start, min(start + self._at_once, self._length)) for start in starts)
+        ends = (min(start + self._at_once, self._length) for start in starts)
+        return ahead(self._part(*part) for part in zip(cycle(held), starts, ends))
 
-    def _part(self, start: int, end: int) -> Rows:
-        found = {name: dataset[start:end] for name, dataset in self._datasets.items()}
+    def _part(self, held: dict[str, npt.NDArray[Any]], start: int, end: int) -> Rows:
+        found = {name: array[: end - start] for name, array in held.items()}
+        for name, dataset in self._datasets.items():
+            dataset.read_direct(found[name], np.s_[start:end])
         numbers = {name: found[name].astype(np.float64, copy=False) for name in NEEDED}
         rows = Rows(**numbers, realisation=self._labels(found.get("realisation"), start), fraction=end / self._length)
         if not sound(rows):

@@ -139,21 +139,27 @@ class PointGatherer:
 
     def _entries(self, rows: Rows, point: IntArray, found: Runs) -> Entries:
         if not self._averaged or rows.realisation is None:
-            entries = {"point": np.repeat(point, found.length), "total": rows.value}
-            return entries if rows.realisation is None else {**entries, "realisation": rows.realisation}
-        of_run = point if point.size == 1 else point[np.searchsorted(found.point, found.first, side="right") - 1]
-        of_run = np.broadcast_to(of_run, found.first.shape)
+            # copies: the source may use its arrays again
+            entries = {"point": np.repeat(point, found.length), "total": rows.value.copy()}
+            return entries if rows.realisation is None else {**entries, "realisation": rows.realisation.copy()}
+        if point.size == 1:
+            of_run = np.full(found.first.size, point[0])
+        else:
+            of_run = point[np.searchsorted(found.point, found.first, side="right") - 1]
         label = rows.realisation[found.first]
         self._count_runs(of_run, label)
         count = np.diff(found.first, append=rows.value.size)
         return {"point": of_run, "total": found.total, "realisation": label, "count": count}
 
     def _count_runs(self, point: IntArray, label: IntArray) -> None:
-        seen = np.bincount(point, minlength=self._grid.count)
+        self._seen = _grown(self._seen, self._grid.count)
+        if point[0] == point[-1] and (point == point[0]).all():
+            self._seen[point[0]] += point.size
+        else:
+            self._seen += np.bincount(point, minlength=self._seen.size)
         if self._last == (point[0], label[0]):  # the run of the rows before goes on
-            seen[point[0]] -= 1
-        seen[: self._seen.size] += self._seen
-        self._seen, self._last = seen, (int(point[-1]), int(label[-1]))
+            self._seen[point[0]] -= 1
+        self._last = int(point[-1]), int(label[-1])
 
     def _values(self, found: Entries, number: int, size: float, disorder: float) -> PointValues:
         label = found.get("realisation")
@@ -280,7 +286,12 @@ class _Spread:
         self._rows, self._mean, self._squares = np.zeros(0), np.zeros(0), np.zeros(0)
 
     def add(self, point: IntArray, found: Runs) -> None:
-        self._join(*_by_point(point, found.length, found.mean, found.squares))
+        size = int(point.max()) + 1
+        self._rows, self._mean, self._squares = (_grown(a, size) for a in (self._rows, self._mean, self._squares))
+        if point.size == 1:
+            self._join(point, found.length, found.mean, found.squares)
+        else:
+            self._join(slice(None), *_by_point(point, found, self._rows.size))
 
     @property
     def total(self) -> int:
@@ -290,16 +301,13 @@ class _Spread:
         rows = int(self._rows[number])
         return rows, float(np.sqrt(self._squares[number] / (rows - 1))) if rows > 1 else 0.0
 
-    def _join(self, rows: FloatArray, mean: FloatArray, squares: FloatArray) -> None:
-        if rows.size < self._rows.size:
-            rows, mean, squares = (np.pad(array, (0, self._rows.size - array.size)) for array in (rows, mean, squares))
-        old = (np.pad(array, (0, rows.size - array.size)) for array in (self._rows, self._mean, self._squares))
-        old_rows, old_mean, old_squares = old
-        every = np.maximum(old_rows + rows, 1)
-        shift = mean - old_mean
-        self._rows = old_rows + rows
-        self._mean = old_mean + shift * rows / every
-        self._squares = old_squares + squares + shift**2 * (old_rows * rows / every)
+    def _join(self, where: IntArray | slice, rows: Any, mean: FloatArray, squares: FloatArray) -> None:
+        before = np.array(self._rows[where])  # a copy: a slice would change with the next line but two
+        every = np.maximum(before + rows, 1)
+        shift = mean - self._mean[where]
+        self._rows[where] += rows
+        self._mean[where] += shift * rows / every
+        self._squares[where] += squares + shift**2 * (before * rows / every)
 
 
 class _Shelf:
@@ -370,14 +378,17 @@ def _at(entries: Entries, number: int) -> Entries:
     return {name: array[first:end] for name, array in entries.items()}
 
 
-def _by_point(
-    points: IntArray, length: IntArray, mean: FloatArray, squares: FloatArray
-) -> tuple[FloatArray, FloatArray, FloatArray]:
-    """Number, mean and squared deviations of runs joined to those of points."""
-    rows = np.bincount(points, length).astype(np.float64)
-    joint = np.bincount(points, length * mean) / np.maximum(rows, 1)
-    inside = np.bincount(points, squares + length * (mean - joint[points]) ** 2)
+def _by_point(point: IntArray, found: Runs, points: int) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """Number, mean and squared deviations of runs joined to those of so many points."""
+    rows = np.bincount(point, found.length, points).astype(np.float64)
+    joint = np.bincount(point, found.length * found.mean, points) / np.maximum(rows, 1)
+    inside = np.bincount(point, found.squares + found.length * (found.mean - joint[point]) ** 2, points)
     return rows, joint, inside.astype(np.float64)
+
+
+def _grown(array: npt.NDArray[Any], size: int) -> npt.NDArray[Any]:
+    """The array, with room for at least `size` elements; new ones are zero."""
+    return array if array.size >= size else np.pad(array, (0, max(size, 2 * array.size) - array.size))
 
 
 def _length(parts: Sequence[Entries]) -> int:
