@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Iterable
 from dataclasses import dataclass
 from decimal import ROUND_HALF_EVEN, Decimal
 
@@ -138,6 +139,28 @@ def short(interval: Interval | None) -> str:
 def median(interval: Interval | None) -> str:
     """Median alone, to the digits its interval carries."""
     return MISSING if interval is None else rounded(interval.median, interval.sd)
+
+
+def sizes(values: Iterable[float]) -> list[str]:
+    """Sizes with as few digits as tell them apart: whole numbers as they are, others from three digits on.
+
+    Examples
+    --------
+    >>> sizes([8, 12.0]), sizes([4.852030263919617, 5.545177444479562]), sizes([10.12, 10.14])
+    (['8', '12'], ['4.85', '5.55'], ['10.12', '10.14'])
+    """
+    numbers = [float(value) for value in values]
+    for digits in range(3, 18):
+        texts = [_size(value, digits) for value in numbers]
+        if len(set(texts)) == len(set(numbers)):
+            break
+    return texts
+
+
+def _size(value: float, digits: int) -> str:
+    whole = value == round(value) and abs(value) < 1e6
+    # no exponent where the digits before the point alone are more than asked for
+    return f"{value:.0f}" if whole else f"{value:.{max(digits, min(exponent(value) + 1, 6))}g}"
 
 
 def significant(value: float | None, digits: int = 3) -> str:

@@ -12,6 +12,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from driftline.errors import ConfigurationError, InputError, suggestion
+from driftline.figure_options import FigureOptions
 from driftline.reading import InputOptions
 from driftline.scaling.defaults import DEFAULT_ANSATZE
 from driftline.wording import brief, shown
@@ -55,6 +56,8 @@ class Settings:
     input : InputOptions
         How the data file is read, as `driftline.read` takes it; `driftline.analyse` puts in its place what the curves
         say about their own reading.
+    figure : FigureOptions
+        How figures are drawn; a mapping of its fields, as in a TOML file, is understood as well.
 
     Raises
     ------
@@ -77,6 +80,7 @@ class Settings:
     draws: int = 2000
     forms: tuple[ExpressionForm, ...] = ()
     input: InputOptions = field(default_factory=InputOptions)
+    figure: FigureOptions = field(default_factory=FigureOptions)
 
     def __post_init__(self) -> None:
         for name, check in _CHECKS.items():
@@ -96,7 +100,7 @@ class Settings:
         ----------
         file : path, optional
             TOML file with any of the fields of `Settings` as keys; the labels as a table ``[labels]``, the reading as a
-            table ``[input]``, each form of the user's own as a table ``[ansatz.NAME]``.
+            table ``[input]``, figures as ``[figure]``, each form of the user's own as a table ``[ansatz.NAME]``.
         options : mapping, optional
             Fields by name; those that are None count as not given.
         defaults : mapping, optional
@@ -135,7 +139,7 @@ class Settings:
         from driftline.plain import attributes  # numpy comes with them, so only where they are needed
         from driftline.scaling.tables import form_table
 
-        names = (part.name for part in fields(self) if part.name not in ("seed", "jobs", "forms", "input"))
+        names = (part.name for part in fields(self) if part.name not in ("seed", "jobs", "forms", "input", "figure"))
         forms = {form.name: form_table(form) for form in self.forms}
         return {**attributes(self, *names), "forms": forms, "input": self.input.to_dict()}
 
@@ -174,9 +178,16 @@ def _read_toml(path: Path) -> dict[str, Any]:
     for key, value in content.items():
         if key not in known:
             raise ConfigurationError(f"{path}: unknown key {shown(key)}; {suggestion(key, known)}")
-        chosen[known[key]] = _CHECKS[known[key]](value, f"{path}, {key}")
+        chosen[known[key]] = _CHECKS[known[key]](_beside(value, key, path), f"{path}, {key}")
     _check_ansatz_names(chosen.get("ansatze", ()), chosen.get("forms", ()), f"{path}, ansatze")
     return chosen
+
+
+def _beside(value: Any, key: str, path: Path) -> Any:
+    """A style file named in a TOML file is sought beside it."""
+    if key == "figure" and isinstance(value, dict) and isinstance(style := value.get("style"), str) and style:
+        return {**value, "style": str(path.parent / style)}
+    return value
 
 
 def _number(value: Any, where: str) -> float:
@@ -299,4 +310,5 @@ _CHECKS: dict[str, Callable[[Any, str], Any]] = {
     "draws": lambda value, where: _whole(value, where, least=MIN_DRAWS, most=MAX_DRAWS),
     "forms": _forms,
     "input": InputOptions.of_table,
+    "figure": FigureOptions.of_table,
 }

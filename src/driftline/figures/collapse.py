@@ -9,15 +9,15 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
 from driftline import numerals
-from driftline.figures import style
+from driftline.curves import FloatArray
+from driftline.figures import labels, style
 from driftline.figures.base import Drawing
+from driftline.figures.finish import finish
+from driftline.figures.legends import Entries, legend_above
 
 if TYPE_CHECKING:
     from driftline.analysis import Analysis
     from driftline.collapse import CollapseFit
-
-
-LONGEST_SYMBOL = 30  # characters of mathtext
 
 
 def draw_collapse(fit: CollapseFit, *, ax: tuple[Axes, Axes] | None = None) -> tuple[Axes, Axes]:
@@ -49,7 +49,7 @@ def draw_collapse(fit: CollapseFit, *, ax: tuple[Axes, Axes] | None = None) -> t
         lower.set_ylabel("residual")
         upper.tick_params(labelbottom=False)
         if own:
-            style.finish(style.figure_of(upper))
+            finish(style.figure_of(upper))
     return upper, lower
 
 
@@ -57,7 +57,6 @@ class CollapseDrawing(Drawing):
     """`figures/collapse`: the collapse that the headline rests on, or else the most probable one."""
 
     name = "collapse"
-    width = style.SINGLE
 
     def caption(self, analysis: Analysis) -> str:
         """What is to be seen."""
@@ -87,7 +86,7 @@ def headline_fit(analysis: Analysis) -> CollapseFit:
 def _function(upper: Axes, fit: CollapseFit) -> None:
     x, mean, sd = fit.function_x, fit.function_mean, fit.function_sd
     upper.fill_between(x, mean - sd, mean + sd, color=style.FAINT, alpha=0.5, linewidth=0, zorder=1)
-    upper.plot(x, mean, color=style.SOFT, linewidth=0.9, zorder=2)
+    upper.plot(x, mean, color=style.SOFT, linewidth=style.line(0.9), zorder=2)
 
 
 def _points(upper: Axes, lower: Axes, fit: CollapseFit) -> None:
@@ -99,33 +98,36 @@ def _points(upper: Axes, lower: Axes, fit: CollapseFit) -> None:
         mine = points.size == size
         kind = style.point_style(look, marker)
         handles.append(upper.errorbar(points.x[mine], points.y[mine], points.error[mine], zorder=3, **kind))
-        lower.plot(
-            points.x[mine], points.residual[mine],
-            **{name: kind[name] for name in kind if name not in ("elinewidth", "capsize", "capthick", "markersize")},
-            markersize=2.8, zorder=3,
-        )  # fmt: skip
-    for level, width in ((0.0, 0.8), (-2.0, 0.5), (2.0, 0.5)):
-        lower.axhline(level, color=style.FAINT, linewidth=width, linestyle="-" if level == 0 else (0, (3, 2)), zorder=1)
-    style.legend_above(upper, style.Entries(handles, [f"{size:g}" for size in sizes], "$L$ ="))
+        lower.plot(points.x[mine], points.residual[mine], zorder=3, **style.marker_style(look, 2.8))
+    guides(lower)
+    legend_above(upper, Entries(handles, labels.sizes(sizes), "$L$ ="))
+
+
+def guides(axes: Axes) -> None:
+    """Lines at zero and at two standard errors in a panel of residuals."""
+    for level, width, dashes in ((0.0, 0.8, "-"), (-2.0, 0.5, (0, (3, 2))), (2.0, 0.5, (0, (3, 2)))):
+        axes.axhline(level, color=style.FAINT, linewidth=style.line(width), linestyle=dashes, zorder=1)
+
+
+def residual_limits(axes: Axes, residual: FloatArray) -> None:
+    """A symmetric ordinate that holds every residual."""
+    reach = 1.15 * max(2.5, float(np.max(np.abs(residual))))
+    axes.set_ylim(-reach, reach)
 
 
 def _limits(upper: Axes, lower: Axes, fit: CollapseFit) -> None:
     points = fit.points
     style.pad_limits(upper.set_xlim, *style.spread(points.x), share=0.05)
     style.pad_limits(upper.set_ylim, *style.spread(points.y, points.error), share=0.06)
-    reach = 1.15 * max(2.5, float(np.max(np.abs(points.residual))))
-    lower.set_ylim(-reach, reach)
+    residual_limits(lower, points.residual)
 
 
 def _ordinate(fit: CollapseFit) -> str:
     """The observable, marked as corrected where the correction term has been taken off the points."""
-    label = style.observable_label(fit.curves.labels)
+    label = labels.observable_label(fit.curves.labels)
     return f"{label} (corrected)" if "omega" in fit.parameters else label
 
 
 def _abscissa(fit: CollapseFit) -> str:
     """The scaled variable in the disorder's own symbol, where that can be typeset and is short enough."""
-    symbol = style.math(fit.curves.labels.disorder_symbol)
-    if not symbol.startswith("$") or len(symbol) > LONGEST_SYMBOL:
-        return "scaled disorder $x$"
-    return style.math(fit.ansatz.form.label.format(W=f"{{{symbol[1:-1]}}}"))  # braces: the symbol may have an index
+    return labels.with_disorder(fit.ansatz.form.label, fit.curves.labels) or "scaled disorder $x$"

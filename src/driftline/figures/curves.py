@@ -1,4 +1,4 @@
-"""The measured curves of all sizes with their smoother and the crossings of adjacent sizes."""
+"""The measured curves of all sizes with their smoother, and the crossings of adjacent sizes, enlarged in an inset."""
 
 from __future__ import annotations
 
@@ -8,9 +8,13 @@ import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
-from driftline.curves import Curves
-from driftline.figures import style
+from driftline.curves import Curves, FloatArray
+from driftline.figures import labels, style
 from driftline.figures.base import Drawing
+from driftline.figures.finish import finish
+from driftline.figures.inset import Inset, place_inset
+from driftline.figures.keys import label_ends
+from driftline.figures.legends import Entries, legend_above
 
 if TYPE_CHECKING:
     from driftline.analysis import Analysis
@@ -18,17 +22,20 @@ if TYPE_CHECKING:
 
 RESOLVED = 0.95  # from this probability of separation on a crossing is drawn filled
 LIKELY = 0.5  # crossings less probable than this are not drawn
+ENLARGED = 0.4  # an inset that would have to show more than this part of the range enlarges nothing
+LEAST_SHOWN = 1 / 40  # part of the range that the inset shows beside the outermost crossings, so that points are in it
 
 
 def draw_curves(curves: Curves, crossings: Crossings | None = None, *, ax: Axes | None = None) -> Axes:
-    """Draw observable against disorder, one colour and marker for each size.
+    """Draw observable against disorder, one colour and marker for each size, the size written beside its curve.
 
     Parameters
     ----------
     curves : Curves
     crossings : Crossings, optional
         Adds the smoother of each size with its 68 % band, and the crossings of adjacent sizes that are more likely
-        than not: filled where the curves are separated on both sides with probability 0.95 or more, else hollow.
+        than not: filled where the curves are separated on both sides with probability 0.95 or more, else hollow. An
+        inset enlarges their neighbourhood, unless that is most of the range.
     ax : matplotlib axes, optional
         Where to draw; by default a new figure of single-column width.
 
@@ -40,16 +47,19 @@ def draw_curves(curves: Curves, crossings: Crossings | None = None, *, ax: Axes 
     with style.house_style():
         own = ax is None
         axes = style.new_figure(style.SINGLE, 2.9).subplots() if ax is None else ax
-        sizes, marks = _points(axes, curves), style.Entries([], [])
-        if crossings is not None:
-            _smoothers(axes, curves, crossings)
-            marks = _marks(axes, [each for each in crossings.adjacent if shown(each)])
+        found = [each for each in crossings.adjacent if shown(each)] if crossings is not None else []
         _limits(axes, curves)
-        axes.set_xlabel(style.disorder_label(curves.labels))
-        axes.set_ylabel(style.observable_label(curves.labels))
-        style.legend_above(axes, sizes, marks)
+        marks = _content(axes, curves, crossings, found)
+        window = _inset_window(curves, found)
+        if crossings is not None and window is not None:
+            _inset(axes, curves, crossings, found, window)
+        axes.set_xlabel(labels.disorder_label(curves.labels))
+        axes.set_ylabel(labels.observable_label(curves.labels))
+        ends = [_end(curve.size, (curve.disorder[-1], curve.mean[-1]), crossings) for curve in curves.curves]
+        label_ends(axes, ends, style.size_looks(curves.sizes), labels.sizes(curves.sizes), "$L$")
+        legend_above(axes, marks)
         if own:
-            style.finish(style.figure_of(axes))
+            finish(style.figure_of(axes))
     return axes
 
 
@@ -57,7 +67,6 @@ class CurvesDrawing(Drawing):
     """`figures/curves`."""
 
     name = "curves"
-    width = style.SINGLE
 
     def caption(self, analysis: Analysis) -> str:
         """What is to be seen."""
@@ -79,56 +88,114 @@ def shown(crossing: Crossing) -> bool:
     return crossing.disorder is not None and crossing.value is not None and crossing.probability >= LIKELY
 
 
-def _points(axes: Axes, curves: Curves) -> style.Entries:
+def _content(axes: Axes, curves: Curves, crossings: Crossings | None, found: list[Crossing]) -> Entries:
+    """Points, smoothers and crossings; legend entries of the last."""
     _, _, mean, error = curves.flat()
-    marker = style.marker_size(error, *style.spread(mean, error), height=2.1)
-    handles = [
+    (low, high), height = axes.get_ylim(), axes.get_window_extent().height / style.figure_of(axes).dpi
+    marker = style.marker_size(error, low, high, height)
+    for curve, look in zip(curves.curves, style.size_looks(curves.sizes), strict=True):
         axes.errorbar(curve.disorder, curve.mean, curve.error, zorder=3, **style.point_style(look, marker))
-        for curve, look in zip(curves.curves, style.size_looks(curves.sizes), strict=True)
-    ]
-    return style.Entries(handles, [f"{size:g}" for size in curves.sizes], "$L$ =")
+    if crossings is None:
+        return Entries([], [])
+    _smoothers(axes, curves, crossings)
+    return _marks(axes, found)
 
 
 def _smoothers(axes: Axes, curves: Curves, crossings: Crossings) -> None:
     looks = dict(zip(curves.sizes.tolist(), style.size_looks(curves.sizes), strict=True))
     for smooth in crossings.smooth:
         colour = looks[float(smooth.size)].colour
-        axes.plot(smooth.grid, smooth.mean, color=colour, linewidth=0.8, zorder=2)
-        axes.fill_between(
-            smooth.grid,
-            smooth.mean - smooth.sd,
-            smooth.mean + smooth.sd,
-            color=colour,
-            alpha=0.25,
-            linewidth=0,
-            zorder=1,
-        )
+        axes.plot(smooth.grid, smooth.mean, color=colour, linewidth=style.line(0.8), zorder=2)
+        low, high = smooth.mean - smooth.sd, smooth.mean + smooth.sd
+        axes.fill_between(smooth.grid, low, high, color=colour, alpha=0.25, linewidth=0, zorder=1)
 
 
-def _marks(axes: Axes, crossings: list[Crossing]) -> style.Entries:
+def _marks(axes: Axes, crossings: list[Crossing]) -> Entries:
     handles: list[Any] = []
     texts: list[str] = []
     for resolved, text in ((True, "crossing"), (False, "crossing, not separated")):
         chosen = [each for each in crossings if (each.separated >= RESOLVED) == resolved]
         if not chosen:
             continue
-        places = [(each.disorder, each.value) for each in chosen]
-        x, y = (np.array([pair[part].median for pair in places]) for part in (0, 1))  # type: ignore[union-attr]
-        x_bars, y_bars = (
-            np.abs([[pair[part].median - pair[part].low68, pair[part].high68 - pair[part].median] for pair in places]).T  # type: ignore[union-attr]
-            for part in (0, 1)
-        )
+        x, y = (_medians_and_bars(chosen, name) for name in ("disorder", "value"))
         mark = axes.errorbar(
-            x, y, yerr=y_bars, xerr=x_bars, linestyle="none", marker="o", markersize=3.8, color=style.INK,
-            markerfacecolor="#f5c542" if resolved else "white", markeredgecolor=style.INK, markeredgewidth=0.8,
-            elinewidth=0.9, capsize=1.8, capthick=0.9, zorder=5,
+            x[0], y[0], yerr=y[1], xerr=x[1], linestyle="none", marker="o", markersize=3.8, color=style.INK,
+            markerfacecolor=style.HIGHLIGHT if resolved else "white", markeredgecolor=style.INK,
+            markeredgewidth=style.line(0.8), elinewidth=style.line(0.9), capsize=1.8, capthick=style.line(0.9),
+            zorder=5,
         )  # fmt: skip
         handles.append(mark)
         texts.append(text)
-    return style.Entries(handles, texts)
+    return Entries(handles, texts)
+
+
+def _medians_and_bars(crossings: list[Crossing], name: str) -> tuple[FloatArray, FloatArray]:
+    """Medians, shape (n,), and lengths of the 68 % bars, shape (2, n), of one coordinate of the crossings."""
+    intervals = [getattr(each, name) for each in crossings]
+    medians = np.array([each.median for each in intervals])
+    bars = np.array([[each.median - each.low68, each.high68 - each.median] for each in intervals]).T
+    return medians, np.abs(bars)
 
 
 def _limits(axes: Axes, curves: Curves) -> None:
     _, disorder, mean, error = curves.flat()
     style.pad_limits(axes.set_xlim, *style.spread(disorder), share=0.04)
     style.pad_limits(axes.set_ylim, *style.spread(mean, error), share=0.06)
+
+
+def _end(size: float, last: tuple[float, float], crossings: Crossings | None) -> tuple[float, float]:
+    """Where the curve of a size ends: its smoother if there is one, else its last point."""
+    for smooth in crossings.smooth if crossings is not None else ():
+        if smooth.size == size:
+            return float(smooth.grid[-1]), float(smooth.mean[-1])
+    return last
+
+
+def _inset_window(curves: Curves, crossings: list[Crossing]) -> tuple[float, float] | None:
+    """Disorders that the inset shows: all crossings, with as much of their intervals as there is room for.
+
+    None where there is nothing to enlarge.
+    """
+    if not crossings:
+        return None
+    (low, high), width = curves.disorder_range, float(np.ptp(curves.disorder_range))
+    medians, bars = _medians_and_bars(crossings, "disorder")
+    least = float(np.ptp(medians)) / 2 + LEAST_SHOWN * width
+    if 2 * least > ENLARGED * width:
+        return None
+    whole = 1.3 * float(np.max(medians + bars[1]) - np.min(medians - bars[0])) / 2
+    half = min(max(least, whole), ENLARGED * width / 2)
+    centre = float(np.clip((medians.min() + medians.max()) / 2, low + half, high - half))
+    return centre - half, centre + half
+
+
+def _inset(
+    axes: Axes, curves: Curves, crossings: Crossings, found: list[Crossing], window: tuple[float, float]
+) -> None:
+    """Enlarge the crossings in that corner that needs the least room made for it."""
+    x, low, high = _occupied(curves, crossings)
+    inset = place_inset(axes, x, low, high, Inset())
+    inset.set_xlim(*window)
+    inside = [(curve.disorder >= window[0]) & (curve.disorder <= window[1]) for curve in curves.curves]
+    pairs = list(zip(curves.curves, inside, strict=True))
+    ends = [(curve.mean + sign * curve.error)[mask] for curve, mask in pairs for sign in (-1, 1)]
+    for smooth in crossings.smooth:
+        mask = (smooth.grid >= window[0]) & (smooth.grid <= window[1])
+        ends += [(smooth.mean + sign * smooth.sd)[mask] for sign in (-1, 1)]
+    ends += [np.array([each.value.low68, each.value.high68]) for each in found if each.value]
+    every = np.concatenate(ends)
+    style.pad_limits(inset.set_ylim, float(every.min()), float(every.max()), share=0.08)
+    _content(inset, curves, crossings, found)
+    axes.indicate_inset(
+        (window[0], inset.get_ylim()[0], window[1] - window[0], np.ptp(inset.get_ylim())),
+        edgecolor=style.FAINT, linewidth=style.line(0.6), alpha=1.0, zorder=0.5,
+    )  # fmt: skip
+
+
+def _occupied(curves: Curves, crossings: Crossings) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """Abscissae of everything drawn, with its lower and upper ends, each of shape (n,)."""
+    _, disorder, mean, error = curves.flat()
+    parts = [(disorder, mean - error, mean + error)]
+    parts += [(each.grid, each.mean - each.sd, each.mean + each.sd) for each in crossings.smooth]
+    x, low, high = (np.concatenate(column) for column in zip(*parts, strict=True))
+    return x, low, high

@@ -10,15 +10,20 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
 from driftline.curves import FloatArray, Labels
+from driftline.figures import labels as texts_of
 from driftline.figures import style
 from driftline.figures.base import Drawing
+from driftline.figures.finish import finish
+from driftline.figures.legends import Entries, legend_above, legend_across
 from driftline.numerals import probability
 
 if TYPE_CHECKING:
     from driftline.analysis import Analysis
     from driftline.drift import Drift, LawFit
+    from driftline.inference.intervals import Interval
 
 MOST_LAWS = 2  # of each family
+ARROW = 0.12  # length of the arrow at a bound, as a share of the ordinate
 BEYOND = 1.6  # the panel against L goes on to this many times the largest size
 
 
@@ -41,21 +46,32 @@ def draw_drift(drift: Drift, labels: Labels | None = None, *, ax: tuple[Axes, Ax
     labels = labels or Labels()
     with style.house_style():
         own = ax is None
-        left, right = style.new_figure(style.DOUBLE, 2.7).subplots(1, 2, sharey=True) if ax is None else ax
+        left, right = _panels() if ax is None else ax
         _limits(left, right, drift)
-        handles, texts = _laws(left, right, drift)
+        groups = _laws(left, right, drift)
         _points(left, right, drift)
         left.set_xlabel("$1/L$")
         right.set_xlabel("$L$")
-        left.set_ylabel(style.disorder_label(labels))
+        left.set_ylabel(texts_of.disorder_label(labels))
+        if own and style.is_narrow(style.figure_of(left)):
+            right.set_ylabel(texts_of.disorder_label(labels))
         if drift.note:
             _note(left, drift)
-        half = len(handles) if len(handles) < 3 else -(-len(handles) // 2)
-        style.legend_above(left, style.Entries(handles[:half], texts[:half]))
-        style.legend_above(right, style.Entries(handles[half:], texts[half:]))
+        if own:
+            legend_across(style.figure_of(left), *groups)
+        else:
+            for axes, group in zip((left, right), groups, strict=False):
+                legend_above(axes, group)
         if own:
             wide = len(drift.sizes) > 0 and float(np.ptp(right.get_xlim())) > 4
-            style.finish(style.figure_of(left), whole=(right.xaxis,) if wide else ())
+            finish(style.figure_of(left), whole=(right.xaxis,) if wide else ())
+    return left, right
+
+
+def _panels() -> tuple[Axes, Axes]:
+    figure = style.new_figure(style.DOUBLE, 2.7, narrow=4.6)
+    shape = (2, 1) if style.is_narrow(figure) else (1, 2)
+    left, right = figure.subplots(*shape, sharey=True)
     return left, right
 
 
@@ -65,12 +81,17 @@ class DriftDrawing(Drawing):
     name = "drift"
     width = style.DOUBLE
 
+    def applies(self, analysis: Analysis) -> bool:
+        """Whether there is a point at all; why there is none is said in the text."""
+        return len(analysis.drift.sizes) > 0
+
     def caption(self, analysis: Analysis) -> str:
         """What is to be seen."""
         return (
             f"Disorder of the {analysis.drift.source} against inverse size and size, with one standard deviation; "
             "lines and bands: the two most probable laws with a limit and without, with their 68 % bands and posterior "
-            "probabilities; at 1/L = 0 the limits of the former with 68 % intervals."
+            "probabilities; at 1/L = 0 the limits of the former with 68 % intervals, or an arrow from the 97.5 % bound "
+            "where only one side is constrained."
         )
 
     def draw(self, analysis: Analysis) -> Figure:
@@ -93,27 +114,27 @@ def _points(left: Axes, right: Axes, drift: Drift) -> None:
     if not len(drift.sizes):
         return
     look: dict[str, Any] = {
-        "linestyle": "none", "marker": "o", "markersize": 4.0, "color": style.INK, "elinewidth": 0.9, "capsize": 2.0,
-        "zorder": 5,
+        "linestyle": "none", "marker": "o", "markersize": 4.0, "color": style.INK, "elinewidth": style.line(0.9),
+        "capsize": 2.0, "zorder": 5,
     }  # fmt: skip
     sd = _sd(drift)
     left.errorbar(1 / drift.sizes, drift.positions, sd, **look)
     right.errorbar(drift.sizes, drift.positions, sd, **look)
 
 
-def _laws(left: Axes, right: Axes, drift: Drift) -> tuple[list[Any], list[str]]:
-    handles, texts = [], []
+def _laws(left: Axes, right: Axes, drift: Drift) -> list[Entries]:
+    """Draw laws and limits; legend entries of the laws with a limit, and of those without."""
+    entries: dict[bool, list[tuple[Any, str]]] = {True: [], False: []}
     for number, law in enumerate(shown_laws(drift)):
-        colour, dashes = style.PALETTE[number % len(style.PALETTE)], style.DASHES[number % len(style.DASHES)]
+        colour, dashes = style.colour(number), style.DASHES[number % len(style.DASHES)]
         for axes, inverse in ((left, True), (right, False)):
             x, sizes = _grid(axes, inverse)
             middle, low, high = law.predict(sizes)
             (line,) = axes.plot(x, middle, color=colour, linestyle=dashes, zorder=3)
             axes.fill_between(x, low, high, color=colour, alpha=0.16, linewidth=0, zorder=1)
-        handles.append(line)
-        texts.append(f"P({law.name}) = {probability(law.probability)}")
+        entries[law.bounded].append((line, f"{law.name} {probability(law.probability)}"))
     _asymptotes(left, drift)
-    return handles, texts
+    return [Entries(*zip(*family, strict=True)) for family in entries.values() if family]
 
 
 def _grid(axes: Axes, inverse: bool) -> tuple[FloatArray, FloatArray]:
@@ -126,16 +147,31 @@ def _grid(axes: Axes, inverse: bool) -> tuple[FloatArray, FloatArray]:
 def _asymptotes(left: Axes, drift: Drift) -> None:
     """The limits of the bounded laws side by side in the strip left of 1/L = 0, each in the colour of its law."""
     low, _ = left.get_xlim()
-    bounded = [(number, law.limit) for number, law in enumerate(shown_laws(drift)) if law.limit is not None]
+    bounded = [(number, law) for number, law in enumerate(shown_laws(drift)) if law.limit is not None]
     if len(drift.sizes):
-        left.axvline(0.0, color=style.FAINT, linewidth=0.6, zorder=1)
-    for order, (number, limit) in enumerate(bounded, start=1):
-        colour = style.PALETTE[number % len(style.PALETTE)]
-        bars = np.abs([[limit.median - limit.low68], [limit.high68 - limit.median]])
-        left.errorbar(
-            [low * order / (len(bounded) + 1)], [limit.median], bars, marker="D", markersize=3.0, color=colour,
-            markerfacecolor="white", markeredgecolor=colour, elinewidth=0.9, capsize=1.4, zorder=4,
-        )  # fmt: skip
+        left.axvline(0.0, color=style.FAINT, linewidth=style.line(0.6), zorder=1)
+    for order, (number, law) in enumerate(bounded, start=1):
+        kind = {
+            "marker": "D", "markersize": 3.0, "color": style.colour(number), "markerfacecolor": "white",
+            "markeredgecolor": style.colour(number), "elinewidth": style.line(0.9), "zorder": 4,
+        }  # fmt: skip
+        _limit(left, low * order / (len(bounded) + 1), law, kind)
+
+
+def _limit(left: Axes, x: float, law: LawFit, kind: dict[str, Any]) -> None:
+    """A limit with its interval; an arrow from a bound, or from the frame towards a limit that lies beyond it."""
+    limit, side = law.limit, law.one_sided
+    assert limit is not None  # callers have checked
+    bottom, top = left.get_ylim()
+    arrow, inset = ARROW * (top - bottom), 0.02 * (top - bottom)
+    if side is None and bottom < limit.median < top:
+        bars = [[limit.median - max(limit.low68, bottom)], [min(limit.high68, top) - limit.median]]
+        left.errorbar([x], [limit.median], bars, capsize=1.4, **kind)
+        return
+    upwards = side == "above" if side else limit.median >= top
+    bound = (limit.low95 if upwards else limit.high95) if side else limit.median
+    start = float(np.clip(bound, bottom + inset + (0.0 if upwards else arrow), top - inset - (arrow if upwards else 0)))
+    left.errorbar([x], [start], [[arrow]] * 2, lolims=upwards, uplims=not upwards, capsize=2.0, **kind)
 
 
 def _limits(left: Axes, right: Axes, drift: Drift) -> None:
@@ -152,17 +188,25 @@ def _limits(left: Axes, right: Axes, drift: Drift) -> None:
         return
     bottom, top = style.spread(drift.positions, _sd(drift))
     reach = 1.2 * max(top - bottom, 1e-9 * abs(top))  # a limit far away must not flatten the points
+    lowest, highest = bottom, top
     for law in shown_laws(drift):
         if law.limit is not None:
-            bottom = min(bottom, max(law.limit.low68, bottom - reach))
-            top = max(top, min(law.limit.high68, top + reach))
+            ends = _shown_ends(law, law.limit)
+            lowest, highest = min(lowest, *ends), max(highest, *ends)
+    bottom, top = max(lowest, bottom - reach), min(highest, top + reach)
     style.pad_limits(left.set_ylim, bottom, top, share=0.08)
+
+
+def _shown_ends(law: LawFit, limit: Interval) -> tuple[float, float]:
+    if law.one_sided == "above":
+        return limit.low95, limit.low95
+    return (limit.high95, limit.high95) if law.one_sided == "below" else (limit.low68, limit.high68)
 
 
 def _note(axes: Axes, drift: Drift) -> None:
     axes.text(
-        0.5, 0.96, textwrap.fill(drift.note, 46), transform=axes.transAxes, ha="center", va="top", color=style.SOFT,
-        fontsize=7.5, parse_math=False,
+        0.0, 1.02, textwrap.fill(drift.note, 48), transform=axes.transAxes, ha="left", va="bottom", color=style.SOFT,
+        fontsize=style.letters(), parse_math=False,
     )  # fmt: skip
 
 

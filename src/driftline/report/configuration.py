@@ -3,9 +3,11 @@
 from __future__ import annotations
 
 import json
+from dataclasses import fields
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
+from driftline.figure_options import FigureOptions
 from driftline.report.base import Writer
 from driftline.scaling.tables import form_table
 from driftline.settings import Settings
@@ -31,9 +33,23 @@ def to_toml(settings: Settings) -> str:
         lines += ["", "[labels]", *(f"{name} = {_value(value)}" for name, value in settings.labels.items())]
     if given := settings.input.given():
         lines += ["", "[input]", *(f"{name} = {_input(value)}" for name, value in given.items())]
+    lines += ["", "[figure]", *_figure(settings.figure)]
     for form in settings.forms:
         lines += ["", *_form(form)]
     return "\n".join(lines) + "\n"
+
+
+def _figure(options: FigureOptions) -> list[str]:
+    lines = []
+    for part in fields(options):
+        value = getattr(options, part.name)
+        if value is None:
+            lines.append(f"# {part.name}: that of the house")
+        elif isinstance(value, tuple):
+            lines.append(f"{part.name} = [{', '.join(_text(each) for each in value)}]")
+        else:
+            lines.append(f"{part.name} = {_value(value)}")
+    return lines
 
 
 def _form(form: ExpressionForm) -> list[str]:

@@ -1,4 +1,4 @@
-"""The figures as files: PDF for the paper, PNG for slides, SVG for web pages."""
+"""The figures as files: PDF for the paper and PNG for slides, or what was asked for, and SVG for web pages."""
 
 from __future__ import annotations
 
@@ -17,13 +17,11 @@ class Drawings(Writer):
     title = "figures"
 
     def write(self, analysis: Analysis, folder: Path) -> None:
-        """Draw every figure of the registry into `folder/figures`."""
-        from driftline.figures.gallery import FIGURES  # matplotlib comes with it
-        from driftline.figures.style import save
+        """Draw every figure that was asked for into `folder/figures`."""
+        from driftline.figures.rendering import pictures  # matplotlib comes with it
 
         place = folder / "figures"
         place.mkdir()
-        for figure in FIGURES:
-            drawn = figure.draw(analysis)
-            for kind in ("pdf", "png", "svg"):
-                save(drawn, place / f"{figure.name}.{kind}")
+        for picture in pictures(analysis):
+            for kind, content in picture.files.items():
+                (place / f"{picture.name}.{kind}").write_bytes(content)

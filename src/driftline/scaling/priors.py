@@ -48,6 +48,10 @@ class Prior(ABC):
         """Coordinate of a parameter value."""
         return value
 
+    def density(self, value: FloatArray) -> FloatArray:
+        """Density per unit of the parameter's own scale; zero outside the support."""
+        return np.exp(self.log_density(value))
+
 
 @dataclass(frozen=True)
 class Uniform(Prior):
@@ -100,6 +104,10 @@ class _Logarithmic(Prior):
 
     def coordinate(self, value: FloatArray) -> FloatArray:
         return np.log(value)
+
+    def density(self, value: FloatArray) -> FloatArray:
+        positive = np.where(value > 0, value, 1.0)
+        return np.where(value > 0, np.exp(self.log_density(np.log(positive))) / positive, 0.0)
 
 
 class LogUniform(_Logarithmic, Uniform):
