@@ -38,9 +38,15 @@ if TYPE_CHECKING:
     from driftline.errors import ConfigurationError as ConfigurationError
     from driftline.errors import DriftlineError as DriftlineError
     from driftline.errors import InputError as InputError
+    from driftline.figure_options import FigureOptions as FigureOptions
     from driftline.figures.collapse import draw_collapse as draw_collapse
+    from driftline.figures.comparison import draw_comparison as draw_comparison
     from driftline.figures.curves import draw_curves as draw_curves
     from driftline.figures.drift import draw_drift as draw_drift
+    from driftline.figures.held_out import draw_held_out as draw_held_out
+    from driftline.figures.misfit import draw_misfit as draw_misfit
+    from driftline.figures.posterior import draw_posterior as draw_posterior
+    from driftline.figures.stability import draw_stability as draw_stability
     from driftline.inference.intervals import Interval as Interval
     from driftline.partial import CollapseStudy as CollapseStudy
     from driftline.partial import CrossingStudy as CrossingStudy
@@ -68,9 +74,15 @@ _HOMES = {
     "curves": ("Curve", "Curves", "Labels"),
     "drift": ("Drift", "fit_drift"),
     "errors": ("ConfigurationError", "DriftlineError", "InputError"),
+    "figure_options": ("FigureOptions",),
     "figures.collapse": ("draw_collapse",),
+    "figures.comparison": ("draw_comparison",),
     "figures.curves": ("draw_curves",),
     "figures.drift": ("draw_drift",),
+    "figures.held_out": ("draw_held_out",),
+    "figures.misfit": ("draw_misfit",),
+    "figures.posterior": ("draw_posterior",),
+    "figures.stability": ("draw_stability",),
     "inference.intervals": ("Interval",),
     "partial": ("CollapseStudy", "CrossingStudy", "study_collapse", "study_crossings"),
     "readers": ("read",),

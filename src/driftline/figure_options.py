@@ -25,7 +25,17 @@ LEAST_WIDTH, MOST_WIDTH = 2.5, 20.0
 #: Points; journals print nothing below 5.
 LEAST_FONT, MOST_FONT = 5.0, 16.0
 #: Settings of matplotlib that say nothing about looks; a style file may hold them, and they are passed over.
-NOT_LOOKS = ("backend", "interactive", "toolbar", "timezone", "tk.", "webagg.", "docstring.", "keymap.", "figure.figsize")
+NOT_LOOKS = (
+    "backend",
+    "interactive",
+    "toolbar",
+    "timezone",
+    "tk.",
+    "webagg.",
+    "docstring.",
+    "keymap.",
+    "figure.figsize",
+)
 
 
 @dataclass(frozen=True)
@@ -116,7 +126,9 @@ def _style_lines(path: Path) -> Iterator[tuple[int, str, str]]:
     try:
         lines = path.read_text(encoding="utf-8").splitlines()
     except OSError as reason:
-        raise ConfigurationError(f"{path}: cannot be read ({reason.strerror}); give a matplotlib style file") from reason
+        raise ConfigurationError(
+            f"{path}: cannot be read ({reason.strerror}); give a matplotlib style file"
+        ) from reason
     except UnicodeDecodeError as reason:
         raise ConfigurationError(f"{path}: is not UTF-8 text at byte {reason.start + 1}; save it as UTF-8") from reason
     for number, line in enumerate(lines, 1):
@@ -148,7 +160,8 @@ def _style_setting(name: str, value: str, where: str) -> dict[str, Any]:
         advice = f"did you mean {near[0]}?" if near else "see the list in its documentation"
         raise ConfigurationError(f"{where}: matplotlib has no setting {name!r}; {advice}")
     try:
-        checked = dict(mpl.RcParams({name: value}))
+        known: Any = mpl.RcParams  # typed with the names it knows, which is what is to be found out
+        checked: dict[str, Any] = dict(known({name: value}))
     except ValueError as reason:
         raise ConfigurationError(f"{where}: {str(reason).splitlines()[0]}") from reason
     if name == "text.usetex" and checked[name]:

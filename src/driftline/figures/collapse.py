@@ -13,6 +13,7 @@ from driftline.curves import FloatArray
 from driftline.figures import labels, style
 from driftline.figures.base import Drawing
 from driftline.figures.finish import finish
+from driftline.figures.headline import headline_fit
 from driftline.figures.legends import Entries, legend_above
 
 if TYPE_CHECKING:
@@ -74,13 +75,6 @@ class CollapseDrawing(Drawing):
         figure = draw_collapse(headline_fit(analysis))[0].figure
         assert isinstance(figure, Figure)
         return figure
-
-
-def headline_fit(analysis: Analysis) -> CollapseFit:
-    """The most probable fit among those that the crossover rests on, or among all where it rests on none."""
-    basis = analysis.crossover.basis if analysis.crossover is not None else ()
-    fits = [fit for fit in analysis.comparison.fits if fit.ansatz.name in basis] or analysis.comparison.fits
-    return max(fits, key=lambda fit: fit.log_evidence)
 
 
 def _function(upper: Axes, fit: CollapseFit) -> None:

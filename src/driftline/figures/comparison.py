@@ -178,8 +178,14 @@ def _legend(axes: Axes, fits: Sequence[CollapseFit]) -> None:
         _, number, marker = HYPOTHESES[key]
         handles.append(
             axes.errorbar(
-                [np.nan], [np.nan], xerr=[np.nan], linestyle="none", marker=marker, markersize=4.2,
-                color=style.colour(number), markerfacecolor=_face(number),
-            )  # fmt: skip
+                [np.nan],
+                [np.nan],
+                xerr=[np.nan],
+                linestyle="none",
+                marker=marker,
+                markersize=4.2,
+                color=style.colour(number),
+                markerfacecolor=_face(number),
+            )
         )
     legend_above(axes, Entries(handles, [HYPOTHESES[key][0] for key in present]))

@@ -90,7 +90,7 @@ def shown(crossing: Crossing) -> bool:
 
 def _content(axes: Axes, curves: Curves, crossings: Crossings | None, found: list[Crossing]) -> Entries:
     """Points, smoothers and crossings; legend entries of the last."""
-    _, _, mean, error = curves.flat()
+    error = curves.flat()[3]
     (low, high), height = axes.get_ylim(), axes.get_window_extent().height / style.figure_of(axes).dpi
     marker = style.marker_size(error, low, high, height)
     for curve, look in zip(curves.curves, style.size_looks(curves.sizes), strict=True):

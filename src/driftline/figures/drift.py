@@ -60,7 +60,7 @@ def draw_drift(drift: Drift, labels: Labels | None = None, *, ax: tuple[Axes, Ax
         if own:
             legend_across(style.figure_of(left), *groups)
         else:
-            for axes, group in zip((left, right), groups, strict=False):
+            for axes, group in zip((left, right), groups, strict=True):
                 legend_above(axes, group)
         if own:
             wide = len(drift.sizes) > 0 and float(np.ptp(right.get_xlim())) > 4
@@ -134,7 +134,7 @@ def _laws(left: Axes, right: Axes, drift: Drift) -> list[Entries]:
             axes.fill_between(x, low, high, color=colour, alpha=0.16, linewidth=0, zorder=1)
         entries[law.bounded].append((line, f"{law.name} {probability(law.probability)}"))
     _asymptotes(left, drift)
-    return [Entries(*zip(*family, strict=True)) for family in entries.values() if family]
+    return [Entries([line for line, _ in family], [text for _, text in family]) for family in entries.values()]
 
 
 def _grid(axes: Axes, inverse: bool) -> tuple[FloatArray, FloatArray]:

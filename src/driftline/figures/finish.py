@@ -55,7 +55,8 @@ def _finish(figure: Figure, whole: Sequence[Axis], few: bool) -> None:
 
 def panels(figure: Figure) -> list[Axes]:
     """All axes of a figure, insets included."""
-    return [*figure.axes, *(inset for ax in figure.axes for inset in ax.child_axes)]
+    found: list[Any] = [*figure.axes, *(inset for ax in figure.axes for inset in ax.child_axes)]
+    return found
 
 
 def _formatter() -> ScalarFormatter:

@@ -13,8 +13,9 @@ from driftline.curves import FloatArray
 from driftline.errors import InputError
 from driftline.figures import labels, style
 from driftline.figures.base import Drawing
-from driftline.figures.collapse import guides, headline_fit, residual_limits
+from driftline.figures.collapse import guides, residual_limits
 from driftline.figures.finish import finish
+from driftline.figures.headline import headline_fit
 from driftline.figures.keys import label_ends
 from driftline.figures.legends import Entries, legend_above
 
@@ -47,7 +48,9 @@ def draw_held_out(fit: CollapseFit, *, ax: tuple[Axes, Axes] | None = None) -> t
     """
     held_out = fit.held_out
     if held_out is None:
-        raise InputError("no size was held out of this fit; it needs three sizes and extras=True", where=fit.ansatz.name)
+        raise InputError(
+            "no size was held out of this fit; it needs three sizes and extras=True", where=fit.ansatz.name
+        )
     with style.house_style():
         own = ax is None
         if ax is None:
@@ -134,4 +137,6 @@ def _limits(upper: Axes, fit: CollapseFit, held_out: HeldOut) -> None:
     low, high = style.spread(mean, error)
     lowest, highest = style.spread(held_out.predicted, reach)
     span = high - low  # a prediction that is far off must not flatten the points
-    style.pad_limits(upper.set_ylim, min(low, max(lowest, low - span)), max(high, min(highest, high + span)), share=0.06)
+    style.pad_limits(
+        upper.set_ylim, min(low, max(lowest, low - span)), max(high, min(highest, high + span)), share=0.06
+    )

@@ -41,9 +41,7 @@ def label_ends(
     places = spread_apart(wanted, LINES * size / height, 0.0, 1.0)
     inches = style.figure_of(ax).dpi_scale_trans
     for end, place, look, text in zip(ends, places, looks, texts, strict=True):
-        leader, marker, start = (
-            ax.transAxes + ScaledTranslation(shift, 0.0, inches) for shift in (LEADER, MARK, TEXT)
-        )
+        leader, marker, start = (ax.transAxes + ScaledTranslation(shift, 0.0, inches) for shift in (LEADER, MARK, TEXT))
         thin = {"arrowstyle": "-", "color": look.colour, "linewidth": style.line(0.5), "shrinkA": 0, "shrinkB": 0}
         ax.annotate("", end, (1.0, place), textcoords=leader, arrowprops={**thin, "zorder": 1.5}, annotation_clip=False)
         kind = style.marker_style(look, min(3.8, 0.6 * size))

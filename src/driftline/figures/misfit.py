@@ -14,8 +14,8 @@ from matplotlib.figure import Figure
 from driftline.curves import FloatArray
 from driftline.figures import labels, style
 from driftline.figures.base import Drawing
-from driftline.figures.collapse import headline_fit
 from driftline.figures.finish import finish
+from driftline.figures.headline import headline_fit
 
 if TYPE_CHECKING:
     from driftline.analysis import Analysis
@@ -98,7 +98,7 @@ def colour_bar(axes: Axes, reach: float, label: str) -> None:
     colours, norm = diverging(reach)
     bar = style.figure_of(axes).colorbar(ScalarMappable(norm, colours), ax=axes, pad=0.02, fraction=0.06, aspect=25)
     bar.set_label(label)
-    bar.outline.set_linewidth(style.line(0.6))  # type: ignore[operator]
+    bar.outline.set_linewidth(style.line(0.6))
 
 
 def _edges(disorder: FloatArray) -> FloatArray:

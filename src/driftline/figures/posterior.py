@@ -20,8 +20,8 @@ from driftline import numerals
 from driftline.curves import FloatArray
 from driftline.figures import labels, style
 from driftline.figures.base import Drawing
-from driftline.figures.collapse import headline_fit
 from driftline.figures.finish import finish
+from driftline.figures.headline import headline_fit
 from driftline.figures.legends import Entries, legend_above
 from driftline.inference.intervals import Interval
 
@@ -50,7 +50,8 @@ def draw_posterior(fit: CollapseFit, *, ax: Any = None) -> Any:
     Returns
     -------
     array of matplotlib axes, shape (n, n)
-        Parameters as `shown_parameters` orders them; the axes above the diagonal are switched off.
+        Parameters as `shown_parameters` orders them; above the diagonal given axes are switched off, and a new figure
+        has none, but None.
     """
     names = shown_parameters(fit)
     with style.house_style():
@@ -59,15 +60,16 @@ def draw_posterior(fit: CollapseFit, *, ax: Any = None) -> Any:
         draws = [fit.draws(name) for name in names]
         spans = [_span(column) for column in draws]
         for row, name in enumerate(names):
-            for column in range(len(names)):
+            for column in range(row + 1):
                 panel = grid[row, column]
-                if column > row:
-                    panel.axis("off")
-                elif column == row:
+                if column == row:
                     _single(panel, fit, name, draws[row], spans[row])
                 else:
                     _pair(panel, (draws[column], draws[row]), (spans[column], spans[row]), _kernel(fit, 2))
         _label(grid, [_symbol(fit, name) for name in names], [_unit(fit, name) for name in names])
+        for unused in grid[np.triu_indices(len(names), 1)]:
+            if unused is not None:
+                unused.axis("off")
         _key(grid, any(_prior(fit, name) is not None for name in names))
         if own:
             finish(style.figure_of(grid[0, 0]), few=len(names) > 1)
@@ -110,7 +112,11 @@ def _panels(count: int) -> Any:
     figure = style.new_figure(width, 0.95 * width, narrow=0.95 * style.SINGLE)
     layout: Any = figure.get_layout_engine()
     layout.set(w_pad=0.02, h_pad=0.02, wspace=0.02, hspace=0.02)
-    return figure.subplots(count, count, squeeze=False)
+    places = figure.add_gridspec(count, count)
+    grid = np.full((count, count), None, dtype=object)
+    for row, column in zip(*np.tril_indices(count), strict=True):
+        grid[row, column] = figure.add_subplot(places[row, column])
+    return grid
 
 
 def _span(draws: FloatArray) -> tuple[float, float]:
@@ -140,7 +146,7 @@ def _single(panel: Axes, fit: CollapseFit, name: str, draws: FloatArray, span: t
 def _kernel(fit: CollapseFit, dimension: int) -> float:
     """Standard deviation of the smoothing kernel in bins; the draws spread over about a sixth of the axis."""
     effective = float(np.clip(fit.sampler.effective_samples, 50.0, max(len(fit.samples), 50)))
-    return SMOOTHING * BINS / 6 * effective ** (-1 / (dimension + 4))
+    return float(SMOOTHING * BINS / 6 * effective ** (-1 / (dimension + 4)))
 
 
 def _pair(
@@ -163,7 +169,7 @@ def _levels(density: FloatArray) -> list[float]:
     """Densities whose excursion sets hold the shares `LEVELS` of the posterior."""
     falling = np.sort(density.ravel())[::-1]
     held = np.cumsum(falling) / np.sum(falling)
-    return [float(falling[min(np.searchsorted(held, share), falling.size - 1)]) for share in LEVELS]
+    return [float(falling[min(int(np.searchsorted(held, share)), falling.size - 1)]) for share in LEVELS]
 
 
 def _prior(fit: CollapseFit, name: str) -> Any:
@@ -211,7 +217,8 @@ def _key(grid: Any, prior: bool) -> None:
     if len(grid) == 1:
         legend_above(grid[0, 0], Entries(handles[-1:], texts[-1:]))
     else:
-        grid[0, -1].legend(handles, texts, loc="upper right", borderaxespad=0.0, handlelength=1.7)
+        owner = grid[0, -1] or style.figure_of(grid[0, 0])
+        owner.legend(handles, texts, loc="upper right", handlelength=1.7)
 
 
 def _shrink_titles(grid: Any) -> None:

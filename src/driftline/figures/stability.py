@@ -12,8 +12,8 @@ from matplotlib.figure import Figure
 from driftline import numerals
 from driftline.figures import labels, style
 from driftline.figures.base import Drawing
-from driftline.figures.collapse import headline_fit
 from driftline.figures.finish import finish
+from driftline.figures.headline import headline_fit
 from driftline.figures.misfit import colour_bar, diverging
 
 if TYPE_CHECKING:

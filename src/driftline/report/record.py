@@ -16,6 +16,7 @@ import numpy as np
 
 from driftline.plain import plain
 from driftline.report.base import Writer
+from driftline.report.figure_tables import COLUMNS, figure_tables
 
 if TYPE_CHECKING:
     from driftline.analysis import Analysis
@@ -49,7 +50,8 @@ def tables(analysis: Analysis) -> dict[str, list[dict[str, Any]]]:
     return {
         **crossing_tables(analysis),
         **collapse_tables(analysis),
-        "stability": [_flat(row) for row in plain(analysis.stability)],
+        "stability": [_flat(row) for row in _stability(analysis)],
+        **plain(figure_tables(analysis)),
     }
 
 
@@ -106,6 +108,7 @@ _FIRST_COLUMNS = {
     "stability": ("ansatz", "smallest_size", "window_1", "window_2"),
     "costs": ("ansatz", "cost", "value", "ratio"),
     "collapsed-points": ("ansatz", "size", "disorder", "x", "y", "error", "fitted", "residual"),
+    **COLUMNS,
 }
 
 
@@ -127,6 +130,13 @@ def _costs(ansatz: str, costs: Sequence[Cost]) -> Iterable[dict[str, Any]]:
     for cost in costs:
         cells = {"ansatz": ansatz, "cost": cost.name, "value": cost.value, "ratio": cost.ratio, "floor": cost.floor}
         yield _flat(plain(cells))
+
+
+def _stability(analysis: Analysis) -> Iterable[dict[str, Any]]:
+    """Each refit with its shift against the fit to all data, in units of the standard deviation expected by chance."""
+    for found in analysis.stability:
+        shift = found.significance(analysis.comparison[found.ansatz].parameters["W_c"])
+        yield {**plain(found), "shift_in_sd": shift}
 
 
 def _points(fit: CollapseFit) -> Iterable[dict[str, Any]]:
