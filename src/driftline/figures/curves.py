@@ -15,6 +15,7 @@ from driftline.figures.finish import finish
 from driftline.figures.inset import Inset, place_inset
 from driftline.figures.keys import label_ends
 from driftline.figures.legends import Entries, legend_above
+from driftline.numerals import exponent
 
 if TYPE_CHECKING:
     from driftline.analysis import Analysis
@@ -23,6 +24,7 @@ if TYPE_CHECKING:
 RESOLVED = 0.95  # from this probability of separation on a crossing is drawn filled
 LIKELY = 0.5  # crossings less probable than this are not drawn
 ENLARGED = 0.4  # an inset that would have to show more than this part of the range enlarges nothing
+DIGIT = 0.64  # width of a digit in units of the size of its letters
 LEAST_SHOWN = 1 / 40  # part of the range that the inset shows beside the outermost crossings, so that points are in it
 
 
@@ -173,23 +175,41 @@ def _inset(
     axes: Axes, curves: Curves, crossings: Crossings, found: list[Crossing], window: tuple[float, float]
 ) -> None:
     """Enlarge the crossings in that corner that needs the least room made for it."""
-    x, low, high = _occupied(curves, crossings)
-    inset = place_inset(axes, x, low, high, Inset())
+    lowest, highest = _heights(curves, crossings, found, window)
+    step = (highest - lowest) / 3
+    size = style.letters(style.SMALL) / 72 / (axes.get_window_extent().width / style.figure_of(axes).dpi)
+    room = Inset(label_width=max(0.1, (DIGIT * _characters(lowest, highest, step) + 0.8) * size))
+    inset = place_inset(axes, *_occupied(curves, crossings), room)
     inset.set_xlim(*window)
-    inside = [(curve.disorder >= window[0]) & (curve.disorder <= window[1]) for curve in curves.curves]
-    pairs = list(zip(curves.curves, inside, strict=True))
-    ends = [(curve.mean + sign * curve.error)[mask] for curve, mask in pairs for sign in (-1, 1)]
-    for smooth in crossings.smooth:
-        mask = (smooth.grid >= window[0]) & (smooth.grid <= window[1])
-        ends += [(smooth.mean + sign * smooth.sd)[mask] for sign in (-1, 1)]
-    ends += [np.array([each.value.low68, each.value.high68]) for each in found if each.value]
-    every = np.concatenate(ends)
-    style.pad_limits(inset.set_ylim, float(every.min()), float(every.max()), share=0.08)
+    style.pad_limits(inset.set_ylim, lowest, highest, share=0.08)
     _content(inset, curves, crossings, found)
     axes.indicate_inset(
         (window[0], inset.get_ylim()[0], window[1] - window[0], np.ptp(inset.get_ylim())),
         edgecolor=style.FAINT, linewidth=style.line(0.6), alpha=1.0, zorder=0.5,
     )  # fmt: skip
+
+
+def _heights(
+    curves: Curves, crossings: Crossings, found: list[Crossing], window: tuple[float, float]
+) -> tuple[float, float]:
+    """Lowest and highest end of what the inset shows."""
+    ends = [np.array([each.value.low68, each.value.high68]) for each in found if each.value]
+    for x, y, sd in [
+        *((each.disorder, each.mean, each.error) for each in curves.curves),
+        *((each.grid, each.mean, each.sd) for each in crossings.smooth),
+    ]:
+        mask = (x >= window[0]) & (x <= window[1])
+        ends += [(y - sd)[mask], (y + sd)[mask]]
+    every = np.concatenate(ends)
+    return float(every.min()), float(every.max())
+
+
+def _characters(lowest: float, highest: float, step: float) -> int:
+    """Length of a number on an axis with such a step: digits, point, leading zeros unless a power is split off, sign."""
+    largest = max(abs(lowest), abs(highest))
+    top, last = exponent(largest), exponent(step or largest)
+    zeros = -top if -3 <= top < 0 else 0
+    return max(top - last + 1, 1) + 1 + zeros + (lowest < 0)
 
 
 def _occupied(curves: Curves, crossings: Crossings) -> tuple[FloatArray, FloatArray, FloatArray]:
