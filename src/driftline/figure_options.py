@@ -14,6 +14,7 @@ from pathlib import Path
 from typing import Any
 
 from driftline.errors import ConfigurationError, suggestion
+from driftline.wording import brief, printable, shown
 
 #: Every figure, in the order of the report; the registry of drawings in `figures/gallery.py` has one for each.
 FIGURE_NAMES = ("curves", "drift", "collapse", "posterior", "comparison", "stability", "held-out", "misfit")
@@ -24,6 +25,8 @@ WIDTHS = {"single": 3.4, "double": 7.0}
 LEAST_WIDTH, MOST_WIDTH = 2.5, 20.0
 #: Points; journals print nothing below 5.
 LEAST_FONT, MOST_FONT = 5.0, 16.0
+#: Bytes; the longest style files of matplotlib itself have a few thousand.
+LARGEST_STYLE = 100_000
 #: Settings of matplotlib that say nothing about looks; a style file may hold them, and they are passed over.
 NOT_LOOKS = (
     "backend",
@@ -89,11 +92,11 @@ class FigureOptions:
         if isinstance(table, cls):
             return table
         if not isinstance(table, Mapping):
-            raise ConfigurationError(f"{where}: must be a table, not {table!r}")
+            raise ConfigurationError(f"{where}: must be a table, not {brief(table)}")
         known = [part.name for part in fields(cls)]
         for name in table:
             if name not in known:
-                raise ConfigurationError(f"{where}: unknown key {name!r}; {suggestion(name, known)}")
+                raise ConfigurationError(f"{where}: unknown key {shown(str(name))}; {suggestion(name, known)}")
         return cls(**_checked(table, where))
 
     @property
@@ -124,7 +127,11 @@ def read_style(path: str | Path) -> dict[str, Any]:
 
 def _style_lines(path: Path) -> Iterator[tuple[int, str, str]]:
     try:
-        lines = path.read_text(encoding="utf-8").splitlines()
+        with path.open("rb") as stream:
+            content = stream.read(LARGEST_STYLE + 1)
+        if len(content) > LARGEST_STYLE:
+            raise ConfigurationError(f"{path}: is larger than {LARGEST_STYLE} bytes, too large for a style file")
+        lines = content.decode("utf-8").splitlines()
     except OSError as reason:
         raise ConfigurationError(
             f"{path}: cannot be read ({reason.strerror}); give a matplotlib style file"
@@ -132,11 +139,11 @@ def _style_lines(path: Path) -> Iterator[tuple[int, str, str]]:
     except UnicodeDecodeError as reason:
         raise ConfigurationError(f"{path}: is not UTF-8 text at byte {reason.start + 1}; save it as UTF-8") from reason
     for number, line in enumerate(lines, 1):
-        content = _without_comment(line).strip()
-        if content:
-            name, colon, value = content.partition(":")
+        setting = _without_comment(line).strip()
+        if setting:
+            name, colon, value = setting.partition(":")
             if not colon:
-                raise ConfigurationError(f"{path}, line {number}: must read 'name: value', not {content[:60]!r}")
+                raise ConfigurationError(f"{path}, line {number}: must read 'name: value', not {shown(setting)}")
             yield number, name.strip(), value.strip()
 
 
@@ -158,12 +165,12 @@ def _style_setting(name: str, value: str, where: str) -> dict[str, Any]:
     if name not in mpl.rcParamsDefault:
         near = get_close_matches(name, mpl.rcParamsDefault, n=1)
         advice = f"did you mean {near[0]}?" if near else "see the list in its documentation"
-        raise ConfigurationError(f"{where}: matplotlib has no setting {name!r}; {advice}")
+        raise ConfigurationError(f"{where}: matplotlib has no setting {shown(name)}; {advice}")
     try:
         known: Any = mpl.RcParams  # typed with the names it knows, which is what is to be found out
         checked: dict[str, Any] = dict(known({name: value}))
     except ValueError as reason:
-        raise ConfigurationError(f"{where}: {str(reason).splitlines()[0]}") from reason
+        raise ConfigurationError(f"{where}: {printable(str(reason).splitlines()[0][:200])}") from reason
     if name == "text.usetex" and checked[name]:
         raise ConfigurationError(
             f"{where}: text.usetex is not supported, for labels are mathtext; leave it out (mathtext.fontset: cm has "
@@ -183,7 +190,7 @@ def _width(value: Any, where: str) -> str | float | None:
     number = _number(value)
     if number is None or not LEAST_WIDTH <= number <= MOST_WIDTH:
         raise ConfigurationError(
-            f'{where}: must be "single", "double" or inches from {LEAST_WIDTH:g} to {MOST_WIDTH:g}, not {value!r}'
+            f'{where}: must be "single", "double" or inches from {LEAST_WIDTH:g} to {MOST_WIDTH:g}, not {brief(value)}'
         )
     return number
 
@@ -191,7 +198,7 @@ def _width(value: Any, where: str) -> str | float | None:
 def _font_size(value: Any, where: str) -> float:
     number = _number(value)
     if number is None or not LEAST_FONT <= number <= MOST_FONT:
-        raise ConfigurationError(f"{where}: must be points from {LEAST_FONT:g} to {MOST_FONT:g}, not {value!r}")
+        raise ConfigurationError(f"{where}: must be points from {LEAST_FONT:g} to {MOST_FONT:g}, not {brief(value)}")
     return number
 
 
@@ -215,11 +222,11 @@ def _figures(value: Any, where: str) -> tuple[str, ...]:
 def _names(value: Any, known: tuple[str, ...], where: str) -> tuple[str, ...]:
     """Some of the known names, each once, in their usual order."""
     if isinstance(value, str | Mapping) or not isinstance(value, Iterable):
-        raise ConfigurationError(f"{where}: must be a list of names, not {value!r}")
+        raise ConfigurationError(f"{where}: must be a list of names, not {brief(value)}")
     names = list(value)
     for name in names:
         if name not in known:
-            raise ConfigurationError(f"{where}: there is no {name!r}; {suggestion(str(name), known)}")
+            raise ConfigurationError(f"{where}: there is no {brief(name)}; {suggestion(str(name), known)}")
     if not names:
         raise ConfigurationError(f"{where}: is empty; give at least one of {', '.join(known)} or leave the key out")
     return tuple(name for name in known if name in names)
@@ -229,7 +236,7 @@ def _style(value: Any, where: str) -> str | None:
     if value is None:
         return None
     if not isinstance(value, str | Path) or not str(value):
-        raise ConfigurationError(f"{where}: must be the path of a matplotlib style file, not {value!r}")
+        raise ConfigurationError(f"{where}: must be the path of a matplotlib style file, not {brief(value)}")
     path = Path(value).absolute()  # the resolved configuration is read from another folder
     read_style(path)
     return str(path)

@@ -205,7 +205,7 @@ def _heights(
 
 
 def _characters(lowest: float, highest: float, step: float) -> int:
-    """Length of a number on an axis with such a step: digits, point, leading zeros unless a power is split off, sign."""
+    """Length of a number on an axis with such a step: digits, point, leading zeros if no power is split off, sign."""
     largest = max(abs(lowest), abs(highest))
     top, last = exponent(largest), exponent(step or largest)
     zeros = -top if -3 <= top < 0 else 0

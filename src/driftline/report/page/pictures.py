@@ -34,16 +34,24 @@ def figures(analysis: Analysis, folder: Path) -> str:
 
 def _figure(figure: Drawing, analysis: Analysis, folder: Path) -> str:
     caption = text(figure.caption(analysis))
-    drawing = inline((folder / f"{figure.name}.svg").read_bytes(), f"{figure.name}-")
-    if len(drawing) > LARGEST_SVG:
-        content = base64.b64encode((folder / f"{figure.name}.png").read_bytes()).decode("ascii")
+    source = (folder / f"{figure.name}.svg").read_bytes()
+    drawing = inline(source, f"{figure.name}-")
+    width = _inches(source)
+    bitmap = folder / f"{figure.name}.png"
+    if len(drawing) > LARGEST_SVG and bitmap.is_file():
+        content = base64.b64encode(bitmap.read_bytes()).decode("ascii")
         drawing = f'<img alt="{caption}" src="data:image/png;base64,{content}">'
     else:
         drawing = drawing.replace("<svg ", f'<svg role="img" aria-label="{caption}" ', 1)
-    drawing = re.sub(r"^<(svg|img) ", rf'<\1 style="width:100%;min-width:{LEAST * figure.width:.0f}px" ', drawing)
+    drawing = re.sub(r"^<(svg|img) ", rf'<\1 style="width:100%;min-width:{LEAST * width:.0f}px" ', drawing)
     scrolls = f'class="picture" role="region" aria-label="Figure: {text(figure.name)}" tabindex="0"'
-    width = f"width:{SCREEN * figure.width:.0f}px"
-    return f'<figure style="{width}">\n<div {scrolls}>{drawing}</div>\n<figcaption>{caption}</figcaption>\n</figure>'
+    size = f"width:{SCREEN * width:.0f}px"
+    return f'<figure style="{size}">\n<div {scrolls}>{drawing}</div>\n<figcaption>{caption}</figcaption>\n</figure>'
+
+
+def _inches(drawing: bytes) -> float:
+    """Width of an SVG file that gives it in points, as matplotlib does."""
+    return float(ElementTree.fromstring(drawing).get("width", "").removesuffix("pt")) / 72
 
 
 def inline(drawing: bytes, prefix: str) -> str:
