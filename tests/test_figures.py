@@ -301,7 +301,7 @@ def test_widths_are_those_of_a_journal(case):
 @pytest.mark.parametrize("width", ["single", "double"])
 def test_every_figure_fits_either_width(width):
     """What suits two columns can be drawn in one and the other way round, with nothing overlapping."""
-    analysis = full(made_analysis(names=DEFAULT_ANSATZE[:6]))
+    analysis = full(made_analysis(names=(*DEFAULT_ANSATZE[3:6], "power-law:corrected")))
     natural = {"single": ("drift", "comparison", "posterior"), "double": ("curves", "stability", "misfit")}
     with style.drawn_with(FigureOptions(width=width)):
         for name in natural[width]:

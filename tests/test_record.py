@@ -14,6 +14,7 @@ from driftline.costs import COST_FUNCTIONS, Cost
 from driftline.errors import ConfigurationError
 from driftline.inference.intervals import Interval
 from driftline.report.configuration import to_toml
+from driftline.report.figure_tables import figure_tables
 from driftline.report.folder import MARK, check_folder, default_folder, output_folder
 from driftline.report.page import page
 from driftline.report.record import record, tables, to_json
@@ -164,7 +165,8 @@ def test_tables_hold_the_same_numbers_as_the_result():
     """Each table has a row for each entry, intervals and lists spread over columns."""
     analysis = made_analysis()
     made = tables(analysis)
-    assert list(made) == ["crossings", "drift", "ansatze", "stability", "costs", "collapsed-points"]
+    numbers = ["crossings", "drift", "ansatze", "stability", "costs", "collapsed-points"]
+    assert list(made) == [*numbers, *figure_tables(analysis)]
     assert made["crossings"][0]["size_1"] == 6.0
     assert made["crossings"][0]["disorder_median"] == analysis.crossings.pairs[0].disorder.median
     assert made["ansatze"][1]["parameters_W_c_low95"] == analysis.comparison.fits[1].parameters["W_c"].low95
@@ -176,6 +178,30 @@ def test_tables_hold_the_same_numbers_as_the_result():
         "ansatz": "power-law", "cost": cost.name, "value": cost.value, "ratio": cost.ratio,
         **{f"floor_{name}": limit for name, limit in cost.floor.to_dict().items()},
     }  # fmt: skip
+
+
+def test_tables_hold_what_the_figures_show():
+    """Points, smoothers, bands, scaling functions and posterior draws, number by number."""
+    analysis = made_analysis()
+    made = tables(analysis)
+    last = analysis.curves.curves[-1]
+    assert made["points"][-1] == {"size": 14.0, "disorder": 20.0, "mean": last.mean[-1], "error": last.error[-1]}
+    smooth, law, fit = analysis.crossings.smooth[0], analysis.drift.laws[1], analysis.comparison.fits[-1]
+    assert made["smoothers"][3] == {"size": 6.0, "disorder": smooth.grid[3], "mean": smooth.mean[3], "sd": smooth.sd[3]}
+    assert [row["disorder"] for row in made["drift-points"]] == analysis.drift.positions.tolist()
+    band = [row for row in made["drift-bands"] if row["law"] == law.name]
+    np.testing.assert_allclose(
+        [[row[name] for row in band] for name in ("median", "low68", "high68")],
+        law.predict(np.array([row["size"] for row in band])),
+        rtol=1e-12,  # the same formula on the same numbers
+    )
+    assert [
+        row["x"] for row in made["scaling-functions"] if row["ansatz"] == fit.ansatz.name
+    ] == fit.function_x.tolist()
+    assert made["posterior"][0] == {"ansatz": fit.ansatz.name, **dict(zip(fit.names, fit.samples[0], strict=True))}
+    assert [row["probability"] for row in made["comparison"]] == list(analysis.comparison.probabilities)
+    whole, (row,) = analysis.comparison["power-law:corrected"].parameters["W_c"], analysis.stability
+    assert made["stability"][0]["shift_in_sd"] == row.significance(whole)
 
 
 def test_costs_that_are_not_defined_are_null_and_shown_as_a_dash(tmp_path):

@@ -35,7 +35,9 @@ def finish(figure: Figure, *, whole: Sequence[Axis] = (), few: bool = False) -> 
 
 
 def _finish(figure: Figure, whole: Sequence[Axis], few: bool) -> None:
-    figure.draw_without_rendering()
+    laid_out = figure.get_layout_engine() is not None
+    if laid_out:
+        figure.draw_without_rendering()
     insets = [inset for ax in figure.axes for inset in ax.child_axes]
     for ax in panels(figure):
         for axis in (ax.xaxis, ax.yaxis):
@@ -48,9 +50,10 @@ def _finish(figure: Figure, whole: Sequence[Axis], few: bool) -> None:
         for inset in ax.child_axes:
             _same_power(ax.xaxis, inset.xaxis)
             _same_power(ax.yaxis, inset.yaxis)
-    figure.align_ylabels()
-    figure.draw_without_rendering()
-    figure.set_layout_engine("none")
+    if laid_out:
+        figure.align_ylabels()
+        figure.draw_without_rendering()
+        figure.set_layout_engine("none")
 
 
 def panels(figure: Figure) -> list[Axes]:

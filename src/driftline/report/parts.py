@@ -17,6 +17,7 @@ from driftline.report.record import ResultFile, collapse_tables, crossing_tables
 if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
+    from driftline.figure_options import FigureOptions
     from driftline.partial import CollapseStudy, CrossingStudy
 
 CHECKS = (
@@ -63,15 +64,16 @@ def write_crossings(study: CrossingStudy, folder: str | os.PathLike[str], *, for
     """
     from driftline.figures.curves import draw_curves  # matplotlib comes with them
     from driftline.figures.drift import draw_drift
-    from driftline.figures.style import figure_of
+    from driftline.figures.style import drawn_with, figure_of
 
-    with output_folder(Path(folder), force=force) as place:
+    options = study.settings.figure
+    with output_folder(Path(folder), force=force) as place, drawn_with(options):
         ResultFile().write(study, place)
         ConfigurationFile().write(study, place)
         write_tables(crossing_tables(study), place)
         _write_summary(plain(crossing_blocks(study, every=True)), place)
         curves = figure_of(draw_curves(study.curves, study.crossings))
-        _save({"curves": curves, "drift": figure_of(draw_drift(study.drift, study.curves.labels)[0])}, place)
+        _save({"curves": curves, "drift": figure_of(draw_drift(study.drift, study.curves.labels)[0])}, place, options)
 
 
 def write_collapse(study: CollapseStudy, folder: str | os.PathLike[str], *, force: bool = False) -> None:
@@ -83,9 +85,10 @@ def write_collapse(study: CollapseStudy, folder: str | os.PathLike[str], *, forc
         If the folder is in the way or cannot be written.
     """
     from driftline.figures.collapse import draw_collapse  # matplotlib comes with them
-    from driftline.figures.style import figure_of
+    from driftline.figures.style import drawn_with, figure_of
 
-    with output_folder(Path(folder), force=force) as place:
+    options = study.settings.figure
+    with output_folder(Path(folder), force=force) as place, drawn_with(options):
         ResultFile().write(study, place)
         ConfigurationFile().write(study, place)
         PosteriorFile().write(study, place)
@@ -93,18 +96,18 @@ def write_collapse(study: CollapseStudy, folder: str | os.PathLike[str], *, forc
         _write_summary(plain(collapse_blocks(study)), place)
         # a colon is not allowed in the names of some file systems
         fits = {f"collapse-{fit.ansatz.name.replace(':', '_')}": fit for fit in study.comparison.fits}
-        _save({name: figure_of(draw_collapse(fit)[0]) for name, fit in fits.items()}, place)
+        _save({name: figure_of(draw_collapse(fit)[0]) for name, fit in fits.items()}, place, options)
 
 
 def _write_summary(text: str, folder: Path) -> None:
     (folder / "summary.txt").write_text(text, encoding="utf-8", newline="\n")
 
 
-def _save(figures: dict[str, Figure], folder: Path) -> None:
+def _save(figures: dict[str, Figure], folder: Path, options: FigureOptions) -> None:
     from driftline.figures.style import save
 
     place = folder / "figures"
     place.mkdir()
     for name, figure in figures.items():
-        for kind in ("pdf", "png"):
+        for kind in options.format:
             save(figure, place / f"{name}.{kind}")
