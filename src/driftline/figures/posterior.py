@@ -116,7 +116,7 @@ def _panels(count: int) -> Any:
     places = figure.add_gridspec(count, count)
     grid = np.full((count, count), None, dtype=object)
     for row, column in zip(*np.tril_indices(count), strict=True):
-        grid[row, column] = figure.add_subplot(places[row, column])
+        grid[row, column] = figure.add_subplot(places[int(row), int(column)])
     return grid
 
 

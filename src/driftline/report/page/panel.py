@@ -133,7 +133,7 @@ def _shown(analysis: Analysis) -> list[CollapseFit]:
 
 def _first(analysis: Analysis, shown: list[CollapseFit]) -> CollapseFit:
     """The fit of the collapse figure if it can be shown, else the most probable."""
-    from driftline.figures.collapse import headline_fit
+    from driftline.figures.headline import headline_fit
 
     fit = headline_fit(analysis)
     return fit if fit in shown else shown[0]

@@ -36,7 +36,7 @@ def _figure(figure: Drawing, analysis: Analysis, folder: Path) -> str:
     caption = text(figure.caption(analysis))
     source = (folder / f"{figure.name}.svg").read_bytes()
     drawing = inline(source, f"{figure.name}-")
-    width = _inches(source)
+    width = _inches(source) or figure.width
     bitmap = folder / f"{figure.name}.png"
     if len(drawing) > LARGEST_SVG and bitmap.is_file():
         content = base64.b64encode(bitmap.read_bytes()).decode("ascii")
@@ -49,9 +49,10 @@ def _figure(figure: Drawing, analysis: Analysis, folder: Path) -> str:
     return f'<figure style="{size}">\n<div {scrolls}>{drawing}</div>\n<figcaption>{caption}</figcaption>\n</figure>'
 
 
-def _inches(drawing: bytes) -> float:
-    """Width of an SVG file that gives it in points, as matplotlib does."""
-    return float(ElementTree.fromstring(drawing).get("width", "").removesuffix("pt")) / 72
+def _inches(drawing: bytes) -> float | None:
+    """Width of an SVG file that gives it in points, as matplotlib does; None for any other."""
+    found = re.match(r"([0-9.]+)pt$", ElementTree.fromstring(drawing).get("width", ""))
+    return float(found[1]) / 72 if found else None
 
 
 def inline(drawing: bytes, prefix: str) -> str:
