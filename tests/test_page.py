@@ -287,7 +287,7 @@ def test_what_the_result_does_not_show():
     supported = " ".join(limits(made_analysis(settings=Settings(quick=True))))
     undecided = " ".join(limits(made_analysis(code="undecided")))
     assert "the sizes run from 6 to 14" in supported
-    assert "The two best drift laws part only at 31." in supported
+    assert "The two best drift laws part only at size 31." in supported
     assert "holds only if one exists" in undecided
     assert "holds only if one exists" not in supported
     assert "with --quick there is no chain" in supported

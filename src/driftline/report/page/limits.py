@@ -55,7 +55,7 @@ def _sizes(analysis: Analysis) -> str:
     )
     deciding = analysis.drift.deciding_size
     if deciding is not None and deciding > sizes[-1]:
-        sentence += f" The two best drift laws part only at {numerals.significant(deciding)}."
+        sentence += f" The two best drift laws part only at size {numerals.significant(deciding)}."
     return sentence
 
 
