@@ -201,7 +201,7 @@ def _base(store: Store, options: InputOptions) -> tuple[str, list[str]]:
     if len(parents) == 1 and not slashes and "{?}" not in "".join(parents):
         base = parents.pop()
         return base, [sketch.rpartition("/")[2] for sketch in sketches]
-    return "", list(store.shapes) if len(store.shapes) <= len(sketches) else [*sketches]
+    return "", [*sketches] if len(sketches) < len(store.shapes) and sketches else list(store.shapes)
 
 
 def _names_below(store: Store, base: str) -> list[str]:

@@ -19,6 +19,7 @@ from driftline.wording import listed, shown
 
 _SLOT = re.compile(r"([A-Za-z]*)([=_ -]*)(\d+(?:\.\d+)?)", re.ASCII)
 HOLE = "{size}"
+LONGEST = 200  # characters of a name that are searched for a size: the search takes the square of the length
 #: Roles that a column can have beside others, in the order in which they are shown
 _PER_SIZE = ("mean", "value", "error", "deviation", "samples")
 
@@ -169,7 +170,7 @@ def _refuse_nameless(names: Sequence[str], scene: Scene) -> None:
         return
     example = [role for role in ("size", "disorder") if role not in scene.elsewhere]
     example += ["mean", "error"] if example and len(names) >= len(example) + 2 else ["value"]
-    example += [SKIPPED] * (len(names) - len(example))
+    example += [SKIPPED] * min(len(names) - len(example), 4)  # those behind the last role are skipped anyhow
     if len(names) == 1:
         missing = " and ".join(role for role in ("size", "disorder") if role not in scene.elsewhere)
         problem = (
@@ -236,7 +237,7 @@ def _templates(names: Sequence[str], *, trusted: bool) -> dict[str, dict[float, 
     """
     groups: dict[str, dict[float, int]] = {}
     for index, name in enumerate(names):
-        slots = [m for m in _SLOT.finditer(name) if not trusted or size_word(m[1])]
+        slots = [m for m in _SLOT.finditer(name[:LONGEST]) if not trusted or size_word(m[1])]
         if len(slots) == 1:
             slot = slots[0]
             groups.setdefault(f"{name[: slot.start(3)]}{HOLE}{name[slot.end(3) :]}", {})[float(slot[3])] = index

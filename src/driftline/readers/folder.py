@@ -120,6 +120,8 @@ def found_pattern(root: Path, place: str) -> Pattern:
         seen = listed(names, most=4) or "nothing"
         raise InputError(f"no file in this folder has a number in its path; it holds {seen}", where=place)
     guess = inferred(numbered)
+    if not guess.sketches:
+        raise InputError("a path in this folder is too long; give the pattern with --pattern", where=place)
     if guess.pattern is None or "size" not in Pattern.of(guess.pattern).names:
         raise InputError(f"{_open_question(guess.sketches)}; the files are {listed(numbered, most=4)}", where=place)
     return Pattern.of(guess.pattern)

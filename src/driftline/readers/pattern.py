@@ -15,10 +15,14 @@ from itertools import chain
 from driftline.errors import ConfigurationError
 from driftline.readers.guard import pattern_parts
 from driftline.readers.roles import known_as
+from driftline.wording import shown
 
+LONGEST = 1000  # characters of a path that is looked at
 PLACEHOLDERS = ("size", "disorder", "realisation")
-_NUMBER = r"[+-]?(?:\d+\.?\d*|\.\d+)(?:[eEdD][+-]?\d+)?"
-_WHOLE = r"\d+"
+# Lengths are bounded, so that a long row of digits is not divided between placeholders in ever so many ways
+_NUMBER = r"[+-]?(?:\d{1,20}(?:\.\d{0,20})?|\.\d{1,20})(?:[eEdD][+-]?\d{1,3})?"
+_WHOLE = r"\d{1,20}"
+MOST_STARS = 2  # in one part: each multiplies the time by the length of the name
 _TOKEN = re.compile(r"\{([^{}]*)\}|\*")
 #: A number with the word in front of it, as in ``L8``, ``W=1.0``, ``seed_003``. A hyphen is no sign and joins nothing:
 #: whether ``h-0.5`` is negative cannot be told, so no meaning is found there.
@@ -50,7 +54,11 @@ class Pattern:
             if match[1] is not None and match[1] not in PLACEHOLDERS:
                 names = ", ".join(f"{{{name}}}" for name in PLACEHOLDERS)
                 raise ConfigurationError(f"{where}: there is no placeholder {match[0]!r}; they are {names} and *")
-        return cls("/".join(pattern_parts(text, where)))
+        pattern = cls("/".join(pattern_parts(text, where)))
+        crowded = next((part for part in pattern.parts if part.count("*") > MOST_STARS), None)
+        if crowded is not None:
+            raise ConfigurationError(f"{where}: there are more than {MOST_STARS} * in {shown(crowded)}; write out more")
+        return pattern
 
     @property
     def parts(self) -> list[str]:
@@ -67,7 +75,9 @@ class Pattern:
         return re.compile(_expression(self.parts[index], set()), re.ASCII)
 
     def match(self, path: str) -> dict[str, str] | None:
-        """Text of each placeholder in `path`, or None if it does not fit."""
+        """Text of each placeholder in `path`, or None if it does not fit or is beyond all length."""
+        if len(path) > LONGEST:
+            return None
         found = re.compile(_expression(self.text, set()), re.ASCII).fullmatch(path)
         return None if found is None else found.groupdict()
 
@@ -123,6 +133,8 @@ def inferred(paths: Sequence[str]) -> Inference:
     """
     shapes: dict[str, list[str]] = {}
     for path in paths:
+        if len(path) > LONGEST:  # the search for numbers takes the square of the length
+            return Inference(None, ())
         shapes.setdefault(_shape(path), []).append(path)
     sketches = [_sketch(shape, alike) for shape, alike in sorted(shapes.items(), key=lambda item: -len(item[1]))]
     certain = len(sketches) == 1 and "{?}" not in sketches[0]

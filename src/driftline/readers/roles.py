@@ -35,6 +35,7 @@ _SPREADS = ("err", "error", "std", "sd", "stdev", "stddev", "std_dev", "sigma", 
 _STATISTICS = ("mean", "average", "avg", "sem", "stderr", "count", *_SPREADS)
 
 OBSERVABLE, SPREAD = "observable", "spread"
+LONGEST_SHOWN = 60  # characters of a name in an example
 MOST_COMPARED = 200  # names looked at for a suggestion: comparing takes long
 
 
@@ -189,10 +190,11 @@ def _refuse_missing(missing: Sequence[str], roles: Mapping[str, str], names: Seq
 
     def place(role: str) -> str:
         able = [name for name in spare if role in known_as(name)] or get_close_matches(role, spare, n=1, cutoff=0.8)
-        return roles.get(role, able[0] if len(able) == 1 else "...")
+        name = roles.get(role, able[0] if len(able) == 1 else "...")
+        return name if len(name) <= LONGEST_SHOWN else "..."
 
     example = [f"{role}={place(role)}" for role in ("size", "disorder") if role not in scene.elsewhere]
-    example.append(f"value={roles['value']}" if "value" in roles else f"mean={place('mean')}")
+    example.append(f"value={place('value')}" if "value" in roles else f"mean={place('mean')}")
     if "value" not in roles:
         example.append(f"error={place('error')}")
     raw = " (value=... for raw values)" if "mean" in missing else ""
