@@ -168,6 +168,19 @@ def test_what_hdf5_leaves_open_is_asked_back(tmp_path, datasets, attributes, opt
     assert str(caught.value).replace(f"{tmp_path}{os.sep}", "") == f"run.h5{sentence}"
 
 
+def test_a_fault_in_the_options_is_not_taken_for_damage(tmp_path):
+    """A pattern that cannot be used is named as such, though the file is open when that comes out."""
+    path = written(tmp_path / "run.h5", {**AXES, "r": MEAN, "sem": ERROR})
+    np.savez(tmp_path / "run.npz", r=MEAN)
+    for name in (path, tmp_path / "run.npz"):
+        with pytest.raises(ConfigurationError, match=r"^pattern: there is no placeholder '\{sise\}'; they are"):
+            read(name, pattern="L{sise}")
+        with pytest.raises(
+            ConfigurationError, match=r"^pattern: there are more than 2 \* in '\*a\*b\*'; write out more"
+        ):
+            read(name, pattern="*a*b*")
+
+
 def test_points_that_were_not_measured(tmp_path):
     """NaN for both mean and error leaves a point out with a note; NaN for one of them is refused."""
     mean, error = MEAN.copy(), ERROR.copy()

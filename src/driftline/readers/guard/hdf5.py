@@ -18,7 +18,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 import numpy.typing as npt
 
-from driftline.errors import InputError
+from driftline.errors import DriftlineError, InputError
 from driftline.readers.guard.files import opened
 from driftline.readers.guard.limits import MAX_DEPTH, MAX_NUMBERS, MAX_OBJECTS, MAX_REPEATED
 from driftline.wording import listed, shown
@@ -362,7 +362,7 @@ def _damage(place: str) -> Iterator[None]:
     """Turn what h5py raises on a broken file into one sentence; it raises many kinds, depending on what is broken."""
     try:
         yield
-    except InputError:
+    except DriftlineError:  # ours are ValueErrors, like some of the libraries' own
         raise
     except BlockingIOError as reason:
         raise InputError("another program is writing the file; try again when it is done", where=place) from reason

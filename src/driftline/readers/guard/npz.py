@@ -21,7 +21,7 @@ from typing import IO, Any, BinaryIO
 import numpy as np
 import numpy.typing as npt
 
-from driftline.errors import InputError
+from driftline.errors import DriftlineError, InputError
 from driftline.readers.guard.files import opened, refusals
 from driftline.readers.guard.limits import MAX_NUMBERS, MAX_OBJECTS
 from driftline.wording import listed, shown
@@ -178,7 +178,7 @@ def _damage(place: str) -> Iterator[None]:
     try:
         with refusals(place):
             yield
-    except InputError:
+    except DriftlineError:  # ours are ValueErrors, like some of the libraries' own
         raise
     except (
         zipfile.BadZipFile, zlib.error, struct.error, EOFError, ValueError, TypeError, LookupError, SyntaxError,
