@@ -205,6 +205,32 @@ def number(found: Quoted) -> str:
     return f"${found.number}{error}{power}$"
 
 
+def with_systematic(interval: Interval, systematic: float) -> str:
+    r"""Median with its error or errors and a systematic one, which has a bracket of its own.
+
+    Examples
+    --------
+    >>> print(with_systematic(Interval(16.53, 16.41, 16.65, 16.31, 16.78), 0.05))
+    $16.53(12)(5)$
+    >>> print(with_systematic(Interval(2.2, 1.92, 2.30, 1.66, 2.41), 0.24))
+    $2.20(^{+10}_{-28})(24)$
+    """
+    statistical = numerals.up_down(interval)
+    if not statistical.errors:
+        return number(statistical)
+    errors = (interval.high68 - interval.median, interval.median - interval.low68)
+    if len(statistical.errors) == 1:
+        errors = (interval.sd, interval.sd)
+    decisive = max(min(errors), max(errors) / 10)
+    up, down, other = numerals.quoted(interval.median, *errors, systematic, decisive=decisive).errors
+    both = (up,) if len(statistical.errors) == 1 else (up, down)
+    return (
+        number(Quoted(statistical.number, both, 0))[:-1]
+        + f"({other})"
+        + (rf"\times 10^{{{statistical.power}}}$" if statistical.power else "$")
+    )
+
+
 def value(interval: Interval | None) -> str:
     """Median with its error or errors."""
     return NOTHING if interval is None else number(numerals.up_down(interval))

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 from driftline import cautions, numerals, versions
 from driftline import separation as separation_module
 from driftline import verdict as verdict_module
-from driftline.report.latex import escape, limits, listed, name, number, plain_number, value
+from driftline.report.latex import escape, limits, listed, name, plain_number, value, with_systematic
 from driftline.report.methods_curves import critical
 from driftline.verdict import FINITE_SIZES, slowest_drift
 
@@ -83,8 +83,7 @@ def _headline(analysis: Analysis, found: Crossover) -> str:
     if found.systematic is None:
         critical_value, errors = value(found.disorder), "statistical error"
     else:
-        both = numerals.quoted(found.disorder.median, found.disorder.sd, found.systematic)
-        critical_value = f"${both.number}({both.errors[0]})({both.errors[1]})$" if both.errors else number(both)
+        critical_value = with_systematic(found.disorder, found.systematic)
         errors = "statistical and systematic error"
     text = (
         f"${critical(analysis.curves)}$ = {critical_value}{dimension} ({errors}; 95\\,\\% interval "
