@@ -416,6 +416,11 @@ def test_folders_of_the_parts(real, monkeypatch, capsys):
         assert main(arguments) == 0
         out = capsys.readouterr().out
         assert out.endswith(f"\nWritten to {name}{os.sep}\n")
+        # curves that merely drift collapse as well, so a collapse under transition forms alone comes with a caution
+        assert ("  priors: W_c uniform from 1.8125 to 4.4375; nu " in out) == (name == "collapse")
+        assert ("A good collapse is no evidence of a transition by itself" in " ".join(out.split())) == (
+            name == "collapse"
+        )
         assert {path.name for path in (place / name).iterdir()} == files
         assert {path.name for path in (place / name / "figures").iterdir()} == {
             f"{figure}.{kind}" for figure in figures for kind in ("pdf", "png")

@@ -19,7 +19,7 @@ TIED = "\N{NO-BREAK SPACE}"  # textwrap takes it for a letter, so a line never e
 GOOD, BAD, HEADING, WARNING, TEXT = "good", "bad", "heading", "warning", "text"
 
 # a number as the tables write it: sign or comparison, digits, decimals, error in brackets, exponent
-_NUMBER = re.compile(r"([-+<>]{0,2}\d+)((?:\.\d+)?(?:\(\d+(?:\.\d+)?\))?(?:e[-+]?\d+)?)")
+_NUMBER = re.compile(r"([-+<>]{0,2}\d+)((?:\.\d+)?(?:\([-+\d.]+\))?(?:e[-+]?\d+)?)")
 
 
 @dataclass(frozen=True)

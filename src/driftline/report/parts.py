@@ -7,7 +7,7 @@ from collections.abc import Iterator
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from driftline.blocks import BLANK, WARNING, Block, Paragraph, plain, spaced
+from driftline.blocks import BLANK, WARNING, Block, Paragraph, Table, plain, spaced
 from driftline.report import rows
 from driftline.report.configuration import ConfigurationFile
 from driftline.report.folder import output_folder
@@ -17,6 +17,7 @@ from driftline.report.record import ResultFile, collapse_tables, crossing_tables
 if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
+    from driftline.collapse import CollapseFit
     from driftline.figure_options import FigureOptions
     from driftline.partial import CollapseStudy, CrossingStudy
 
@@ -44,7 +45,8 @@ def collapse_blocks(study: CollapseStudy) -> Iterator[Block]:
     yield rows.collapse(study)
     yield from spaced([rows.checks(study)])
     yield Paragraph(CHECKS, indent="  ")
-    yield from spaced(fit.table() for fit in fits)
+    for fit in fits:
+        yield from _parameters(fit)
     yield BLANK
     for fit in fits:
         if fit.sampler.note:
@@ -52,6 +54,14 @@ def collapse_blocks(study: CollapseStudy) -> Iterator[Block]:
     if {fit.ansatz.hypothesis for fit in fits} == {"transition"}:
         yield Paragraph(ONE_SIDE, WARNING)
     yield Paragraph(f"Data: {rows.data(study)}")
+
+
+def _parameters(fit: CollapseFit) -> Iterator[Block]:
+    """The parameters as a table that fits a terminal, and their priors, which are long, below it."""
+    whole = fit.table()
+    yield from spaced([Table(whole.heading, whole.columns[:-1], tuple(row[:-1] for row in whole.rows))])
+    priors = "; ".join(f"{name.partition(' ')[0]} {prior}" for name, *_, prior in whole.rows)
+    yield Paragraph(f"priors: {priors}.", indent="  ")
 
 
 def write_crossings(study: CrossingStudy, folder: str | os.PathLike[str], *, force: bool = False) -> None:
