@@ -218,3 +218,15 @@ def test_a_table_without_labels_of_realisations(tmp_path: Path) -> None:
         InputError, match=r"line 1: no column holds the realisation; the columns are L, W, E; say which wi"
     ):
         reduce_spectra(path)
+
+
+def test_a_level_that_may_be_cut_short(tmp_path: Path) -> None:
+    """A last level without a line end may lack digits: it is refused, and left out only when asked."""
+    path = tmp_path / "levels.csv"
+    path.write_text("L,W,seed,energy\n" + "".join(f"8,1,0,{e}\n" for e in (1, 2, 4)) + "8,1,0,5", encoding="utf-8")
+    with pytest.raises(
+        InputError, match=r"line 5: the last line has no line break, so its value may be cut short; end"
+    ):
+        reduce_spectra(path, window=Window(fraction=1))
+    found = reduce_spectra(path, window=Window(fraction=1), input=InputOptions(skip_cut_lines=True))
+    assert (found.value.tolist(), found.levels.tolist()) == ([0.5], [3])

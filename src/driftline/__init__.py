@@ -48,12 +48,15 @@ if TYPE_CHECKING:
     from driftline.figures.posterior import draw_posterior as draw_posterior
     from driftline.figures.stability import draw_stability as draw_stability
     from driftline.inference.intervals import Interval as Interval
+    from driftline.observables import page_entropy as page_entropy
     from driftline.partial import CollapseStudy as CollapseStudy
     from driftline.partial import CrossingStudy as CrossingStudy
     from driftline.partial import study_collapse as study_collapse
     from driftline.partial import study_crossings as study_crossings
     from driftline.readers import read as read
     from driftline.reading import InputOptions as InputOptions
+    from driftline.reduction import Reduction as Reduction
+    from driftline.reduction import reduce_spectra as reduce_spectra
     from driftline.report.record import record as record
     from driftline.report.summary import summary as summary
     from driftline.report.writers import write_report as write_report
@@ -63,6 +66,8 @@ if TYPE_CHECKING:
     from driftline.scaling.priors import Normal as Normal
     from driftline.scaling.priors import Uniform as Uniform
     from driftline.settings import Settings as Settings
+    from driftline.spectra import Window as Window
+    from driftline.spectra import mean_gap_ratio as mean_gap_ratio
     from driftline.verdict import Verdict as Verdict
 
 _HOMES = {
@@ -92,7 +97,10 @@ _HOMES = {
     "report.writers": ("write_report",),
     "scaling.expression": ("ExpressionForm",),
     "scaling.priors": ("LogNormal", "LogUniform", "Normal", "Uniform"),
+    "observables": ("page_entropy",),
+    "reduction": ("Reduction", "reduce_spectra"),
     "settings": ("Settings",),
+    "spectra": ("Window", "mean_gap_ratio"),
     "verdict": ("Verdict",),
 }
 _HOME = {name: module for module, names in _HOMES.items() for name in names}

@@ -114,6 +114,7 @@ def _file_rows(path: Path, where: str, options: InputOptions, single: bool) -> F
             )
         return np.asarray(values, dtype=np.float64)
     table = read_text(path, where, options)
+    table.refuse_cut_value()
     if not single:
         if table.width == 1:
             raise InputError(f"there is one number in a row; this must be {_expected(single)}", where=where)
@@ -187,6 +188,9 @@ def _table(path: Path, place: str, options: InputOptions, progress: Progress | N
             raise InputError(f"{problem}{role}=...", where=table.where)
     source = long_text(path, place, table, columns, skip_cut_lines=options.skip_cut_lines)
     for block in stream(source, averaged=False, progress=progress):
+        if source.notes and not options.skip_cut_lines:  # the whole table has been read by now
+            problem = f"{source.notes[0]}; end it with a line break if it is whole, or say --skip-cut-lines"
+            raise InputError(problem.replace("; it was used", ""), where=place)
         assert block.realisation is not None
         starts = np.flatnonzero(np.diff(block.realisation, prepend=block.realisation[0] - 1))
         for label, levels in zip(block.realisation[starts], np.split(block.values, starts[1:]), strict=True):
