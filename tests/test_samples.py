@@ -222,7 +222,10 @@ def test_unlabelled_counts_that_differ_cannot_be_paired():
     tables = noise()
     tables[2] = tables[2][:-1]
     assert sampled(blocks_of(tables)).curves[0].samples.tolist() == [50, 50, 49, 50]
-    with pytest.raises(InputError, match="there are 49 realisations at disorder 3 and 50 at 1"):
+    with pytest.raises(
+        InputError,
+        match=r"^r.dat, size 8, disorder 3: the values are said .* there are 49 realisations at disorder 3 and 50 at 1",
+    ):
         sampled(blocks_of(tables), SampleOptions(paired=True))
 
 

@@ -63,7 +63,7 @@ class Pairing:
         return round(1 / scatter) if scatter > 0 else int(counts.min())
 
 
-def pairing(size: float, points: Sequence[Point], paired: bool | None) -> Pairing:
+def pairing(points: Sequence[Point], paired: bool | None) -> Pairing:
     """How `points` of one size hang together, given what the user says (`paired`; None leaves it to the labels).
 
     Raises
@@ -73,7 +73,8 @@ def pairing(size: float, points: Sequence[Point], paired: bool | None) -> Pairin
     """
     overlap = _matched(points)
     if paired and overlap is None:
-        raise InputError(f"the values are said to be paired, but {_obstacle(points)}", where=f"size {size:g}")
+        shortest = min(points, key=lambda point: point.values.size)
+        raise InputError(f"the values are said to be paired, but {_obstacle(points)}", where=shortest.where)
     correlation, z = (None, None) if overlap is None else _neighbours(points, overlap)
     labelled = points[0].labels is not None
     shared = bool(paired or (paired is None and labelled)) and overlap is not None

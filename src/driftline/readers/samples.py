@@ -156,7 +156,7 @@ def sampled(blocks: Iterable[Block], options: SampleOptions | None = None) -> Sa
     for size, group in sorted(groups.items()):
         points = [merged(found, average) for _, found in sorted(group.items())]
         estimates = [_estimate(point, average) for point in points]
-        bonds = pairing(size, points, options.paired)
+        bonds = pairing(points, options.paired)
         curves.append(_curve(size, points, estimates, bonds))
         diagnostics.append(_diagnostics(size, points, bonds, average))
         notes += [note for point in points for note in point.notes] + identical(size, points)
