@@ -16,6 +16,7 @@ import numpy.typing as npt
 from driftline.curves import Curve, FloatArray
 from driftline.errors import InputError
 from driftline.readers.base import located
+from driftline.readers.guard.limits import MAX_HELD
 from driftline.reading import InputOptions
 from driftline.wording import listed
 
@@ -65,6 +66,20 @@ class Assembled:
     realisations: Sequence[Mapping[str, Any]] = ()
 
 
+def _held(pieces: Iterable[Piece]) -> Iterator[Piece]:
+    """The pieces, as long as the memory holds them: a small file can name one large array under many names."""
+    total = 0
+    for piece in pieces:
+        total += sum(array.size for array in piece.data.values())
+        if total > MAX_HELD:
+            raise InputError(
+                f"the data hold more than {MAX_HELD} numbers with their parameters; average groups of realisations, or "
+                "store one long table, which is read a part at a time",
+                where=piece.source,
+            )
+        yield piece
+
+
 def assembled(pieces: Iterable[Piece], options: InputOptions) -> Assembled:
     """Curves of `pieces`.
 
@@ -73,7 +88,7 @@ def assembled(pieces: Iterable[Piece], options: InputOptions) -> Assembled:
     InputError
         If a size or error is not positive, a point occurs twice among averaged rows, or counts are missing.
     """
-    every = list(pieces)
+    every = list(_held(pieces))
     for piece in every:
         _check_positive(piece, "size", "a size must be positive, not {:g}")
     if any("value" in piece.data for piece in every):

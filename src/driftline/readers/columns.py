@@ -180,7 +180,7 @@ def _refuse_nameless(names: Sequence[str], scene: Scene) -> None:
     else:
         problem = (
             f"the {len(names)} {scene.word}s have no names; say what they hold, in their order, for example --columns "
-            f"{','.join(example)}"
+            f"{','.join(example[:12])}{',...' if len(example) > 12 else ''}"
         )
     raise InputError(problem, where=scene.where)
 

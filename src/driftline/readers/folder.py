@@ -224,5 +224,7 @@ def _fingerprint(files: Sequence[_File]) -> str:
     """SHA-256 of the paths and contents of all files, as ``sha256sum`` would list them."""
     total = hashlib.sha256()
     for file in sorted(files, key=lambda file: file.relative):
-        total.update(f"{sha256(file.path, file.place)}  {file.relative}\n".encode())
+        # a name that is not UTF-8 counts as the bytes that it is
+        line = f"{sha256(file.path, file.place)}  {file.relative}\n"
+        total.update(line.encode("utf-8", "surrogateescape"))
     return total.hexdigest()

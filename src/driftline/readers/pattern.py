@@ -48,7 +48,7 @@ class Pattern:
         Raises
         ------
         ConfigurationError
-            If a placeholder is unknown, or a part of the path is empty or leads upwards.
+            If a placeholder is unknown, there are too many ``*``, or the path leads upwards or nowhere.
         """
         for match in _TOKEN.finditer(text):
             if match[1] is not None and match[1] not in PLACEHOLDERS:
@@ -95,6 +95,8 @@ def _expression(text: str, seen: set[str]) -> str:
     pieces, last = [], 0
     for match in _TOKEN.finditer(text):
         pieces.append(re.escape(text[last : match.start()]))
+        if match.start() == last and last:
+            pieces.append(r"(?!\d)" if match[1] is None else r"(?<!\d)")  # no number is cut in two
         pieces.append(_group(match[1], seen))
         last = match.end()
     return "".join([*pieces, re.escape(text[last:])])

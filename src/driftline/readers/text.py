@@ -13,6 +13,7 @@ from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, field
 from functools import cached_property
 from pathlib import Path
+from typing import NoReturn
 
 import numpy as np
 import numpy.typing as npt
@@ -21,10 +22,12 @@ from driftline.curves import LARGEST, FloatArray
 from driftline.errors import InputError
 from driftline.readers.base import LABEL_NAMES, label, number
 from driftline.readers.guard import lines
+from driftline.readers.guard.limits import MAX_CELLS, MAX_COLUMNS
 from driftline.reading import SEPARATORS, InputOptions
 from driftline.wording import listed, shown
 
 PROBED = 200  # rows that decide on the separator
+MOST_NOTES = 100  # on comments that were not used
 
 _LABEL = re.compile(r"#+\s*([A-Za-z_]\w*)\s*:(.*)", re.ASCII)
 #: Takes away every character of plain numbers and what separates them when joined, and turns Fortran's D into E
@@ -161,7 +164,10 @@ class _Body:
             if not self.lines:
                 self._take_label(text, count)
                 self.comments.append((count, text.lstrip("# \t")))
+                del self.comments[:-PROBED]  # earlier ones are not looked at
         elif text:
+            if len(self.lines) >= MAX_CELLS:
+                _refuse_length(self.place)
             self.lines.append((count, line))
 
     def _take_label(self, text: str, count: int) -> None:
@@ -171,7 +177,8 @@ class _Body:
         name, value = match[1], match[2].strip()
         where = f"{self.place}, line {count}, label {shown(name)}"
         if name not in LABEL_NAMES:
-            self.notes.append(f"line {count}: {shown(name)} is not a label, so this comment was not used")
+            if len(self.notes) < MOST_NOTES:
+                self.notes.append(f"line {count}: {shown(name)} is not a label, so this comment was not used")
             return
         if name in self.labels:
             raise InputError("this label was already given above; keep one", where=where)
@@ -187,7 +194,7 @@ def parsed(numbered: Iterable[tuple[int, str]], place: str, options: InputOption
     if not body.lines:
         raise InputError("the file holds no table, only comments or blank lines", where=place)
     separator = options.separator or _separator(body)
-    cells = [_split(line, SEPARATORS[separator], f"{place}, line {count}") for count, line in body.lines]
+    cells = _cells(body, SEPARATORS[separator])
     header = options.header if options.header is not None else _is_header(cells[0])
     names, header_line, commented = None, None, False
     numbers = [count for count, _ in body.lines]
@@ -206,6 +213,29 @@ def parsed(numbered: Iterable[tuple[int, str]], place: str, options: InputOption
     return TextTable(
         place, names, header_line, cells, np.array(numbers), body.labels, body.notes, separator, whole, commented
     )  # fmt: skip
+
+
+def _cells(body: _Body, separator: str | None) -> list[list[str]]:
+    """The cells of every line, up to a number that the memory holds."""
+    cells, total = [], 0
+    for count, line in body.lines:
+        row = _split(line, separator, f"{body.place}, line {count}")
+        if len(row) > MAX_COLUMNS:
+            problem = f"there are {len(row)} columns, but at most {MAX_COLUMNS} can be read"
+            raise InputError(problem, where=f"{body.place}, line {count}")
+        total += len(row)
+        if total > MAX_CELLS:
+            _refuse_length(body.place)
+        cells.append(row)
+    return cells
+
+
+def _refuse_length(place: str) -> NoReturn:
+    raise InputError(
+        f"the table holds more than {MAX_CELLS} numbers; average groups of realisations, or write raw values as one "
+        "table with the columns size, disorder, realisation, value, which is read a part at a time",
+        where=place,
+    )
 
 
 def _separator(body: _Body) -> str:

@@ -71,9 +71,7 @@ def write_hdf5(curves: Curves, path: str | os.PathLike[str], *, facts: Facts = M
     ConfigurationError
         If the file cannot be written.
     """
-    import h5py
-
-    with replacing(path) as part, h5py.File(part, "w") as file:
+    with replacing(path) as part, new_hdf5(part) as file:
         for name, value in {"format": FORMAT, **asdict(curves.labels)}.items():
             _set_attribute(file, name, "none" if value is None else value)
         group = file.create_group("curves")
@@ -127,13 +125,37 @@ def write_realisations(
 def _write_columns(
     columns: Mapping[str, npt.NDArray[Any]], labels: Mapping[str, str | float | None], part: Path, remark: str
 ) -> None:
-    import h5py
-
-    with h5py.File(part, "w") as file:
+    with new_hdf5(part) as file:
         for name, value in {"format": REALISATIONS, **({"remark": remark} if remark else {}), **labels}.items():
             _set_attribute(file, name, "none" if value is None else value)
         for name, column in columns.items():
             file.create_dataset(name, data=column, track_times=False)
+
+
+@contextmanager
+def new_hdf5(path: Path, **options: Any) -> Iterator[h5py.File]:
+    """A new HDF5 file, made in memory and put at `path` when the block ends well.
+
+    The HDF5 library (seen with 2.0) ends the whole process with a segmentation fault when the disk is full.
+
+    Parameters
+    ----------
+    path : Path
+    **options
+        Given on to `h5py.File`.
+
+    Raises
+    ------
+    OSError
+        If the system does not take the file.
+    """
+    import h5py
+
+    with h5py.File(str(path), "w", driver="core", backing_store=False, **options) as file:
+        yield file
+        file.flush()
+        image = file.id.get_file_image()
+    path.write_bytes(image)
 
 
 def _set_attribute(place: h5py.Group, name: str, value: str | float) -> None:

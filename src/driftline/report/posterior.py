@@ -5,6 +5,7 @@ from __future__ import annotations
 from pathlib import Path
 from typing import TYPE_CHECKING
 
+from driftline.readers.write import new_hdf5
 from driftline.report.base import Writer
 
 if TYPE_CHECKING:
@@ -19,10 +20,8 @@ class PosteriorFile(Writer):
 
     def write(self, analysis: Analysis | CollapseStudy, folder: Path) -> None:
         """Write `folder/posterior.h5`."""
-        import h5py
-
         # no creation times, so that two equal runs write equal files
-        with h5py.File(folder / "posterior.h5", "w", track_order=True) as file:
+        with new_hdf5(folder / "posterior.h5", track_order=True) as file:
             file.attrs["schema"] = "driftline-posterior/1"
             for fit in analysis.comparison.fits:
                 group = file.create_group(fit.ansatz.name, track_order=True)

@@ -20,7 +20,7 @@ import numpy.typing as npt
 
 from driftline.errors import DriftlineError, InputError
 from driftline.readers.guard.files import opened
-from driftline.readers.guard.limits import MAX_DEPTH, MAX_NUMBERS, MAX_OBJECTS, MAX_REPEATED
+from driftline.readers.guard.limits import MAX_DEPTH, MAX_NAME, MAX_NUMBERS, MAX_OBJECTS, MAX_REPEATED
 from driftline.wording import listed, shown
 
 if TYPE_CHECKING:
@@ -131,7 +131,7 @@ def walk(
     Raises
     ------
     InputError
-        If a group contains itself, groups are nested too deeply, or there are too many objects.
+        If a group contains itself, groups are nested too deeply, a name is too long, or there are too many objects.
     """
     import h5py
 
@@ -149,6 +149,8 @@ def walk(
         seen.add(above[-1])
         below = []
         for name in group:
+            if len(name) > MAX_NAME:
+                raise InputError(f"the name {shown(name)} is longer than {MAX_NAME} characters", where=place)
             inner = f"{path}/{name}"
             if not _is_hard(group, name):
                 if skipped is not None:

@@ -23,7 +23,7 @@ import numpy.typing as npt
 
 from driftline.errors import DriftlineError, InputError
 from driftline.readers.guard.files import opened, refusals
-from driftline.readers.guard.limits import MAX_NUMBERS, MAX_OBJECTS
+from driftline.readers.guard.limits import MAX_NAME, MAX_NUMBERS, MAX_OBJECTS
 from driftline.wording import listed, shown
 
 _MAGIC = b"\x93NUMPY"
@@ -39,6 +39,8 @@ class Archive:
         self._place = place
         self._members = {info.filename.removesuffix(".npy"): info for info in packed.infolist()}
         self._packed = packed
+        if long := next((name for name in self._members if len(name) > MAX_NAME), None):
+            raise InputError(f"the name {shown(long)} is longer than {MAX_NAME} characters", where=place)
 
     @property
     def names(self) -> tuple[str, ...]:

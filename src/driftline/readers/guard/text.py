@@ -18,7 +18,7 @@ from typing import BinaryIO, cast
 
 from driftline.errors import InputError
 from driftline.readers.guard.files import opened, refusals
-from driftline.readers.guard.limits import MAX_LINE, MAX_TEXT
+from driftline.readers.guard.limits import MAX_LINE, MAX_LINES, MAX_TEXT
 
 #: What to do about a summary that is too large.
 SUMMARY = "a summary has one row per size and disorder, so average over realisations first"
@@ -79,6 +79,8 @@ def lines(
         # utf-8-sig drops the mark that spreadsheets put in front
         reader = io.TextIOWrapper(stream, encoding="utf-8-sig", newline=None)
         for count in itertools.count(1):
+            if count > MAX_LINES:
+                raise InputError(f"the file has more than {MAX_LINES} lines; {advice}", where=place)
             try:
                 line = reader.readline(longest + 2)  # one for the end of the line, one to see that it is too long
             except UnicodeDecodeError as reason:
