@@ -33,6 +33,7 @@ BINS = 40
 SMOOTHING = 0.7  # of the kernel width that Scott's rule (Multivariate Density Estimation, 1992) gives
 REACH = 0.004  # share of the draws beyond each end of an axis
 EDGE = 0.04  # inches between the outermost labels and the edge of the figure
+LONGEST_UNIT = 24  # characters, commands of mathtext included
 LEVELS = (0.95, 0.68)  # shares of the posterior inside the contours
 #: Symbols that follow the symbol of the disorder.
 DISORDERS = {"W_c": r"{W}_c", "W_mid": r"{W}_\mathrm{{mid}}", "D": r"D"}
@@ -73,6 +74,7 @@ def draw_posterior(fit: CollapseFit, *, ax: Any = None) -> Any:
                 unused.axis("off")
         _key(grid, any(_prior(fit, name) is not None for name in names))
         if own:
+            _fit_margins(grid)  # labels are fitted to panels of nearly the final size
             finish(style.figure_of(grid[0, 0]), few=len(names) > 1)
             _fit_margins(grid)
             _shrink_titles(grid)
@@ -193,7 +195,8 @@ def _symbol(fit: CollapseFit, name: str) -> str:
 
 def _unit(fit: CollapseFit, name: str) -> str:
     unit = fit.curves.labels.disorder_unit
-    return f" ({labels.unit(unit)})" if unit and name in DISORDERS else ""
+    # a panel has no room for a long one, which the other figures show
+    return f" ({labels.unit(unit)})" if name in DISORDERS and 0 < len(unit) <= LONGEST_UNIT else ""
 
 
 def _label(grid: Any, symbols: Sequence[str], units: Sequence[str]) -> None:
