@@ -22,6 +22,7 @@ from driftline.scaling.likelihood import NUISANCE
 from driftline.scaling.priors import Uniform
 from driftline.sensitivity import PriorShift
 from driftline.settings import Settings
+from driftline.verdict import SUPPORTED
 
 SOURCE = Path(__file__).parent.parent / "src" / "driftline"
 
@@ -130,7 +131,7 @@ def test_measured_rates_and_what_is_not_excluded():
     analysis = made_analysis(names=("power-law:corrected", "power-law:linear-drift"))
     rates = replace(analysis.verdict, false_alarm=nearest(analysis.curves))
     text = methods(replace(analysis, verdict=rates)).replace("\n", " ")
-    assert "the forms with a critical disorder hold a probability of 0.5 or more" in text
+    assert f"the forms with a critical disorder hold a probability of {SUPPORTED:g} or more" in text
     assert "A critical disorder that moves by less than" in text
     assert "Measured on simulated data of known truth" in text
     assert "Measured on simulated data" not in methods(made_analysis()).replace("\n", " ")

@@ -59,7 +59,7 @@ def spread_apart(wanted: FloatArray, gap: float, low: float, high: float) -> Flo
 
     Examples
     --------
-    >>> spread_apart(np.array([0.5, 0.5, 0.9]), 0.2, 0.0, 1.0).tolist()
+    >>> spread_apart(np.array([0.5, 0.5, 0.9]), 0.2, 0.0, 1.0).round(3).tolist()
     [0.4, 0.6, 0.9]
     """
     order = np.argsort(wanted, kind="stable")
