@@ -15,7 +15,7 @@ from driftline.curves import FloatArray
 from driftline.figures import style
 from driftline.figures.base import Drawing
 from driftline.figures.finish import finish
-from driftline.figures.legends import Entries, legend_above
+from driftline.figures.legends import Entries, legend_above, legend_across
 
 if TYPE_CHECKING:
     from driftline.analysis import Analysis
@@ -60,8 +60,11 @@ def draw_comparison(comparison: Comparison, *, ax: tuple[Axes, Axes] | None = No
         names = [fit.ansatz.name.replace(":", ":\n") if narrow else fit.ansatz.name for fit in fits]
         left.set_yticks(range(len(fits)), names, parse_math=False)
         _probabilities(left, [comparison.probabilities[number] for number in order])
-        _legend(left, fits)
-        if own:
+        entries = _entries(left, fits)
+        if not own:
+            legend_above(left, entries)
+        else:
+            legend_across(style.figure_of(left), entries)
             finish(style.figure_of(left))
     return left, right
 
@@ -146,7 +149,7 @@ def _scale(axes: Axes, lowest: float, highest: float) -> None:
         return
     axes.set_xscale("symlog", linthresh=LINEAR, linscale=1.0)
     decades = int(np.ceil(np.log10(-lowest) - 0.02))
-    step = -(-(decades - 1) // 3)
+    step = -(-(decades - 1) // (1 if style.is_narrow(style.figure_of(axes)) else 3))
     ticks = [0.0, *(-(10.0**power) for power in range(1, decades + 1, step))]
     axes.set_xticks(ticks)
     axes.xaxis.set_major_formatter(FuncFormatter(lambda value, _: _short(value)))
@@ -171,7 +174,7 @@ def _probabilities(axes: Axes, probabilities: Sequence[float]) -> None:
     axes.text(1.02, 1.0, " $P$", transform=axes.transAxes, va="bottom", ha="left", fontsize=style.letters())
 
 
-def _legend(axes: Axes, fits: Sequence[CollapseFit]) -> None:
+def _entries(axes: Axes, fits: Sequence[CollapseFit]) -> Entries:
     present = [key for key in HYPOTHESES if any(fit.ansatz.hypothesis == key for fit in fits)]
     handles = []
     for key in present:
@@ -188,4 +191,4 @@ def _legend(axes: Axes, fits: Sequence[CollapseFit]) -> None:
                 markerfacecolor=_face(number),
             )
         )
-    legend_above(axes, Entries(handles, [HYPOTHESES[key][0] for key in present]))
+    return Entries(handles, [HYPOTHESES[key][0] for key in present])

@@ -44,6 +44,7 @@ def _finish(figure: Figure, whole: Sequence[Axis], few: bool) -> None:
             if isinstance(axis.get_major_locator(), AutoLocator):  # not where ticks were chosen, or taken off
                 axis.set_major_formatter(_formatter())
                 _thin_ticks(axis, whole=axis in whole, few=few or ax in insets)
+            if isinstance(axis.get_major_formatter(), ScalarFormatter):  # also where ticks are those of another panel
                 _power_into_label(axis)
             _shrink_label(ax, axis)
     for ax in figure.axes:
