@@ -163,6 +163,14 @@ def test_links_within_the_folder_are_followed_once(runs):
 OUT = "this link leads out of the folder, which is not followed; copy the data here or give the folder that holds them"
 
 
+def test_links_in_a_circle_multiply_nothing(runs):
+    """Twenty links to the folder itself cost twenty entries a visit, not the sixth power of twenty."""
+    for number in range(20):
+        (runs / f"here{number}").symlink_to(".")
+    anything = [re.compile(".*")] * 6
+    assert list(guard.matching_files(runs, anything, "runs", most=100)) == []
+
+
 def test_what_is_refused_in_a_folder(runs):
     """Links out of the folder, broken links and FIFOs are refused where their name fits, and only there."""
     for name, target, text in (

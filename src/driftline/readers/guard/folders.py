@@ -44,7 +44,7 @@ def matching_files(
         The folder that the user named, and how.
     parts : sequence of re.Pattern
         For each level a regular expression that the whole name must match; the last one is for files. So the depth is
-        bounded, whatever links lead in a circle.
+        bounded; and a link to a folder that holds it is passed over.
     most : int
         Most entries to look at.
 
@@ -116,8 +116,13 @@ def _matching(
             if not is_file:
                 raise InputError("this is not a regular file; move it away or narrow the pattern", where=below)
             yield Path(entry.path), (*found, match)
-        elif not last and is_folder:
+        elif not last and is_folder and not _leads_upwards(entry, folder):
             yield from _matching(Path(entry.path), parts, (*found, match), root, budget)
+
+
+def _leads_upwards(entry: os.DirEntry[str], folder: Path) -> bool:
+    """Whether a link leads to a folder that holds it: twenty of them six deep would be millions of ways to one file."""
+    return entry.is_symlink() and Path(os.path.realpath(folder)).is_relative_to(os.path.realpath(entry.path))
 
 
 def _entries(folder: Path, where: str, budget: _Budget) -> list[os.DirEntry[str]]:
