@@ -136,8 +136,9 @@ def test_weighted_intervals_agree_with_resampling() -> None:
     assert resampled.high95 == pytest.approx(direct.high95, abs=0.05)  # systematic resampling adds almost nothing
 
 
-def test_chain_agrees_with_importance_sampling() -> None:
-    """Chain and importance sampling, two independent methods, give the same posterior of a collapse."""
+@pytest.mark.parametrize("global_moves", [False, True])
+def test_chain_agrees_with_importance_sampling(global_moves: bool) -> None:
+    """Chain, with and without global moves, and importance sampling give the same posterior of a collapse."""
     rng = np.random.default_rng(8)
     curves = simulate((8, 10, 12, 16), np.linspace(2, 6, 13), PowerLawTruth(4.0), 0.003, 3)
     target = Posterior(curves, parse_ansatz("power-law", curves))
@@ -145,12 +146,28 @@ def test_chain_agrees_with_importance_sampling() -> None:
     draws = importance_sample(target, mixture, 6000, rng)
     mean = draws.weights @ draws.places
     sd = np.sqrt(draws.weights @ (draws.places - mean) ** 2)
-    chain = run_chain(target, start.resample(64, rng) + 1e-3 * sd * rng.standard_normal((64, 4)), rng)
+    first = start.resample(64, rng) + 1e-3 * sd * rng.standard_normal((64, 4))
+    chain = run_chain(target, first, rng, mixture=mixture if global_moves else None)
     assert chain.converged
     error = np.sqrt(1 / chain.effective + 1 / draws.effective)
     np.testing.assert_array_less(np.abs(chain.draws.mean(axis=0) - mean) / sd, 4 * error)
     # relative error of a standard deviation: 1/sqrt(2 n) for a normal; for heavier tails twice that; four of them
     np.testing.assert_allclose(chain.draws.std(axis=0), sd, rtol=4 * 2 * error / np.sqrt(2))
+
+
+def test_global_moves_find_both_peaks() -> None:
+    """Walkers that start on one of two distant peaks reach the other, in the right numbers; local moves do not."""
+    rng = np.random.default_rng(14)
+    whole = Mixture(np.ones(2), np.array(TWO), np.tile(np.linalg.cholesky(COVARIANCE), (2, 1, 1))).guarded()
+    start = rng.multivariate_normal(TWO[0], COVARIANCE, 64)
+    shares = []
+    for mixture in (whole, None):
+        draws = run_chain(two_peaks, start, rng, mixture=mixture).draws
+        near = np.linalg.norm(draws - TWO[0], axis=1) < np.linalg.norm(draws - TWO[1], axis=1)
+        shares.append(float(near.mean()))
+    # masses 3 and 1; a thousand effective draws know a share to 0.014, four of those
+    assert abs(shares[0] - 0.75) < 0.056
+    assert shares[1] > 0.9  # negative control: without them hardly a walker gets across
 
 
 def test_chain_that_is_too_short_says_so(monkeypatch: pytest.MonkeyPatch) -> None:

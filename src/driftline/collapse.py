@@ -338,7 +338,7 @@ def fit_collapse(
     health = SamplerHealth("importance", draws.effective, None, True)
     if not quick:
         part = _range(tell, f"{form.name}: sampling", 0.1, 0.8)
-        mixture, health = _chained(target, draws, rng, part)
+        mixture, health = _chained(target, mixture, draws, rng, part)
         draws = sample_until(target, mixture, EVIDENCE_DRAWS, EFFECTIVE_LEAST, rng)
     tell(f"{form.name}: parameters", 0.85)
     held, physical = _physical(target, draws, rng, quick)
@@ -416,10 +416,14 @@ def _physical(
 
 
 def _chained(
-    target: Posterior, draws: WeightedDraws, rng: np.random.Generator, progress: Callable[[float], None]
+    target: Posterior,
+    mixture: Mixture,
+    draws: WeightedDraws,
+    rng: np.random.Generator,
+    progress: Callable[[float], None],
 ) -> tuple[Mixture, SamplerHealth]:
     """A mixture fitted to a chain that starts from `draws`, and the health of that chain."""
-    chain = run_chain(target, draws.resample(WALKERS, rng) + _jitter(draws, rng), rng, progress)
+    chain = run_chain(target, draws.resample(WALKERS, rng) + _jitter(draws, rng), rng, progress, mixture=mixture)
     thin = chain.draws[:: max(1, len(chain.draws) // 5000)]
     fitted = fit_mixture(thin, np.full(len(thin), 1 / len(thin)), rng)
     return fitted, SamplerHealth("chain", chain.effective, chain.autocorrelation, chain.converged)

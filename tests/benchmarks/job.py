@@ -48,7 +48,9 @@ def main():
     with tempfile.TemporaryDirectory() as folder:
         out = str(Path(folder) / "out")
         seconds(chosen.data, KINDS["--quick, 1 process"], out)  # compiles, once for all
-        rounds = [{name: seconds(chosen.data, options, out) for name, options in KINDS.items()} for _ in range(chosen.runs)]
+        rounds = [
+            {name: seconds(chosen.data, options, out) for name, options in KINDS.items()} for _ in range(chosen.runs)
+        ]
     print(f"{'run':24}{'wall s':>10}{'processor s':>14}")
     medians = {}
     for name in KINDS:

@@ -21,7 +21,6 @@ EXAMPLES = examples(
     "driftline reduce spectra --pattern 'L{size}/W{disorder}/{realisation}.dat' --out r.csv",
     "driftline reduce ed.h5 --pattern 'L{size}/W{disorder}/levels' --states 50 --centre middle",
     "driftline reduce levels.csv --fraction 0.2 --centre energy=0 --observable gap-ratio:unitary",
-    "driftline analyse r.csv",
 )
 
 

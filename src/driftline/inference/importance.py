@@ -11,6 +11,7 @@ from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
 import numpy as np
+import numpy.typing as npt
 from scipy.special import gammaln, logsumexp
 
 from driftline.curves import FloatArray
@@ -55,7 +56,15 @@ class Mixture:
     def draw(self, count: int, rng: np.random.Generator) -> FloatArray:
         """`count` draws, shape (count, d); components get their shares as evenly as whole numbers allow."""
         places = (np.cumsum(self.weights) / self.weights.sum())[:-1]
-        component = np.searchsorted(places, (np.arange(count) + rng.random()) / count)
+        return self._of(np.searchsorted(places, (np.arange(count) + rng.random()) / count), rng)
+
+    def draw_independent(self, count: int, rng: np.random.Generator) -> FloatArray:
+        """`count` draws, shape (count, d), each of which knows nothing of the others."""
+        return self._of(rng.choice(self.weights.size, count, p=self.weights / self.weights.sum()), rng)
+
+    def _of(self, component: npt.NDArray[np.intp], rng: np.random.Generator) -> FloatArray:
+        """One draw of each of these components."""
+        count = component.size
         normal = rng.standard_normal((count, self.centres.shape[1]))
         radius = np.sqrt(DEGREES / rng.chisquare(DEGREES, count))
         offsets = np.einsum("nij,nj->ni", self.factors[component], normal) * radius[:, None]
