@@ -12,9 +12,6 @@ from typing import Any
 
 Progress = Callable[[str, float], None]
 
-#: Seconds to wait for a process that was told to end; usually it takes milliseconds.
-PATIENCE = 5.0
-
 
 @dataclass(frozen=True, eq=False)
 class Task:
@@ -67,9 +64,8 @@ def _leave_interrupts_to_parent() -> None:
 
 def _end_workers(pool: ProcessPoolExecutor, others: frozenset[BaseProcess]) -> None:
     """End the processes of the pool, but not `others`, which a program that uses this package may have started."""
-    pool.shutdown(wait=False, cancel_futures=True)
-    workers = [child for child in multiprocessing.active_children() if child not in others]
-    for worker in workers:
-        worker.terminate()
-    for worker in workers:
-        worker.join(PATIENCE)
+    for child in multiprocessing.active_children():
+        if child not in others:
+            child.terminate()
+    # the pool's own thread notices and waits for them; a second one that waited too could miss the end of a process
+    pool.shutdown(wait=True, cancel_futures=True)
