@@ -154,7 +154,8 @@ def sampling(analysis: Analysis) -> str:
 def _chains() -> str:
     return (
         f"The posterior is then sampled by {chains.WALKERS} walkers~\\cite{{foremanmackey2013}} with "
-        r"differential-evolution~\cite{terbraak2006}, snooker~\cite{terbraak2008} and stretch~\cite{goodman2010} moves "
+        r"differential-evolution~\cite{terbraak2006}, snooker~\cite{terbraak2008} and stretch~\cite{goodman2010} moves"
+        r", and in half of the steps with independent proposals from the adapted mixture~\cite{tierney1994}, "
         f"until the chain is {chains.LENGTHS_WANTED:g} autocorrelation times long and holds "
         f"{number_words(int(chains.EFFECTIVE_WANTED))} effective draws; the evidence comes from "
         f"{number_words(fitting.EVIDENCE_DRAWS)} draws or more of a mixture fitted to the chain."
