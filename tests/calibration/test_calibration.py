@@ -119,14 +119,16 @@ def test_no_set_is_counted_twice(published: list[dict[str, str]]) -> None:
 @pytest.mark.parametrize("grid", GRIDS)
 @pytest.mark.parametrize("family", FAMILIES)
 def test_curves_run_through_most_of_their_range(family: str, grid: str) -> None:
-    """Without noise the curves of a cell span at least 90 % of the height between the two plateaus.
+    """Without noise the curves of a cell span nearly all of the height between the two plateaus.
 
-    By hand: a logistic of width 1 cut at three and a half widths on both sides spans tanh(3.5 / 2) = 94 % of it.
+    By hand: a logistic of width 1 cut at three and a half widths on both sides spans tanh(3.5 / 2) = 94 % of it; a
+    correction shifts one end of the smallest size's curve by 7 + 5 % and the other by 7 - 5 %, at most 10 % less.
     """
     sizes = np.array(GRIDS[grid], dtype=np.float64)
     truth = FAMILIES[family].build(sizes)
     values = np.array([truth.value(size, DISORDER) for size in sizes])
-    assert np.ptp(values) >= 0.9 * 0.14
+    least = 0.84 if family.endswith("-corrected") else 0.94
+    assert np.ptp(values) >= least * 0.14 - 1e-4  # tanh(3.5 / 2) is 0.9414
 
 
 def test_ranks_of_the_exact_posterior_are_uniform() -> None:
