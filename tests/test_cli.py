@@ -304,6 +304,25 @@ def test_interruption_from_outside(data):
     assert list(data.parent.iterdir()) == [data]
 
 
+def test_an_interrupt_that_python_can_only_report_still_ends_the_run(data, monkeypatch, capsys):
+    """Raised in a destructor, as in a callback of the import system, it is not lost, and no traceback is shown."""
+
+    class Interrupted:
+        def __del__(self):
+            raise KeyboardInterrupt
+
+    def analyse(curves, *, settings, progress):
+        Interrupted()
+        time.sleep(5)
+        raise AssertionError("the interrupt was lost")
+
+    monkeypatch.setattr(analysis_module, "analyse", analyse)
+    hook = sys.unraisablehook
+    assert main(["analyse", str(data)]) == 130
+    assert capsys.readouterr().err == "driftline: interrupted, nothing was written\n"
+    assert sys.unraisablehook is hook
+
+
 def test_bugs_are_not_hidden(data, monkeypatch):
     """An exception that no user can cause is passed on, so that its traceback is seen."""
 

@@ -8,11 +8,14 @@ Everything numerical is imported inside the commands, so that ``--help`` is imme
 
 from __future__ import annotations
 
+import _thread
 import errno
 import io
 import os
 import sys
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
+from contextlib import contextmanager
+from threading import Timer
 
 import click
 
@@ -23,6 +26,7 @@ from driftline.wording import printable
 
 DONE, BAD_INPUT, BAD_USAGE, INTERRUPTED = 0, 1, 2, 130
 
+LATER = 0.02  # seconds after which an interrupt is raised again
 #: The commands in the order in which the help lists them: each is the function of its name in the module of its name.
 COMMANDS = ("analyse", "inspect", "reduce", "crossings", "collapse", "simulate", "ansatze", "calibrate", "fields")
 
@@ -56,7 +60,7 @@ def main(argv: Sequence[str] | None = None) -> int:
 def _run(arguments: list[str]) -> int:
     """Exit code of the command, with what went wrong on standard error."""
     try:
-        with driftline.make_context("driftline", arguments) as context:
+        with _interrupts_kept(), driftline.make_context("driftline", arguments) as context:
             driftline.invoke(context)
     except click.exceptions.Exit as finished:
         return finished.exit_code
@@ -78,6 +82,30 @@ def _run(arguments: list[str]) -> int:
 @click.version_option(package_name="driftline", prog_name="driftline", message="%(prog)s %(version)s")
 def driftline() -> None:
     """Finite-size crossovers of disordered systems: locate, collapse, compare, judge."""
+
+
+@contextmanager
+def _interrupts_kept() -> Iterator[None]:
+    """Raise an interrupt again that came where Python can only report it, as while a module is being loaded.
+
+    Else it would be lost, with a traceback on standard error, and the work would go on.
+    """
+    report, timers = sys.unraisablehook, []
+
+    def keep(unraisable: sys.UnraisableHookArgs) -> None:
+        if not isinstance(unraisable.exc_value, KeyboardInterrupt):
+            report(unraisable)
+            return
+        timers.append(Timer(LATER, _thread.interrupt_main))  # raised in here it would be lost as well
+        timers[-1].start()
+
+    sys.unraisablehook = keep
+    try:
+        yield
+    finally:
+        for timer in timers:
+            timer.cancel()
+        sys.unraisablehook = report
 
 
 def _survive_odd_encodings() -> None:
