@@ -300,8 +300,8 @@ def test_interruption_from_outside(data):
     )  # fmt: skip
     time.sleep(2.5)  # past the start of the interpreter, far from the end of a full analysis
     out, err = interrupt(process)
-    # CPython ends itself by the signal if the interrupt passed through code run from a string, as some libraries do while
-    # they are loaded; a shell reports both as 130
+    # CPython ends itself by the signal if the interrupt passed through code run from a string, which some libraries
+    # contain and run while they are loaded; a shell reports both as 130
     assert process.returncode in (130, -signal.SIGINT)
     assert (out, err) == ("", "driftline: interrupted, nothing was written\n")
     assert list(data.parent.iterdir()) == [data]
